@@ -1,0 +1,40 @@
+//! steadytap: decide on the road, with honest uncertainty, whether a body change moved the air
+//! pressures on a vehicle, by how much, and what it means.
+//!
+//! ```text
+//!  serial ports ─┐                                            keys ─┐
+//!  record file ──┼─ bytes ─ stream ─ frames ─ signal ─ samples ─ hold ─ dwells ─ pipeline ─ entries
+//!  simulate ─────┘          (lines)           (units, lag)       (window)            │        │
+//!                                                                        screen, sound      session file
+//!                                                                                             │
+//!                                                    report ─ tables ─ reduction ─ passes ────┘
+//! ```
+//!
+//! Each file knows its room: a layer imports only lower ones, observers are imported by the shell alone.
+//!
+//! | layer | room | turns | into |
+//! | --- | --- | --- | --- |
+//! | 0 | [`units`] | text, trade units | stream time, SI and km/h |
+//! | 1 | [`config`] | rig, car and outing files | a checked [`config::Setup`] |
+//! | 2 | [`stream`] | bytes, record lines | frames, rejected lines, commands |
+//! | 3 | [`signal`] | frames | scaled, lag-shifted samples; what the eye sees |
+//! | 4 | [`hold`] | samples | off, settling, steady, held; full dwells |
+//! | 5 | [`session`] | entries | checksummed lines, and back, damage told |
+//! | 6 | [`reduction`] | sessions | coefficients, comparisons, verdicts |
+//! | 7 | [`report`] | a reduction | text, CSV, JSON |
+//! | 8 | [`pipeline`] | inputs, one at a time | events and session entries: live, replay, re-hold |
+//! | – | [`screen`] | a pipeline | a drawn frame (observer) |
+//! | – | [`simulate`] | a seed | the bytes the ports of an invented van would send |
+//! | 9 | [`shell`] | the world: ports, files, clock, terminal | inputs for the pipeline; the only I/O |
+//! | 10 | [`cli`] | words | a command and its exit status |
+//!
+//! Nothing below the shell reads a clock, a file, an environment variable or a random source: the same
+//! bytes give the same session.
+#![forbid(unsafe_code)]
+#![warn(missing_docs)]
+
+pub mod config;
+pub mod screen;
+pub mod session;
+pub mod stream;
+pub mod units;

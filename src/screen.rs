@@ -1,0 +1,217 @@
+//! What the passenger sees: a [`View`] drawn into a buffer, and the one key table.
+//!
+//! The view is plain data made from the pipeline and the state of the journal; drawing it is pure, so that
+//! a screen is tested as text. Speeds are km/h and pressures Pa in here; [`View::show`] says how they are shown.
+
+use crate::config::Show;
+use crate::units::StreamTime;
+
+/// Everything the Drive screen draws.
+#[derive(Clone, Debug, PartialEq)]
+pub struct View {
+    /// Title of the outing.
+    pub title: String,
+    /// Stream time now.
+    pub now: StreamTime,
+    /// Display units.
+    pub show: Show,
+    /// State of the speed window.
+    pub window: Window,
+    /// The dwell that is held, if any.
+    pub held: Option<Held>,
+    /// `take` was pressed and waits for the next full dwell.
+    pub armed: bool,
+    /// A span is open since then.
+    pub span: Option<StreamTime>,
+    /// Channels on taps, then the dynamic pressure, then other channels, in rig order.
+    pub rows: Vec<Row>,
+    /// What the next segment will be tagged with.
+    pub tag: Tag,
+    /// Health of every port.
+    pub ports: Vec<PortHealth>,
+    /// Session file and disk.
+    pub journal: Journal,
+    /// What happened last, newest last, at most eight.
+    pub messages: Vec<Message>,
+    /// Segments kept and not voided.
+    pub kept: u32,
+    /// The newest segment that is not voided.
+    pub last_segment: Option<u32>,
+    /// Letters and names of all configurations.
+    pub configurations: Vec<(String, String)>,
+    /// Seconds since the last zero; none: never zeroed.
+    pub zero_age_s: Option<f64>,
+    /// The stream has ended (a replay or rehearsal is over).
+    pub ended: bool,
+}
+
+/// The speed window now.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Window {
+    /// Which of the four states.
+    pub state: WindowState,
+    /// Watched speed, km/h; none when stale or never seen.
+    pub speed_kmh: Option<f64>,
+    /// Target the speed belongs to, or the nearest or chosen one, km/h.
+    pub target_kmh: f64,
+    /// Half width, km/h.
+    pub tolerance_kmh: f64,
+    /// Progress of settling (in settling) or of the running dwell (in steady and held), 0–1.
+    pub progress: f64,
+    /// Seconds left until settled or until the dwell is full.
+    pub left_s: f64,
+    /// The watched channel is an airspeed.
+    pub airspeed: bool,
+}
+
+/// The four states of the speed window; off says why.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum WindowState {
+    /// No speed: nothing received, or stale.
+    NoSpeed,
+    /// Below the window.
+    TooSlow,
+    /// Above it.
+    TooFast,
+    /// Inside, younger than the settling time.
+    Settling,
+    /// Inside and averaging, no full dwell yet.
+    Steady,
+    /// A full dwell has been averaged; its values stand still.
+    Held,
+}
+
+/// The held dwell.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Held {
+    /// Target speed, km/h.
+    pub target_kmh: f64,
+    /// First moment.
+    pub t0: StreamTime,
+    /// Last moment.
+    pub t1: StreamTime,
+    /// Whether it was kept, and is on the disk.
+    pub kept: Kept,
+}
+
+/// Fate of the held dwell.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Kept {
+    /// Not taken (yet).
+    No,
+    /// Taken; not known to be on the disk.
+    Writing(u32),
+    /// On the disk.
+    OnDisk(u32),
+    /// Writing failed; it is in memory only.
+    Failed(u32),
+}
+
+/// One channel.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Row {
+    /// Tap name where the channel sits on one, else the channel's name.
+    pub label: String,
+    /// Channel name.
+    pub channel: String,
+    /// What it measures; decides unit and decimals.
+    pub quantity: crate::units::Quantity,
+    /// Damped live value; none when never seen.
+    pub live: Option<f64>,
+    /// Mean of the held dwell.
+    pub held: Option<f64>,
+    /// Standard deviation of the held dwell, else of the running one.
+    pub fluctuation: Option<f64>,
+    /// The last half minute, oldest first, one point a half second; none where nothing came.
+    pub trace: Vec<Option<f64>>,
+    /// At an end of its range within the last second.
+    pub saturated: bool,
+    /// Silent for longer than its limit.
+    pub stale: bool,
+    /// The same value for five seconds beside living channels.
+    pub stuck: bool,
+}
+
+/// Tag of the next segment.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Tag {
+    /// Configuration letter.
+    pub configuration: String,
+    /// Its name.
+    pub name: String,
+    /// `out`, `back` or `other`.
+    pub direction: &'static str,
+    /// The direction was set by key.
+    pub by_hand: bool,
+    /// Which pass the next one is, from 1.
+    pub pass: u32,
+    /// Passes wanted.
+    pub wanted: u32,
+}
+
+/// Health of one port.
+#[derive(Clone, Debug, PartialEq)]
+pub struct PortHealth {
+    /// Its name.
+    pub name: String,
+    /// How it is.
+    pub state: PortState,
+    /// Lines a second over the last five seconds.
+    pub lines_per_s: f64,
+    /// Share of rejected lines over the last ten seconds, 0–1.
+    pub rejected_share: f64,
+    /// The last line that did not parse, escaped, and why.
+    pub last_bad: Option<(String, String)>,
+}
+
+/// How a port is.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum PortState {
+    /// Nothing came yet.
+    Waiting,
+    /// Lines parse.
+    Good,
+    /// Bytes or lines arrive but no line parses.
+    CheckBaud,
+    /// Nothing came for three seconds.
+    Silent,
+    /// Unplugged.
+    Lost,
+    /// A GPS that talks but has no fix.
+    NoFix,
+}
+
+/// Session file and disk.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Journal {
+    /// File name of the session.
+    pub file: String,
+    /// What is wrong, if anything.
+    pub trouble: Option<String>,
+    /// The record is being written.
+    pub recording: bool,
+}
+
+/// Something that happened.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Message {
+    /// When.
+    pub at: StreamTime,
+    /// How bad.
+    pub weight: Weight,
+    /// The words, escaped.
+    pub text: String,
+}
+
+/// How much a message matters.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub enum Weight {
+    /// For the record.
+    Quiet,
+    /// Something good.
+    Good,
+    /// Something refused, with the remedy.
+    Refused,
+    /// Something broken.
+    Trouble,
+}
