@@ -34,7 +34,11 @@
 #![warn(missing_docs)]
 
 pub mod config;
+pub mod hold;
+pub mod pipeline;
+pub mod reduction;
 pub mod screen;
 pub mod session;
+pub mod signal;
 pub mod stream;
 pub mod units;

@@ -3,6 +3,8 @@
 //! [`Entry`] ↔ line bytes in `codec`; whole files → [`Session`] with every damage told by line. Nothing
 //! here touches a file: the shell hands in bytes and writes bytes.
 
+pub mod codec;
+
 use crate::config::{Air, Setup};
 use crate::units::StreamTime;
 use serde::{Deserialize, Serialize};

@@ -1,0 +1,2 @@
+//! placeholder until merge
+pub mod air;
