@@ -39,6 +39,7 @@ pub mod pipeline;
 pub mod reduction;
 pub mod screen;
 pub mod session;
+pub mod shell;
 pub mod signal;
 pub mod stream;
 pub mod units;

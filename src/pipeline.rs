@@ -63,6 +63,13 @@ pub struct Event {
     pub what: What,
 }
 
+impl Event {
+    /// The entry, if it is one.
+    pub fn entry(&self) -> Option<&Entry> {
+        if let What::Entry(entry) = &self.what { Some(entry) } else { None }
+    }
+}
+
 /// What an input led to.
 #[derive(Clone, Debug)]
 pub enum What {
@@ -91,15 +98,6 @@ pub enum What {
     Refused(Refusal),
 }
 
-/// Which dwells become segments.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Keep {
-    /// Those that `take` keeps.
-    Taken,
-    /// Every good one; `take`, `span` and `void` are passed over.
-    Every,
-}
-
 /// The instrument without its ports, files and screen.
 pub struct Pipeline {
     setup: Setup,
@@ -120,7 +118,7 @@ pub struct Pipeline {
 
 impl Pipeline {
     /// Ready for the first input. `before` is the session that this run goes on with; `seen` says whether anybody looks.
-    pub fn new(setup: &Setup, keep: Keep, before: Option<&Session>, seen: bool) -> Self {
+    pub fn new(setup: &Setup, before: Option<&Session>, seen: bool) -> Self {
         let (rig, outing) = (&setup.rig, &setup.outing);
         let decoders: Vec<Decoder> = rig.ports.iter().map(|p| Decoder::new(rig, p)).collect();
         let wiring = decoders.iter().enumerate().map(|(i, d)| Wiring::new(rig, i, |f| d.slot(f))).collect();
@@ -139,7 +137,7 @@ impl Pipeline {
                 Watch::Channel(_) => None,
                 Watch::Airspeed(_) => rig.channels.iter().position(|c| c.quantity == Quantity::Speed),
             },
-            logbook: Logbook::new(setup, keep, before),
+            logbook: Logbook::new(setup, before),
             eyes,
             health: rig.ports.iter().map(|_| Health::default()).collect(),
             samples: Vec::new(),
@@ -228,7 +226,7 @@ impl Pipeline {
     }
 
     /// The watched quantity in km/h: a speed as it is, a dynamic pressure as the airspeed that makes it.
-    fn watched_kmh(&self, value: f64) -> f64 {
+    pub fn watched_kmh(&self, value: f64) -> f64 {
         match self.setup.outing.watch {
             Watch::Channel(_) => value,
             Watch::Airspeed(_) => {

@@ -188,6 +188,11 @@ impl Hold {
         if due { self.dwells.pop_front() } else { None }
     }
 
+    /// Stretches that gave a dwell so far.
+    pub fn stretches(&self) -> u32 {
+        self.stretches
+    }
+
     /// The running dwell, for the eye.
     pub fn collecting(&self) -> Option<&Dwell> {
         self.dwells.iter().find(|d| d.stretch == 0)

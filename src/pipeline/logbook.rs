@@ -3,7 +3,7 @@
 //! Full dwells and commands → session entries. A dwell gets its tags when it is full; `take` keeps it with those, however much
 //! later it is pressed before the next one holds.
 
-use super::{Event, Keep, What};
+use super::{Event, What};
 use crate::config::{Air, Configuration, Setup};
 use crate::hold::Rule;
 use crate::hold::dwell::{Dwell, Interval};
@@ -102,7 +102,7 @@ struct Standing {
 
 /// Tags, zeros, and what was kept.
 pub struct Logbook {
-    keep: Keep,
+    every: bool,
     channels: Vec<ChannelFacts>,
     watched: usize,
     angles: Vec<bool>,
@@ -133,7 +133,7 @@ pub struct Logbook {
 
 impl Logbook {
     /// The logbook of an outing that begins, or that goes on after `before`.
-    pub fn new(setup: &Setup, keep: Keep, before: Option<&Session>) -> Self {
+    pub fn new(setup: &Setup, before: Option<&Session>) -> Self {
         let (rig, outing) = (&setup.rig, &setup.outing);
         let channels: Vec<ChannelFacts> = rig
             .channels
@@ -142,7 +142,7 @@ impl Logbook {
             .collect();
         let source = if outing.air_stated { AirSource::Stated } else { AirSource::Assumed };
         let mut logbook = Self {
-            keep,
+            every: false,
             watched: channels.iter().position(|c| c.name == outing.watch.channel()).unwrap_or(0),
             angles: channels.iter().map(|c| c.quantity == Quantity::Track).collect(),
             latest: vec![None; channels.len()],
@@ -285,16 +285,18 @@ impl Logbook {
             return self.write(at, Entry::Rejected(rejected), out);
         }
         self.held = Some(HeldDwell { segment, kept: None });
-        if self.armed || self.keep == Keep::Every {
+        if self.armed || self.every {
             self.keep_held(at, out);
         }
     }
 
     /// Does what the person asked for.
     pub fn command(&mut self, at: StreamTime, command: Command, out: &mut Vec<Event>) {
-        let every = self.keep == Keep::Every;
         let done = match command {
-            Command::Take | Command::SpanBegin | Command::SpanEnd | Command::Void(_) if every => Ok(()),
+            Command::TakeEvery => {
+                self.every = true;
+                Ok(())
+            }
             Command::Take => {
                 self.take(at, out);
                 Ok(())

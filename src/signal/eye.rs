@@ -78,6 +78,11 @@ impl Eye {
         self.damped
     }
 
+    /// The newest value, undamped.
+    pub fn latest(&self) -> Option<f64> {
+        self.last.map(|(_, value)| value)
+    }
+
     /// Nothing for longer than the channel's limit, or nothing yet.
     pub fn stale(&self, now: StreamTime) -> bool {
         self.last.is_none_or(|(at, _)| now.since(at) > self.stale_us)

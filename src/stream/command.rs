@@ -14,6 +14,8 @@ pub const LONGEST_TEXT: usize = 500;
 pub enum Command {
     /// Keep the held dwell, or the next.
     Take,
+    /// Keep every good dwell from now on, as if `take` were pressed for each.
+    TakeEvery,
     /// A segment by hand begins.
     SpanBegin,
     /// It ends.
@@ -66,6 +68,11 @@ pub enum CommandError {
 }
 
 impl Command {
+    /// It decides what is kept; passed over where every dwell is kept anyway.
+    pub fn decides_what_is_kept(&self) -> bool {
+        matches!(self, Self::Take | Self::TakeEvery | Self::SpanBegin | Self::SpanEnd | Self::Void(_))
+    }
+
     /// Reads the words after `@`.
     ///
     /// # Errors
@@ -77,7 +84,11 @@ impl Command {
         let needs = |word, needs| CommandError::Argument { word, needs };
         let alone = |command, word| if rest.is_empty() { Ok(command) } else { Err(needs(word, "nothing after it")) };
         match word {
-            "take" => alone(Self::Take, "take"),
+            "take" => match rest {
+                "" => Ok(Self::Take),
+                "every" => Ok(Self::TakeEvery),
+                _ => Err(needs("take", "nothing after it, or every")),
+            },
             "zero" => alone(Self::Zero, "zero"),
             "span" => match rest {
                 "begin" => Ok(Self::SpanBegin),
@@ -145,6 +156,7 @@ impl fmt::Display for Command {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
             Self::Take => write!(f, "take"),
+            Self::TakeEvery => write!(f, "take every"),
             Self::SpanBegin => write!(f, "span begin"),
             Self::SpanEnd => write!(f, "span end"),
             Self::Void(id) => write!(f, "void {id}"),

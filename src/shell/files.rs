@@ -1,0 +1,153 @@
+//! Files that people name: configuration, sessions, outputs. Whole in, whole out.
+
+use super::Trouble;
+use crate::config::{self, Setup, Source};
+use crate::session::Session;
+use crate::session::codec;
+use std::fs::{File, OpenOptions};
+use std::io::{self, Read, Write};
+use std::path::{Path, PathBuf};
+
+/// Largest configuration file, bytes.
+const LARGEST_CONFIG: u64 = 4 << 20;
+/// Largest session file that is reduced, bytes.
+const LARGEST_SESSION: u64 = 1 << 30;
+
+/// The platform's place for the program's data.
+pub fn data_directory() -> Option<PathBuf> {
+    directories::ProjectDirs::from("", "", "steadytap").map(|d| d.data_dir().to_path_buf())
+}
+
+/// Why a file cannot be read, with the remedy.
+pub fn cannot_read(path: &Path, error: &io::Error) -> Trouble {
+    let trouble = match error.kind() {
+        io::ErrorKind::NotFound => Trouble::new("there is no such file").hint("check the name and the directory"),
+        io::ErrorKind::PermissionDenied => {
+            Trouble::new("no right to read the file").hint("change its permissions, or copy it")
+        }
+        _ => Trouble::new(format!("the file cannot be read: {error}")),
+    };
+    trouble.at(path.display())
+}
+
+/// Reads a whole file of at most `largest` bytes.
+///
+/// # Errors
+/// [`Trouble`] when it is missing, unreadable, a directory or too large.
+pub fn read(path: &Path, largest: u64) -> Result<Vec<u8>, Trouble> {
+    let failed = |e| cannot_read(path, &e);
+    let file = File::open(path).map_err(failed)?;
+    if file.metadata().map_err(failed)?.is_dir() {
+        return Err(Trouble::new("this is a directory, not a file").at(path.display()));
+    }
+    let mut bytes = Vec::new();
+    file.take(largest + 1).read_to_end(&mut bytes).map_err(failed)?;
+    if bytes.len() as u64 > largest {
+        let what = format!("the file is larger than {} MiB", largest >> 20);
+        return Err(Trouble::new(what).at(path.display()).hint("is this the right file?"));
+    }
+    Ok(bytes)
+}
+
+/// A configuration file as text.
+///
+/// # Errors
+/// [`Trouble`] when it cannot be read or is not UTF-8.
+pub fn source(path: &Path) -> Result<Source, Trouble> {
+    let bytes = read(path, LARGEST_CONFIG)?;
+    let text = String::from_utf8(bytes).map_err(|e| {
+        let before = &e.as_bytes()[..e.utf8_error().valid_up_to()];
+        let line = before.iter().filter(|c| **c == b'\n').count() + 1;
+        Trouble::new("the file is not UTF-8 text")
+            .at(format!("{}:{line}", path.display()))
+            .hint("save it as UTF-8, or give the right file")
+    })?;
+    Ok(Source { path: path.display().to_string(), text })
+}
+
+/// Outing, rig and car, read from the outing file and the two files that it names.
+///
+/// # Errors
+/// Every problem of all three files at once.
+pub fn setup(outing: &Path) -> Result<Setup, Vec<Trouble>> {
+    let source_of_outing = source(outing).map_err(|t| vec![t])?;
+    let head = config::outing_head(&source_of_outing).map_err(troubles)?;
+    let beside = |name: &str| outing.parent().unwrap_or(Path::new("")).join(name);
+    let (rig, car) = (source(&beside(&head.rig)), source(&beside(&head.car)));
+    match (rig, car) {
+        (Ok(rig), Ok(car)) => config::setup(&source_of_outing, &rig, &car).map_err(troubles),
+        (rig, car) => Err([rig.err(), car.err()].into_iter().flatten().collect()),
+    }
+}
+
+/// Problems of configuration files as a person is told them.
+pub fn troubles(problems: Vec<config::Problem>) -> Vec<Trouble> {
+    problems.iter().map(trouble).collect()
+}
+
+/// One problem as a person is told it.
+pub fn trouble(problem: &config::Problem) -> Trouble {
+    let place = &problem.place;
+    let at = format!("{}:{}:{}", place.file, place.line, place.column);
+    Trouble { what: problem.what.clone(), place: Some(at), hint: problem.hint.clone() }
+}
+
+/// A session file.
+///
+/// # Errors
+/// [`Trouble`] when it cannot be read or its first line cannot be believed.
+pub fn session(path: &Path) -> Result<Session, Trouble> {
+    let bytes = read(path, LARGEST_SESSION)?;
+    let contents = codec::read(&bytes);
+    let why = contents.damage.first().filter(|d| d.line == 1).map(|d| d.what.to_string());
+    contents.session().ok_or_else(|| {
+        let why = why.unwrap_or_else(|| "it is empty".to_string());
+        Trouble::new(format!("this is no session, or its first line is damaged: {why}"))
+            .at(format!("{}:1", path.display()))
+            .hint("a session begins with {\"kind\":\"session\",\"schema\":\"steadytap.session/1\"")
+    })
+}
+
+/// Writes a whole file, or nothing: under another name first, then in one step. `-` is standard output.
+///
+/// # Errors
+/// [`Trouble`] when it cannot be written.
+pub fn write(path: &Path, bytes: &[u8]) -> Result<(), Trouble> {
+    if path == Path::new("-") {
+        let written = io::stdout().lock().write_all(bytes).and_then(|()| io::stdout().flush());
+        return match written {
+            Err(e) if e.kind() != io::ErrorKind::BrokenPipe => {
+                Err(Trouble::new(format!("standard output cannot be written: {e}")))
+            }
+            _ => Ok(()),
+        };
+    }
+    let mut partial = path.as_os_str().to_owned();
+    partial.push(format!(".{}.partial", std::process::id()));
+    let partial = PathBuf::from(partial);
+    let written = File::create(&partial)
+        .and_then(|mut file| file.write_all(bytes).and_then(|()| file.sync_all()))
+        .and_then(|()| std::fs::rename(&partial, path));
+    written.map_err(|e| {
+        let _ = std::fs::remove_file(&partial);
+        Trouble::new(format!("the file cannot be written: {e}")).at(path.display()).hint("give another place")
+    })
+}
+
+/// Writes a whole new file; an existing one is never touched.
+///
+/// # Errors
+/// [`Trouble`] when there is one already, or it cannot be written.
+pub fn write_new(path: &Path, bytes: &[u8]) -> Result<(), Trouble> {
+    let made = OpenOptions::new().write(true).create_new(true).open(path);
+    let mut file = made.map_err(|e| match e.kind() {
+        io::ErrorKind::AlreadyExists => {
+            Trouble::new("the file exists already").at(path.display()).hint("give another name; nothing was overwritten")
+        }
+        _ => Trouble::new(format!("the file cannot be written: {e}")).at(path.display()).hint("give another place"),
+    })?;
+    file.write_all(bytes).and_then(|()| file.sync_all()).map_err(|e| {
+        let _ = std::fs::remove_file(path);
+        Trouble::new(format!("the file cannot be written: {e}")).at(path.display()).hint("free some space")
+    })
+}

@@ -1,0 +1,202 @@
+//! The live screen: the engine on one thread, the terminal on another, neither waits for the other.
+//!
+//! The engine publishes views; the terminal draws the newest when it can, at most twenty times a second. A terminal that is not
+//! drained stops the drawing and nothing else.
+
+use super::engine::{Arrival, Engine, Outcome};
+use super::feed::{Running, Sender};
+use super::outing::Plan;
+use super::{Trouble, terminal};
+use crate::screen::keys::{self, Action};
+use crate::screen::seen::Surroundings;
+use crate::screen::{Face, Journal, Message, View, Weight, messages};
+use crate::units::StreamTime;
+use crossterm::event::{Event as TerminalEvent, EventStream};
+use futures_util::StreamExt;
+use std::sync::mpsc::{Receiver, RecvTimeoutError, channel};
+use std::time::{Duration, Instant};
+use tokio::sync::watch;
+
+/// Least time between two frames.
+const FRAME: Duration = Duration::from_millis(50);
+/// Time between two readings of the live figures: digits that change faster cannot be read.
+const READING: Duration = Duration::from_millis(200);
+/// Messages that stay on the screen.
+const MESSAGES: usize = 8;
+/// Arrivals taken between two looks at the clock.
+const BATCH: usize = 2000;
+/// How long leaving waits for a terminal that is not drained.
+const PATIENCE: Duration = Duration::from_secs(1);
+
+/// Runs the screen until somebody leaves.
+///
+/// # Errors
+/// [`Trouble`] when there is no terminal, or one of the threads broke (everything kept is on the disk then).
+pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trouble> {
+    terminal::require()?;
+    super::outing::stop_on_signals(running.sender.clone());
+    let mut desk = Desk::new(engine, running.clock, plan);
+    let (publish, views) = watch::channel(desk.view());
+    let keys_to = running.sender.clone();
+    let (done, is_done) = channel();
+    let screen = std::thread::spawn(move || {
+        let ended = terminal::guarded(|| screen(views, &keys_to));
+        keys_to.send(Arrival::Stop);
+        let _ = done.send(());
+        ended
+    });
+    let arrivals = running.arrivals;
+    let engine = std::thread::spawn(move || desk.run(&arrivals, &publish)).join();
+    // The engine dropped its end of the views, and the screen leaves by itself unless its terminal hangs.
+    let drawn = match is_done.recv_timeout(PATIENCE) {
+        Ok(()) => screen.join().unwrap_or_else(|_| Err(Trouble::new("the screen broke"))),
+        Err(_) => Ok(()),
+    };
+    terminal::restore();
+    let engine = engine.map_err(|_| {
+        Trouble::new("the engine broke; what it said to have kept is on the disk").hint("start again with the same --session")
+    })?;
+    drawn.map(|()| engine)
+}
+
+/// The engine and what is told about it.
+struct Desk {
+    engine: Engine,
+    clock: Option<super::clock::StreamClock>,
+    shift_us: i64,
+    seconds: Option<f64>,
+    messages: Vec<Message>,
+    outcomes: Vec<Outcome>,
+    ended: bool,
+}
+
+impl Desk {
+    fn new(engine: Engine, clock: Option<super::clock::StreamClock>, plan: &Plan) -> Self {
+        let shift_us = engine.shift_us();
+        let (messages, outcomes) = (Vec::new(), Vec::new());
+        Self { engine, clock, shift_us, seconds: plan.seconds, messages, outcomes, ended: false }
+    }
+
+    fn now(&self) -> StreamTime {
+        let last = self.engine.pipeline().now();
+        self.clock.map_or(last, |c| c.now().plus(self.shift_us).max(last))
+    }
+
+    fn run(mut self, arrivals: &Receiver<Arrival>, publish: &watch::Sender<View>) -> Engine {
+        let mut published = Instant::now();
+        let first = self.now();
+        loop {
+            let patience = READING.saturating_sub(published.elapsed());
+            let stop = match arrivals.recv_timeout(patience) {
+                Ok(arrival) => self.take(arrival) || arrivals.try_iter().take(BATCH).any(|a| self.take(a)),
+                Err(RecvTimeoutError::Timeout) => false,
+                Err(RecvTimeoutError::Disconnected) => true,
+            };
+            let over = self.seconds.is_some_and(|s| self.now().since(first) as f64 >= s * 1e6);
+            if stop || over {
+                break;
+            }
+            let news = self.hear();
+            let due = if news { FRAME } else { READING };
+            if published.elapsed() >= due || (news && published.elapsed() >= FRAME / 2) {
+                published = Instant::now();
+                publish.send_replace(self.view());
+            }
+        }
+        self.engine.finish(&mut self.outcomes);
+        self.hear();
+        publish.send_replace(self.view());
+        self.engine
+    }
+
+    /// True when somebody wants to leave.
+    fn take(&mut self, arrival: Arrival) -> bool {
+        match arrival {
+            Arrival::Stop => return true,
+            Arrival::End => {
+                self.ended = true;
+                let (at, text) = (self.now(), "the stream is over: q leaves and prints the reduction".to_string());
+                self.messages.push(Message { at, weight: Weight::Quiet, text });
+            }
+            arrival => self.engine.take(arrival, &mut self.outcomes),
+        }
+        false
+    }
+
+    /// Turns outcomes into messages; true when something happened that must be seen at once.
+    fn hear(&mut self) -> bool {
+        let news = !self.outcomes.is_empty();
+        self.messages.extend(self.outcomes.drain(..).filter_map(|o| messages::message(&o.event, o.on_disk)));
+        let extra = self.messages.len().saturating_sub(MESSAGES);
+        self.messages.drain(..extra);
+        news
+    }
+
+    fn view(&self) -> View {
+        let journal = self.engine.journal();
+        let name = journal.path().file_name().map(|n| n.to_string_lossy().into_owned()).unwrap_or_default();
+        let trouble = journal.trouble().or_else(|| self.engine.recorder().and_then(|r| r.trouble()));
+        let journal = Journal {
+            file: crate::screen::text::safe(&name),
+            trouble: trouble.map(crate::screen::text::safe),
+            recording: self.engine.recorder().is_some_and(|r| r.trouble().is_none()),
+        };
+        let on_disk = &self.engine.on_disk;
+        let around = Surroundings { now: self.now(), journal, on_disk, messages: &self.messages, ended: self.ended };
+        View::of(self.engine.pipeline(), around)
+    }
+}
+
+/// Draws views and reads keys until the engine is gone or somebody leaves.
+fn screen(views: watch::Receiver<View>, keys_to: &Sender) -> Result<(), Trouble> {
+    let failed = |e: std::io::Error| Trouble::new(format!("the terminal cannot be used: {e}"));
+    let runtime = tokio::runtime::Builder::new_current_thread().enable_all().build().map_err(failed)?;
+    runtime.block_on(drawing(views, keys_to)).map_err(failed)
+}
+
+async fn drawing(mut views: watch::Receiver<View>, keys_to: &Sender) -> std::io::Result<()> {
+    let mut terminal = terminal::enter()?;
+    let mut face = terminal::face();
+    let mut events = Some(EventStream::new());
+    loop {
+        let view = views.borrow_and_update().clone();
+        terminal.draw(&view, &face)?;
+        let drawn = tokio::time::Instant::now();
+        let event = tokio::select! {
+            changed = views.changed() => {
+                if changed.is_err() {
+                    return Ok(());
+                }
+                None
+            }
+            event = next(&mut events) => event,
+        };
+        match event {
+            Some(TerminalEvent::Key(key)) => match keys::press(&view, &mut face, key) {
+                // Stamped by the engine: stream time is only known there.
+                Some(Action::Command(command)) => {
+                    keys_to.send(Arrival::Command { at: StreamTime::ZERO, command });
+                }
+                Some(Action::Quit) => return Ok(()),
+                Some(Action::Suspend) => terminal.suspend()?,
+                Some(Action::Acknowledge) | None => {}
+            },
+            Some(TerminalEvent::Paste(text)) => keys::paste(&mut face, &text),
+            // A key is answered at once; a view may wait for its frame.
+            Some(_) => {}
+            None => tokio::time::sleep_until(drawn + FRAME).await,
+        }
+    }
+}
+
+/// The next event; never again after the terminal has gone, since its reader would spin.
+async fn next(events: &mut Option<EventStream>) -> Option<TerminalEvent> {
+    let Some(stream) = events else { return std::future::pending().await };
+    match stream.next().await {
+        Some(Ok(event)) => Some(event),
+        Some(Err(_)) | None => {
+            *events = None;
+            None
+        }
+    }
+}

@@ -1,0 +1,117 @@
+//! The terminal: entered once, always given back, whatever breaks.
+
+use super::Trouble;
+use crate::screen::{Face, Theme, View, render};
+use crossterm::event::{DisableBracketedPaste, EnableBracketedPaste};
+use crossterm::terminal::{
+    BeginSynchronizedUpdate, EndSynchronizedUpdate, EnterAlternateScreen, LeaveAlternateScreen, disable_raw_mode,
+    enable_raw_mode,
+};
+use crossterm::{cursor, execute, queue};
+use ratatui::Terminal;
+use ratatui::backend::CrosstermBackend;
+use std::io::{self, BufWriter, IsTerminal, Stdout, Write};
+use std::sync::atomic::{AtomicBool, Ordering};
+
+static ENTERED: AtomicBool = AtomicBool::new(false);
+
+/// There is a terminal to draw on.
+///
+/// # Errors
+/// [`Trouble`] with the way to do without.
+pub fn require() -> Result<(), Trouble> {
+    if io::stdin().is_terminal() && io::stdout().is_terminal() {
+        return Ok(());
+    }
+    Err(Trouble::new("the live screen needs a terminal").hint("without one, run with --unattended"))
+}
+
+/// A terminal in our hands.
+pub struct Screen {
+    terminal: Terminal<CrosstermBackend<BufWriter<Stdout>>>,
+}
+
+/// Takes the terminal.
+///
+/// # Errors
+/// When it cannot be set up.
+pub fn enter() -> io::Result<Screen> {
+    take()?;
+    let backend = CrosstermBackend::new(BufWriter::with_capacity(64 * 1024, io::stdout()));
+    Ok(Screen { terminal: Terminal::new(backend)? })
+}
+
+fn take() -> io::Result<()> {
+    ENTERED.store(true, Ordering::SeqCst);
+    enable_raw_mode()?;
+    execute!(io::stdout(), EnterAlternateScreen, EnableBracketedPaste, cursor::Hide)
+}
+
+/// Gives the terminal back; does nothing when it was not taken.
+pub fn restore() {
+    if ENTERED.swap(false, Ordering::SeqCst) {
+        let _ = disable_raw_mode();
+        let _ = execute!(io::stdout(), DisableBracketedPaste, LeaveAlternateScreen, cursor::Show);
+    }
+}
+
+/// Runs the screen and gives the terminal back however it ends, before a panic is told.
+pub fn guarded<T>(work: impl FnOnce() -> T) -> T {
+    let told = std::panic::take_hook();
+    let this = std::thread::current().id();
+    std::panic::set_hook(Box::new(move |info| {
+        if std::thread::current().id() == this {
+            restore();
+        }
+        told(info);
+    }));
+    let result = work();
+    restore();
+    result
+}
+
+/// The face that the environment asks for.
+pub fn face() -> Face {
+    let plain_locale = ["LC_ALL", "LC_CTYPE", "LANG"]
+        .iter()
+        .find_map(|name| std::env::var(name).ok().filter(|v| !v.is_empty()))
+        .is_some_and(|v| !v.to_ascii_lowercase().replace('-', "").contains("utf8"));
+    let dumb = std::env::var("TERM").is_ok_and(|t| t == "dumb");
+    let no_colour = dumb || std::env::var("NO_COLOR").is_ok_and(|v| !v.is_empty());
+    let theme = if no_colour { Theme::NoColour } else { Theme::default() };
+    Face { theme, plain: plain_locale || dumb, ..Face::default() }
+}
+
+impl Screen {
+    /// Draws one frame, in one synchronized update.
+    ///
+    /// # Errors
+    /// When the terminal is gone.
+    pub fn draw(&mut self, view: &View, face: &Face) -> io::Result<()> {
+        queue!(self.terminal.backend_mut(), BeginSynchronizedUpdate)?;
+        self.terminal.draw(|frame| render(view, face, frame.buffer_mut()))?;
+        queue!(self.terminal.backend_mut(), EndSynchronizedUpdate)?;
+        Write::flush(self.terminal.backend_mut())
+    }
+
+    /// Gives the terminal back to the shell's job control and takes it again when the job goes on.
+    ///
+    /// # Errors
+    /// When the terminal is gone.
+    pub fn suspend(&mut self) -> io::Result<()> {
+        restore();
+        stop_myself();
+        take()?;
+        self.terminal.clear()
+    }
+}
+
+/// Stops this process until it is continued; the engine stops with it, and the gap ends the stretch.
+#[cfg(unix)]
+fn stop_myself() {
+    let me = std::process::id().to_string();
+    let _ = std::process::Command::new("kill").args(["-STOP", &me]).status();
+}
+
+#[cfg(not(unix))]
+fn stop_myself() {}
