@@ -90,8 +90,10 @@ fn one_glance_finds_state_speed_and_fate_in_the_top_half() {
         (scenes::held(Kept::OnDisk(12)), "s to next", "12 KEPT on disk"),
         (scenes::not_kept(), "s to next", "12 NOT ON DISK"),
     ];
+    let large = |text: &str| text.lines().skip(1).take(4).all(|l| !l.contains(|c: char| c.is_ascii_digit()));
     for (view, state, fate) in cases {
         let text = text(&view, &face(), (80, 24));
+        assert!(large(&text), "a speed that is not large in\n{text}");
         let top: Vec<&str> = text.lines().take(12).collect();
         let top = top.join("\n");
         assert!(top.contains(state), "{state} in\n{top}");
@@ -265,7 +267,11 @@ proptest! {
     ) {
         let mut buffer = Buffer::empty(Rect::new(origin.0, origin.1, size.0, size.1));
         render(&view, &Face { plain, ..with(overlay) }, &mut buffer);
-        for cell in buffer.content() {
+        for (i, cell) in buffer.content().iter().enumerate() {
+            if ratatui::text::Span::raw(cell.symbol()).width() > 1 {
+                prop_assert!((i + 1) % usize::from(size.0) != 0, "a wide sign in the last column");
+                prop_assert_eq!(buffer.content()[i + 1].symbol(), " ", "half of a wide sign is covered");
+            }
             for c in cell.symbol().chars() {
                 prop_assert!(!c.is_control(), "control character {c:?}");
                 prop_assert!(!matches!(c, '\u{200b}'..='\u{200f}' | '\u{2028}'..='\u{202e}' | '\u{2066}'..='\u{2069}'), "{c:?}");

@@ -52,10 +52,12 @@ impl<'a> Canvas<'a> {
         let style = self.style(role);
         if width(&shown) <= usize::from(columns) {
             let end = self.buffer.set_stringn(x, y, &shown, usize::from(columns), style).0;
+            self.buffer.set_style(Rect::new(x, y, end - x, 1), style);
             return end - x;
         }
         if columns > 0 {
             self.buffer.set_stringn(x, y, &shown, usize::from(columns) - 1, style);
+            self.buffer.set_style(Rect::new(x, y, columns, 1), style);
             let ellipsis = self.sign('…', '~');
             self.put((x + columns - 1, y), ellipsis, role);
         }
@@ -82,10 +84,18 @@ impl<'a> Canvas<'a> {
         let area = area.intersection(self.area());
         let style = self.style(role);
         for y in area.top()..area.bottom() {
+            self.close_wide((area.left(), y));
             for x in area.left()..area.right() {
                 self.buffer[(x, y)].reset();
                 self.buffer[(x, y)].set_char(sign).set_style(style);
             }
+        }
+    }
+
+    /// A wide sign that would reach into this cell from its left gives way to a blank.
+    fn close_wide(&mut self, (x, y): (u16, u16)) {
+        if x > self.area().left() && width(self.buffer[(x - 1, y)].symbol()) > 1 {
+            self.buffer[(x - 1, y)].set_char(' ');
         }
     }
 }

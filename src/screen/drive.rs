@@ -18,8 +18,8 @@ use ratatui::layout::Rect;
 const SMALLEST: (u16, u16) = (60, 18);
 /// Rows above the channels.
 const HEAD_ROWS: u16 = 9;
-/// Columns of the large state word: eight letters.
-const STATE_COLUMNS: u16 = 47;
+/// Columns of the widest large state word.
+const STATE_COLUMNS: u16 = 45;
 
 /// Whether the buffer is too small for the screen.
 pub(super) fn too_small(canvas: &Canvas) -> bool {
@@ -46,7 +46,7 @@ fn look(view: &View) -> Look {
         WindowState::Settling => look("SETTLING", Role::Settling, ['░', ':'], ['░', ':']),
         WindowState::Steady => look("STEADY", Role::Steady, ['─', '-'], ['▒', '|']),
         WindowState::Held => match kept {
-            Some(Kept::OnDisk(_)) => look("KEPT", Role::Kept, ['█', '#'], ['█', '#']),
+            Some(Kept::OnDisk(_)) => look("KEPT", Role::Kept, ['■', '#'], ['█', '#']),
             Some(Kept::Failed(_)) => look("NOT KEPT", Role::Trouble, ['!', '!'], ['!', '!']),
             _ => look("HELD", Role::Held, ['═', '='], ['▓', 'H']),
         },
@@ -97,10 +97,12 @@ fn draw_title(view: &View, canvas: &mut Canvas) {
     canvas.fill(Rect { height: 1, ..area }, sign, rule_role);
     let record = if view.journal.recording { "record on" } else { "NO RECORD" };
     let ended = if view.ended { "ENDED " } else { "" };
-    let right = format!(" {}  {record}  {ended}{} ", view.journal.file, clock(view.now));
-    let right_columns = (area.width / 2).min(46);
-    let title_columns = area.width - right_columns - 4;
-    canvas.text((area.x + 2, area.y), title_columns, &format!(" {} ", view.title), Role::Strong);
+    let right = format!(" {record}  {ended}{} ", clock(view.now));
+    let right_columns = 28;
+    let file_right = area.right() - 1 - u16::try_from(right.len()).unwrap_or(right_columns).min(right_columns);
+    let names = (file_right - area.x - 4) / 2;
+    canvas.text((area.x + 2, area.y), names, &format!(" {} ", view.title), Role::Strong);
+    canvas.text_right((file_right, area.y), names, &format!(" {} ", view.journal.file), Role::Quiet);
     canvas.text_right((area.right() - 1, area.y), right_columns, &right, Role::Quiet);
 }
 
@@ -155,11 +157,11 @@ fn fate(view: &View) -> (String, Role) {
     };
     let speed = figures.short(held.target_kmh);
     match held.kept {
-        Kept::No if view.armed => ("held, not taken; ARMED: the next full dwell is kept".into(), Role::Steady),
-        Kept::No => (format!("held at {speed}, NOT TAKEN: Space keeps it"), Role::Held),
-        Kept::Writing(id) => (format!("{id} taken at {speed}, writing{armed}"), Role::Held),
-        Kept::OnDisk(id) => (format!(" {id} KEPT on disk, at {speed}{armed} "), Role::Kept),
-        Kept::Failed(id) => (format!(" {id} NOT ON DISK: in memory only{armed} "), Role::Trouble),
+        Kept::No if view.armed => (format!("held at {speed}: not taken{armed}"), Role::Steady),
+        Kept::No => (format!("held at {speed}: NOT TAKEN, Space keeps it"), Role::Held),
+        Kept::Writing(id) => (format!("held at {speed}: {id} taken, writing{armed}"), Role::Held),
+        Kept::OnDisk(id) => (format!(" held at {speed}: {id} KEPT on disk{armed} "), Role::Kept),
+        Kept::Failed(id) => (format!(" held at {speed}: {id} NOT ON DISK, in memory only{armed} "), Role::Trouble),
     }
 }
 
@@ -243,22 +245,30 @@ fn draw_tag(view: &View, canvas: &mut Canvas, y: u16) {
     let used = canvas.text((area.x + 2, y), 6, "next ", Role::Quiet);
     let x = area.x + 2 + used;
     let used = canvas.text((x, y), 8, &format!("[{}]", tag.configuration), Role::Strong);
-    let fixed = 49;
-    let name_columns = (area.right().saturating_sub(fixed)).saturating_sub(x + used + 2);
-    canvas.text((x + used + 1, y), name_columns, &tag.name, Role::Base);
+    let wide = area.width >= 72;
+    let fixed = if wide { 49 } else { 34 };
     let at = area.right() - fixed;
-    let how = if tag.by_hand { "by key" } else { "by track" };
-    canvas.text((at, y), 5, tag.direction, Role::Strong);
-    canvas.text((at + 6, y), 8, how, Role::Quiet);
-    canvas.text((at + 16, y), 14, &format!("pass {:>2} of {}", tag.pass, tag.wanted), Role::Base);
-    let (zero, role) = zero_age(view.zero_age_s);
+    canvas.text((x + used + 1, y), at.saturating_sub(x + used + 2), &tag.name, Role::Base);
+    let used = canvas.text((at, y), 5, tag.direction, Role::Strong).max(5);
+    if wide {
+        let how = if tag.by_hand { "by key" } else { "by track" };
+        canvas.text((at + 6, y), 8, how, Role::Quiet);
+    }
+    let pass_at = if wide { at + 16 } else { at + used + 1 };
+    canvas.text((pass_at, y), 14, &format!("pass {:>2} of {}", tag.pass, tag.wanted), Role::Base);
+    let (zero, role) = zero_age(view.zero_age_s, wide);
     canvas.text_right((area.right() - 1, y), 17, &zero, role);
 }
 
-fn zero_age(age_s: Option<f64>) -> (String, Role) {
+fn zero_age(age_s: Option<f64>, wide: bool) -> (String, Role) {
     match age_s.filter(|s| s.is_finite() && *s >= 0.0) {
-        None => (" NEVER ZEROED ".into(), Role::Trouble),
-        Some(s) => (format!("zero {:>3.0} min ago", (s / 60.0).floor().min(999.0)), Role::Quiet),
+        None if wide => (" NEVER ZEROED ".into(), Role::Trouble),
+        None => (" NO ZERO ".into(), Role::Trouble),
+        Some(s) => {
+            let minutes = (s / 60.0).floor().min(999.0);
+            let ago = if wide { " ago" } else { "" };
+            (format!("zero {minutes:>3.0} min{ago}"), Role::Quiet)
+        }
     }
 }
 

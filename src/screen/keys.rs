@@ -46,7 +46,7 @@ pub struct KeyRow {
     pub places: &'static [Place],
     /// The keys, with Control or without.
     pub keys: &'static [(KeyCode, bool)],
-    /// The keys as printed.
+    /// The keys as printed; empty for habits of every terminal.
     pub shown: &'static str,
     /// What it does, as printed.
     pub does: &'static str,
@@ -79,12 +79,16 @@ const fn plain(c: char) -> (KeyCode, bool) {
     (KeyCode::Char(c), false)
 }
 
+const fn bare(code: KeyCode) -> (KeyCode, bool) {
+    (code, false)
+}
+
 /// Every key there is, in the order of the help.
 #[rustfmt::skip]
 pub const TABLE: &[KeyRow] = &[
     row((UNTYPED, &[plain(' ')]), ("Space", "take: keep the held dwell, or the next"), Some("take"), take),
-    row((EVERYWHERE, &[(KeyCode::PageDown, false)]), ("PageDown", "take, even while typing (remote: forward)"), None, take),
-    row((DRIVE, &[(KeyCode::PageUp, false)]), ("PageUp", "void the last segment; asks (remote: back)"), Some("void"), ask_void),
+    row((EVERYWHERE, &[bare(KeyCode::PageDown)]), ("PageDown", "take, also in a text (remote: on)"), None, take),
+    row((DRIVE, &[bare(KeyCode::PageUp)]), ("PageUp", "void the last one; asks (remote: back)"), Some("void"), ask_void),
     row((DRIVE, &[plain('c')]), ("c", "configuration that is fitted"), Some("config"), choose_configuration),
     row((DRIVE, &[plain('d')]), ("d", "direction: by track, out, back, other"), Some("direction"), turn_direction),
     row((DRIVE, &[plain('t')]), ("t", "target: the next one of the outing"), Some("target"), next_target),
@@ -95,22 +99,39 @@ pub const TABLE: &[KeyRow] = &[
     row((DRIVE, &[plain('a')]), ("a", "air measured by hand"), None, |_, f| open(f, PromptKind::Air)),
     row((DRIVE, &[plain('p')]), ("p", "taps: which channel sits on which"), None, |_, f| open(f, PromptKind::Taps)),
     row((DRIVE, &[plain('l')]), ("l", "light: day, night, no colour"), None, light),
-    row((DRIVE, &[(KeyCode::Esc, false)]), ("Esc", "trouble seen: silence its sound"), None, |_, _| Some(Action::Acknowledge)),
-    row((DRIVE, &[plain('?'), (KeyCode::F(1), false)]), ("? F1", "this help"), Some("help"), help),
-    row((DRIVE, &[plain('q')]), ("q", "leave; asks"), Some("leave"), ask_quit),
-    row((&[Place::Drive, Place::Help, Place::Void, Place::Configuration, Place::Prompt], &[(KeyCode::Char('c'), true)]), ("Ctrl-C", "leave; asks"), None, ask_quit),
-    row((EVERYWHERE, &[(KeyCode::Char('z'), true)]), ("Ctrl-Z", "suspend; the measuring rests too"), None, |_, _| Some(Action::Suspend)),
-    row((&[Place::Help], &[(KeyCode::Esc, false), (KeyCode::Enter, false), plain('?'), plain('q'), (KeyCode::F(1), false)]), ("Esc Enter ? q", "help: close"), None, back_out),
-    row((&[Place::Quit], &[(KeyCode::Enter, false), plain('q'), (KeyCode::Char('c'), true)]), ("Enter q Ctrl-C", "leave?: yes"), None, |_, _| Some(Action::Quit)),
-    row((&[Place::Void], &[(KeyCode::Enter, false), (KeyCode::PageUp, false)]), ("Enter PageUp", "void?: yes"), None, void),
-    row((&[Place::Quit, Place::Void, Place::Configuration, Place::Prompt], &[(KeyCode::Esc, false)]), ("Esc", "anything asked: no, back"), None, back_out),
-    row((&[Place::Configuration], &[(KeyCode::Down, false), (KeyCode::Tab, false)]), ("Down Tab", "configuration: next (or its letter)"), None, |v, f| step(v, f, 1)),
-    row((&[Place::Configuration], &[(KeyCode::Up, false), (KeyCode::BackTab, false)]), ("Up", "configuration: the one before"), None, |v, f| step(v, f, -1)),
-    row((&[Place::Configuration], &[(KeyCode::Enter, false)]), ("Enter", "configuration: this is fitted"), None, fit),
-    row((&[Place::Prompt], &[(KeyCode::Enter, false)]), ("Enter", "text: done"), None, submit),
-    row((&[Place::Prompt], &[(KeyCode::Backspace, false)]), ("Backspace", "text: rub out"), None, rub_out),
-    row((&[Place::Prompt], &[(KeyCode::Char('u'), true)]), ("Ctrl-U", "text: start again"), None, start_again),
+    row((DRIVE, &[bare(KeyCode::Esc)]), ("Esc", "trouble seen: silence its sound"), None, |_, _| Some(Action::Acknowledge)),
+    row((DRIVE, &[plain('?')]), ("?", "this help"), Some("help"), help),
+    row((DRIVE, &[plain('q'), CTRL_C]), ("q Ctrl-C", "leave; asks"), Some("leave"), ask_quit),
+    row((&[Place::Help], &[bare(KeyCode::Esc), bare(KeyCode::Enter), plain('?'), plain('q')]), ("Esc", "closes"), None, back_out),
+    row((&[Place::Quit], &[bare(KeyCode::Enter), plain('q'), CTRL_C]), ("Enter q", "leaves"), None, |_, _| Some(Action::Quit)),
+    row((&[Place::Void], &[bare(KeyCode::Enter), bare(KeyCode::PageUp)]), ("Enter PageUp", "voids"), None, void),
+    row((&[Place::Configuration], &[bare(KeyCode::Down), bare(KeyCode::Tab)]), ("Down Tab", "next"), None, |v, f| step(v, f, 1)),
+    row((&[Place::Configuration], &[bare(KeyCode::Up), bare(KeyCode::BackTab)]), ("Up", "before"), None, |v, f| step(v, f, -1)),
+    row((&[Place::Configuration], &[bare(KeyCode::Enter)]), ("Enter", "this one"), None, fit),
+    row((&[Place::Prompt], &[bare(KeyCode::Enter)]), ("Enter", "done"), None, submit),
+    row((&[Place::Prompt], &[bare(KeyCode::Backspace)]), ("Backspace", "rubs out"), None, rub_out),
+    row((&[Place::Prompt], &[(KeyCode::Char('u'), true)]), ("Ctrl-U", "empties"), None, start_again),
+    row((&[Place::Quit, Place::Void, Place::Configuration, Place::Prompt], &[bare(KeyCode::Esc)]), ("Esc", "backs out"), None, back_out),
+    row((&[Place::Help, Place::Void, Place::Configuration, Place::Prompt], &[CTRL_C]), UNPRINTED, None, ask_quit),
+    row((EVERYWHERE, &[(KeyCode::Char('z'), true)]), UNPRINTED, None, |_, _| Some(Action::Suspend)),
 ];
+
+/// Habits of every terminal, which need no line in a help.
+const UNPRINTED: (&str, &str) = ("", "");
+const CTRL_C: (KeyCode, bool) = (KeyCode::Char('c'), true);
+
+/// What a box prints of its own keys.
+pub(super) fn keys_of(place: Place) -> String {
+    let own = TABLE.iter().filter(|row| row.places.contains(&place) && !row.places.contains(&Place::Drive));
+    let words: Vec<String> =
+        own.filter(|row| !row.does.is_empty()).map(|row| format!("{} {}", row.shown, row.does)).collect();
+    words.join("   ")
+}
+
+/// The rows that the help prints.
+pub(super) fn help_rows() -> impl Iterator<Item = &'static KeyRow> {
+    TABLE.iter().filter(|row| row.places.contains(&Place::Drive) && !row.does.is_empty())
+}
 
 /// The place that the face is in.
 pub fn place(face: &Face) -> Place {
@@ -323,17 +344,22 @@ pub(super) fn at_stake(view: &View) -> Option<&'static str> {
     }
 }
 
-/// The one line of keys, as many as fit.
+/// The one line of keys: help and leave always, at its end, and before them as many as fit.
 pub(super) fn draw_line(canvas: &mut Canvas, y: u16) {
     let area = canvas.area();
+    let rows: Vec<(&str, &str)> =
+        TABLE.iter().filter_map(|row| Some((row.shown.split(' ').next()?, row.brief?))).collect();
+    let columns = |(shown, brief): &(&str, &str)| u16::try_from(shown.len() + brief.len() + 3).unwrap_or(u16::MAX);
+    let (first, last) = rows.split_at(rows.len().saturating_sub(2));
+    let mut room = area.width.saturating_sub(3 + last.iter().map(columns).sum::<u16>());
+    let fitting = first.iter().take_while(|row| {
+        let fits = columns(row) <= room;
+        room = room.saturating_sub(columns(row));
+        fits
+    });
     let mut x = area.x + 2;
-    for row in TABLE {
-        let Some(brief) = row.brief else { continue };
-        let columns = u16::try_from(row.shown.len() + 1 + brief.len()).unwrap_or(u16::MAX);
-        if x.saturating_add(columns) >= area.right() {
-            break;
-        }
-        x += canvas.text((x, y), columns, row.shown, Role::Strong) + 1;
-        x += canvas.text((x, y), columns, brief, Role::Quiet) + 2;
+    for (shown, brief) in fitting.chain(last) {
+        x += canvas.text((x, y), area.width, shown, Role::Strong) + 1;
+        x += canvas.text((x, y), area.width, brief, Role::Quiet) + 2;
     }
 }

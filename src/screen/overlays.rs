@@ -3,7 +3,7 @@
 //! Each is a box in the lower part, so that state, speed and fate stay in sight; only the help covers more.
 
 use super::canvas::Canvas;
-use super::keys::{TABLE, at_stake};
+use super::keys::{Place, at_stake, help_rows, keys_of};
 use super::text::{safe, width};
 use super::theme::Role;
 use super::{Face, Overlay, Prompt, PromptKind, View};
@@ -24,9 +24,9 @@ pub(super) fn draw(view: &View, face: &Face, canvas: &mut Canvas) {
 /// An empty box with a title, at the bottom above the line of keys; returns its inside.
 fn panel(canvas: &mut Canvas, (columns, rows): (u16, u16), title: &str) -> Rect {
     let area = canvas.area();
-    let (columns, rows) = (columns.min(area.width), (rows + 2).min(area.height - 1));
+    let (columns, rows) = (columns.min(area.width), (rows + 2).min(area.height));
     let x = area.x + (area.width - columns) / 2;
-    let outer = Rect::new(x, area.bottom() - 1 - rows, columns, rows);
+    let outer = Rect::new(x, area.bottom() - rows - u16::from(rows < area.height), columns, rows);
     canvas.fill(outer, ' ', Role::Base);
     let (across, along) = (canvas.sign('─', '-'), canvas.sign('│', '|'));
     for y in [outer.top(), outer.bottom() - 1] {
@@ -45,18 +45,13 @@ fn panel(canvas: &mut Canvas, (columns, rows): (u16, u16), title: &str) -> Rect 
     Rect::new(outer.x + 2, outer.y + 1, outer.width - 4, outer.height - 2)
 }
 
-/// Every row of the key table, in two columns where one is not high enough.
+/// The key table; where the screen is low it covers the line of keys too.
 fn draw_help(canvas: &mut Canvas) {
-    let area = canvas.area();
-    let rows = u16::try_from(TABLE.len()).unwrap_or(u16::MAX);
-    let columns = if rows + 3 > area.height { 2 } else { 1 };
-    let lines = rows.div_ceil(columns).min(area.height - 3);
-    let inside = panel(canvas, (64 * columns, lines), "keys (Esc closes)");
-    let column = inside.width / columns;
-    for (i, row) in (0u16..).zip(TABLE) {
-        let at = (inside.x + i / lines * column, inside.y + i % lines);
-        canvas.text(at, 15, row.shown, Role::Strong);
-        canvas.text((at.0 + 15, at.1), column.saturating_sub(16), row.does, Role::Base);
+    let rows = u16::try_from(help_rows().count()).unwrap_or(u16::MAX);
+    let inside = panel(canvas, (60, rows), &format!("keys: {}", keys_of(Place::Help)));
+    for (y, row) in (inside.top()..inside.bottom()).zip(help_rows()) {
+        canvas.text((inside.x, y), 9, row.shown, Role::Strong);
+        canvas.text((inside.x + 10, y), inside.width - 10, row.does, Role::Base);
     }
 }
 
@@ -67,20 +62,20 @@ fn draw_quit(view: &View, canvas: &mut Canvas) {
     if let Some(stake) = at_stake(view) {
         canvas.text((inside.x, inside.y + 1), inside.width, stake, Role::Off);
     }
-    canvas.text((inside.x, inside.y + 3), inside.width, "Enter or q leaves    Esc stays", Role::Strong);
+    canvas.text((inside.x, inside.y + 3), inside.width, &keys_of(Place::Quit), Role::Strong);
 }
 
 fn draw_void(id: u32, canvas: &mut Canvas) {
     let inside = panel(canvas, (56, 3), &format!("Void segment {id}?"));
     canvas.text((inside.x, inside.y), inside.width, "It stays in the file and no longer counts.", Role::Base);
-    canvas.text((inside.x, inside.y + 2), inside.width, "PageUp again or Enter voids    Esc keeps", Role::Strong);
+    canvas.text((inside.x, inside.y + 2), inside.width, &keys_of(Place::Void), Role::Strong);
 }
 
 fn draw_configurations(view: &View, at: usize, canvas: &mut Canvas) {
     let most = usize::from(canvas.area().height.saturating_sub(6).min(12));
     let count = view.configurations.len();
     let rows = u16::try_from(count.min(most) + 2).unwrap_or(4);
-    let inside = panel(canvas, (56, rows), "Which configuration is fitted?");
+    let inside = panel(canvas, (60, rows), "Which configuration is fitted? Its letter, or");
     let skip = (at + 1).saturating_sub(most);
     for (y, (i, (letter, name))) in (inside.y..).zip(view.configurations.iter().enumerate().skip(skip).take(most)) {
         let (mark, role) = if i == at { (canvas.sign('►', '>'), Role::Held) } else { (' ', Role::Base) };
@@ -88,7 +83,7 @@ fn draw_configurations(view: &View, at: usize, canvas: &mut Canvas) {
         canvas.text((inside.x + 2, y), inside.width - 2, &format!("{letter}  {name}"), role);
     }
     let last = inside.bottom().saturating_sub(1);
-    canvas.text((inside.x, last), inside.width, "its letter, or arrows and Enter    Esc keeps", Role::Strong);
+    canvas.text((inside.x, last), inside.width, &keys_of(Place::Configuration), Role::Strong);
 }
 
 fn draw_prompt(prompt: &Prompt, canvas: &mut Canvas) {
@@ -108,7 +103,7 @@ fn draw_prompt(prompt: &Prompt, canvas: &mut Canvas) {
     if let Some(complaint) = &prompt.complaint {
         canvas.text((inside.x, inside.y + 2), inside.width, complaint, Role::Off);
     }
-    canvas.text((inside.x, inside.y + 3), inside.width, "Enter is done    Esc drops it", Role::Strong);
+    canvas.text((inside.x, inside.y + 3), inside.width, &keys_of(Place::Prompt), Role::Strong);
 }
 
 /// The end of a safe text that fits in so many columns.

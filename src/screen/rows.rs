@@ -105,7 +105,10 @@ fn draw_tile(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
     let figures = Figures::of(row.quantity, &view.show);
     let x = area.x + 2;
     let words = TILE_WORDS - 3;
-    canvas.text((x, area.y), words, &row.label, Role::Strong);
+    let used = canvas.text((x, area.y), words, &row.label, Role::Strong);
+    if usize::from(words - used) > figures.unit().len() {
+        canvas.text_right((x + words, area.y), words - used, figures.unit(), Role::Quiet);
+    }
     canvas.text((x, area.y + 1), words, &format!("live{:>8}", figures.signed(row.live)), Role::Quiet);
     match flag(row) {
         Some(flag) => canvas.text((x, area.y + 2), words, &format!(" {flag} "), Role::Trouble),
@@ -119,9 +122,8 @@ fn draw_tile(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
         Some(_) => digits::draw(canvas, value, figures.signed(row.held).trim_start(), (Size::Middle, true), role),
         None => canvas.text_right((value.right(), value.y + 1), value.width, "—", Role::Quiet),
     }
-    let trace = Rect::new(value.right() + 7, area.y, area.width.saturating_sub(TILE_WORDS + TILE_VALUE + 8), 3);
+    let trace = Rect::new(value.right() + 3, area.y, area.width.saturating_sub(TILE_WORDS + TILE_VALUE + 4), 3);
     if trace.width >= 8 {
-        canvas.text((value.right() + 1, area.y + 2), 5, figures.unit(), Role::Quiet);
         draw_trace(row, &figures, canvas, trace);
     }
 }
@@ -190,7 +192,7 @@ fn draw_trace(row: &Row, figures: &Figures, canvas: &mut Canvas, area: Rect) {
     }
     let middle = low / 2.0 + high / 2.0;
     let half = (high / 2.0 - low / 2.0).max(8.0 * figures.step());
-    let steps: u16 = if canvas.plain() { 3 } else { 8 };
+    let steps: u16 = if canvas.plain() || area.height > 1 { 3 } else { 8 };
     let levels = steps * area.height;
     let first = area.right() - u16::try_from(points.len()).unwrap_or(area.width);
     for (x, point) in (first..).zip(&points) {
@@ -201,19 +203,11 @@ fn draw_trace(row: &Row, figures: &Figures, canvas: &mut Canvas, area: Rect) {
     }
 }
 
-/// A filled column up to the level; in ASCII the point alone.
+/// One point: its part of the cell out of three, or filled in eighths where one row is all there is.
 fn draw_point(canvas: &mut Canvas, (x, area): (u16, Rect), (level, steps): (u16, u16)) {
     const EIGHTHS: [char; 8] = ['▁', '▂', '▃', '▄', '▅', '▆', '▇', '█'];
-    const THIRDS: [char; 3] = ['_', '-', '"'];
-    let row = level / steps;
-    let y = area.bottom() - 1 - row;
+    const THIRDS: [(char, char); 3] = [('▄', '_'), ('■', '-'), ('▀', '"')];
     let part = usize::from(level % steps);
-    if canvas.plain() {
-        canvas.put((x, y), THIRDS[part], Role::Quiet);
-        return;
-    }
-    canvas.put((x, y), EIGHTHS[part], Role::Quiet);
-    for y in y + 1..area.bottom() {
-        canvas.put((x, y), '█', Role::Quiet);
-    }
+    let sign = if steps == 8 { EIGHTHS[part] } else { canvas.sign(THIRDS[part].0, THIRDS[part].1) };
+    canvas.put((x, area.bottom() - 1 - level / steps), sign, Role::Quiet);
 }

@@ -71,12 +71,24 @@ fn no_key_stands_twice_in_one_place() {
 }
 
 #[test]
-fn the_help_prints_every_row() {
-    for size in [(80, 32), (120, 40), (140, 24)] {
-        let help = text(&scenes::steady(), &with(Overlay::Help), size);
-        for row in TABLE {
-            assert!(help.contains(row.shown) && help.contains(row.does), "{size:?} misses {}\n{help}", row.does);
+fn every_printed_key_stands_where_it_acts() {
+    let view = scenes::held(Kept::OnDisk(12));
+    for size in [(60, 18), (80, 24), (120, 40)] {
+        for row in TABLE.iter().filter(|row| !row.does.is_empty()) {
+            let place = if row.places.contains(&Place::Drive) { Place::Help } else { row.places[0] };
+            let box_text = text(&view, &face_at(place), size);
+            let both = box_text.lines().any(|l| l.contains(row.shown) && l.contains(row.does));
+            assert!(both, "{size:?} misses {} {}\n{box_text}", row.shown, row.does);
         }
+    }
+}
+
+#[test]
+fn help_and_leave_stand_in_the_line_of_keys_at_every_width() {
+    for columns in 60..200 {
+        let text = text(&scenes::steady(), &super::face(), (columns, 24));
+        let line = text.lines().last().expect("a line of keys");
+        assert!(line.contains("Space take") && line.ends_with("? help  q leave"), "{columns}: {line}");
     }
 }
 
