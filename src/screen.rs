@@ -3,6 +3,7 @@
 //! The view is plain data made from the pipeline and the state of the journal; drawing it is pure, so that
 //! a screen is tested as text. Speeds are km/h and pressures Pa in here; [`View::show`] says how they are shown.
 
+mod below;
 mod canvas;
 mod digits;
 mod drive;

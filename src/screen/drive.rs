@@ -10,7 +10,7 @@ use super::figures::{Figures, clock, seconds};
 use super::keys;
 use super::rows;
 use super::theme::Role;
-use super::{Face, Kept, Message, Overlay, PortHealth, PortState, View, Weight, WindowState};
+use super::{Face, Kept, Overlay, View, WindowState, below};
 use crate::units::Quantity;
 use ratatui::layout::Rect;
 
@@ -18,6 +18,8 @@ use ratatui::layout::Rect;
 const SMALLEST: (u16, u16) = (60, 18);
 /// Rows above the channels.
 const HEAD_ROWS: u16 = 9;
+/// Rows kept for ports and messages however many channels there are: trouble coming and going moves nothing.
+const LEAST_BELOW: u16 = 2;
 /// Columns of the widest large state word.
 const STATE_COLUMNS: u16 = 45;
 
@@ -70,23 +72,9 @@ pub(super) fn draw(view: &View, canvas: &mut Canvas) {
 
 /// Channels, ports and messages share what is left: channels first, then a line a port, then messages.
 fn draw_room(view: &View, canvas: &mut Canvas, room: Rect) {
-    let trouble = u16::from(view.journal.trouble.is_some());
-    let least_below = 2 + trouble;
-    let wish_below = u16::try_from(view.ports.len()).unwrap_or(u16::MAX).saturating_add(4 + trouble);
-    let used = rows::draw(view, canvas, room, (least_below, wish_below));
-    let mut below = Rect::new(room.x, room.y + used, room.width, room.height - used);
-    let every_port = view.ports.len() < usize::from(below.height.saturating_sub(trouble));
-    let port_rows = if every_port { u16::try_from(view.ports.len()).unwrap_or(0) } else { 1 };
-    if every_port {
-        for (y, port) in (below.y..).zip(&view.ports) {
-            draw_port(port, canvas, y);
-        }
-    } else {
-        draw_ports_in_one(&view.ports, canvas, below.y);
-    }
-    below.y += port_rows;
-    below.height -= port_rows;
-    draw_messages(view, canvas, below);
+    let ports = u16::try_from(view.ports.len()).unwrap_or(u16::MAX);
+    let used = rows::draw(view, canvas, room, (LEAST_BELOW, ports.saturating_add(5)));
+    below::draw(view, canvas, Rect { y: room.y + used, height: room.height - used, ..room });
 }
 
 fn draw_title(view: &View, canvas: &mut Canvas) {
@@ -170,10 +158,9 @@ fn draw_gauge(view: &View, canvas: &mut Canvas, y: u16) {
     let area = canvas.area();
     let window = &view.window;
     let figures = Figures::of(Quantity::Speed, &view.show);
-    let edge = |side: f64| figures.short(window.target_kmh + side * window.tolerance_kmh);
-    canvas.text_right((area.x + 8, y), 6, &edge(-1.0), Role::Base);
-    canvas.text_right((area.right() - 1, y), 6, &edge(1.0), Role::Base);
-    let scale = Rect::new(area.x + 9, y, area.width - 18, 1);
+    let width = format!("{} ±{}", figures.short(window.target_kmh), figures.short(window.tolerance_kmh));
+    canvas.text((area.x + 2, y), 11, &width, Role::Base);
+    let scale = Rect::new(area.x + 14, y, area.width - 15, 1);
     let (outside, inside) = (canvas.sign('·', '.'), canvas.sign('═', '='));
     canvas.fill(scale, outside, Role::Quiet);
     let left = scale.x + scale.width / 3;
@@ -205,14 +192,14 @@ fn draw_progress(view: &View, canvas: &mut Canvas, y: u16) {
             canvas.text((area.x + 2, y), area.width - 3, &off_words(view), Role::Off);
             return;
         }
-        WindowState::Settling => ("settle", "s to settle"),
+        WindowState::Settling => ("settling", "s to settle"),
         WindowState::Steady => ("dwell", "s to hold"),
         WindowState::Held => ("dwell", "s to next"),
     };
-    canvas.text((area.x + 2, y), 6, label, Role::Base);
+    canvas.text((area.x + 2, y), 9, label, Role::Base);
     let left = format!("{} {ends}", seconds(window.left_s));
     canvas.text_right((area.right() - 1, y), 17, &format!("{left:<17}"), Role::Strong);
-    let bar = Rect::new(area.x + 9, y, area.width - 28, 1);
+    let bar = Rect::new(area.x + 14, y, area.width - 33, 1);
     let empty = canvas.sign('░', '.');
     canvas.fill(bar, empty, Role::Quiet);
     let share = if window.progress.is_finite() { window.progress.clamp(0.0, 1.0) } else { 0.0 };
@@ -270,94 +257,6 @@ fn zero_age(age_s: Option<f64>, wide: bool) -> (String, Role) {
             (format!("zero {minutes:>3.0} min{ago}"), Role::Quiet)
         }
     }
-}
-
-fn port_words(state: PortState) -> (&'static str, &'static str, Role) {
-    match state {
-        PortState::Waiting => ("waiting", "nothing came yet", Role::Base),
-        PortState::Good => ("good", "", Role::Base),
-        PortState::CheckBaud => ("CHECK BAUD", "bytes arrive but no line parses: check baud", Role::Trouble),
-        PortState::Silent => ("SILENT", "nothing came for three seconds", Role::Trouble),
-        PortState::Lost => ("LOST", "unplugged; it is looked for", Role::Trouble),
-        PortState::NoFix => ("NO FIX", "it talks but has no fix", Role::Trouble),
-    }
-}
-
-fn port_rates(port: &PortHealth) -> String {
-    format!("{:>6.1} lines/s {:>5.1} % rejected", port.lines_per_s.clamp(0.0, 9999.9), port.rejected_share * 100.0)
-}
-
-fn draw_port(port: &PortHealth, canvas: &mut Canvas, y: u16) {
-    let area = canvas.area();
-    let (word, meaning, role) = port_words(port.state);
-    canvas.text((area.x + 2, y), 9, &port.name, Role::Base);
-    canvas.text((area.x + 12, y), 12, &format!(" {word} "), role);
-    canvas.text((area.x + 25, y), 32, &port_rates(port), Role::Quiet);
-    let rest = area.width.saturating_sub(60);
-    let said = match (&port.last_bad, meaning) {
-        (Some((line, why)), "") => format!("last rejected: {why}: {line}"),
-        (_, meaning) => meaning.to_string(),
-    };
-    if usize::from(rest) >= said.len() || meaning.is_empty() {
-        canvas.text((area.x + 59, y), rest, &said, Role::Quiet);
-    } else {
-        canvas.fill(Rect::new(area.x + 25, y, area.width - 25, 1), ' ', Role::Base);
-        canvas.text((area.x + 25, y), area.width - 26, &said, role);
-    }
-}
-
-/// All ports in one row, troubled ones first and in full words.
-fn draw_ports_in_one(ports: &[PortHealth], canvas: &mut Canvas, y: u16) {
-    let area = canvas.area();
-    let mut x = area.x + 2;
-    let good = |port: &&PortHealth| matches!(port.state, PortState::Good | PortState::Waiting);
-    let troubled = ports.iter().any(|p| !good(&p));
-    let slot = (area.width - 2) / u16::try_from(ports.len().max(1)).unwrap_or(u16::MAX);
-    for port in ports.iter().filter(|p| !good(p)).chain(ports.iter().filter(good)) {
-        let (word, meaning, role) = port_words(port.state);
-        let text = match (port.state, troubled) {
-            (PortState::CheckBaud, _) => format!(" {} {meaning} ", port.name),
-            (PortState::Good, false) if slot >= 36 => {
-                format!(
-                    "{} good {:>6.1}/s {:>5.1} % rejected",
-                    port.name,
-                    port.lines_per_s,
-                    port.rejected_share * 100.0
-                )
-            }
-            _ if good(&port) => format!("{} {word}", port.name),
-            _ => format!(" {} {word} ", port.name),
-        };
-        let columns = if troubled { area.right().saturating_sub(x + 1) } else { slot.saturating_sub(1) };
-        let used = canvas.text((x, y), columns, &text, role);
-        x += if troubled { used + 2 } else { slot };
-    }
-}
-
-fn draw_messages(view: &View, canvas: &mut Canvas, area: Rect) {
-    let mut area = area;
-    if let Some(trouble) = view.journal.trouble.as_ref().filter(|_| area.height > 0) {
-        canvas.text((area.x + 2, area.y), area.width - 3, &format!(" DISK: {trouble} "), Role::Trouble);
-        area.y += 1;
-        area.height -= 1;
-    }
-    let skip = view.messages.len().saturating_sub(usize::from(area.height));
-    for (y, message) in (area.y..).zip(view.messages.iter().skip(skip)) {
-        draw_message(message, canvas, y);
-    }
-}
-
-fn draw_message(message: &Message, canvas: &mut Canvas, y: u16) {
-    let area = canvas.area();
-    let (mark, role) = match message.weight {
-        Weight::Quiet => (' ', Role::Quiet),
-        Weight::Good => ('+', Role::Base),
-        Weight::Refused => ('?', Role::Off),
-        Weight::Trouble => ('!', Role::Trouble),
-    };
-    canvas.text_right((area.x + 10, y), 8, &clock(message.at), Role::Quiet);
-    canvas.put((area.x + 11, y), mark, role);
-    canvas.text((area.x + 13, y), area.width - 14, &message.text, role);
 }
 
 /// On fewer cells: what it needs, then state, speed and fate on the lines there are; and what waits for a key.

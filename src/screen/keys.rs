@@ -125,7 +125,7 @@ pub(super) fn keys_of(place: Place) -> String {
     let own = TABLE.iter().filter(|row| row.places.contains(&place) && !row.places.contains(&Place::Drive));
     let words: Vec<String> =
         own.filter(|row| !row.does.is_empty()).map(|row| format!("{} {}", row.shown, row.does)).collect();
-    words.join("   ")
+    words.join("  ")
 }
 
 /// The rows that the help prints.
