@@ -28,6 +28,8 @@ pub struct Face {
     pub theme: Theme,
     /// Draw with ASCII alone (old consoles, screen readers).
     pub plain: bool,
+    /// The driver is alone: nothing that invites reading.
+    pub solo: bool,
     /// What lies over the Drive screen.
     pub overlay: Overlay,
     /// The key that took or voided last and when it last came, to tell a held key from a second press.
@@ -80,7 +82,7 @@ pub fn render(view: &View, face: &Face, buffer: &mut Buffer) {
     if drive::too_small(&canvas) {
         drive::draw_small(view, face, &mut canvas);
     } else {
-        drive::draw(view, &mut canvas);
+        drive::draw(view, face, &mut canvas);
         overlays::draw(view, face, &mut canvas);
     }
 }

@@ -37,9 +37,11 @@ fn lines(buffer: &Buffer) -> Vec<String> {
         .collect()
 }
 
-fn snapshot(name: &str, view: &View, face: &Face) {
+const SIZES: [((u16, u16), &str); 3] = [((80, 24), "80x24"), ((120, 40), "120x40"), ((40, 8), "small")];
+
+fn snapshot(name: &str, view: &View, face: &Face, sizes: &[((u16, u16), &str)]) {
     insta::with_settings!({ snapshot_path => "screens/snapshots", prepend_module_to_snapshot => false, omit_expression => true }, {
-        for (size, word) in [((80, 24), "80x24"), ((120, 40), "120x40"), ((40, 8), "small")] {
+        for &(size, word) in sizes {
             insta::assert_snapshot!(format!("{name}-{word}"), text(view, face, size));
         }
     });
@@ -49,7 +51,7 @@ macro_rules! snapshots {
     ($($claim:ident: $name:literal, $view:expr, $face:expr;)*) => { $(
         #[test]
         fn $claim() {
-            snapshot($name, &$view, &$face);
+            snapshot($name, &$view, &$face, &SIZES);
         }
     )* };
 }
@@ -75,7 +77,14 @@ snapshots! {
     configurations_are_listed: "configuration", scenes::off_slow(), with(Overlay::Configuration(1));
     a_note_is_typed_below_the_state: "note", scenes::steady(), with(scenes::note());
     other_units_keep_their_columns: "mph", scenes::mph(), face();
+    alone_there_is_nothing_to_read: "solo", scenes::held(Kept::OnDisk(12)), Face { solo: true, ..face() };
+    alone_trouble_is_still_said: "solo-trouble", scenes::trouble(), Face { solo: true, ..face() };
     plain_draws_ascii: "plain", scenes::held(Kept::OnDisk(12)), Face { plain: true, ..face() };
+}
+
+#[test]
+fn at_the_smallest_size_everything_still_has_a_place() {
+    snapshot("trouble", &scenes::trouble(), &face(), &[((60, 18), "60x18")]);
 }
 
 #[test]
@@ -262,11 +271,11 @@ proptest! {
         view in any_view(),
         overlay in any_overlay(),
         size in prop_oneof![(1u16..130, 1u16..50), Just((1, 1)), Just((500, 200)), Just((60, 18)), Just((80, 24))],
-        plain in any::<bool>(),
+        (plain, solo) in any::<(bool, bool)>(),
         origin in prop_oneof![Just((0u16, 0u16)), (0u16..9, 0u16..9)],
     ) {
         let mut buffer = Buffer::empty(Rect::new(origin.0, origin.1, size.0, size.1));
-        render(&view, &Face { plain, ..with(overlay) }, &mut buffer);
+        render(&view, &Face { plain, solo, ..with(overlay) }, &mut buffer);
         for (i, cell) in buffer.content().iter().enumerate() {
             if ratatui::text::Span::raw(cell.symbol()).width() > 1 {
                 prop_assert!((i + 1) % usize::from(size.0) != 0, "a wide sign in the last column");

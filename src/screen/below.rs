@@ -85,16 +85,32 @@ fn draw_ports_in_one(ports: &[PortHealth], canvas: &mut Canvas, y: u16) {
     }
 }
 
-fn draw_messages(view: &View, canvas: &mut Canvas, area: Rect) {
-    let mut area = area;
-    if let Some(trouble) = view.journal.trouble.as_ref().filter(|_| area.height > 0) {
-        canvas.text((area.x + 2, area.y), area.width - 3, &format!(" DISK: {trouble} "), Role::Trouble);
+fn draw_messages(view: &View, canvas: &mut Canvas, mut area: Rect) {
+    if view.journal.trouble.is_some() && area.height > 0 {
+        draw_disk(view, canvas, area.y);
         area.y += 1;
         area.height -= 1;
     }
     let skip = view.messages.len().saturating_sub(usize::from(area.height));
     for (y, message) in (area.y..).zip(view.messages.iter().skip(skip)) {
         draw_message(message, canvas, y);
+    }
+}
+
+fn draw_disk(view: &View, canvas: &mut Canvas, y: u16) {
+    let area = canvas.area();
+    if let Some(trouble) = &view.journal.trouble {
+        canvas.text((area.x + 2, y), area.width - 3, &format!(" DISK: {trouble} "), Role::Trouble);
+    }
+}
+
+/// What a driver alone should know of at the next stop: broken disk and ports, and nothing else.
+pub(super) fn draw_trouble(view: &View, canvas: &mut Canvas, area: Rect) {
+    canvas.text((area.x + 2, area.y), area.width - 3, "alone: drive by ear, read and type when parked", Role::Quiet);
+    draw_disk(view, canvas, area.y + 1);
+    let troubled = view.ports.iter().filter(|p| !matches!(p.state, PortState::Good | PortState::Waiting));
+    for (y, port) in (area.y + 2..area.bottom()).zip(troubled) {
+        draw_port(port, canvas, y);
     }
 }
 

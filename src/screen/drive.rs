@@ -55,12 +55,16 @@ fn look(view: &View) -> Look {
     }
 }
 
-/// Draws the whole screen.
-pub(super) fn draw(view: &View, canvas: &mut Canvas) {
+/// Draws the whole screen; for a driver alone only what a glance needs, and trouble.
+pub(super) fn draw(view: &View, face: &Face, canvas: &mut Canvas) {
     let area = canvas.area();
     draw_title(view, canvas);
     draw_banner(view, canvas);
     draw_fate(view, canvas, area.y + 5);
+    if face.solo {
+        let room = Rect::new(area.x, area.y + 7, area.width, area.height - 7);
+        return below::draw_trouble(view, canvas, room);
+    }
     draw_gauge(view, canvas, area.y + 6);
     draw_progress(view, canvas, area.y + 7);
     draw_tag(view, canvas, area.y + 8);

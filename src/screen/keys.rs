@@ -145,7 +145,7 @@ pub fn place(face: &Face) -> Place {
     }
 }
 
-/// One key event: changes the face, and says what is to be done beyond it.
+/// One key event: changes the face, and says what is to be done beyond it. Caps Lock makes no other key.
 pub fn press(view: &View, face: &mut Face, key: KeyEvent) -> Option<Action> {
     let here = place(face);
     let rubbing = here == Place::Prompt && matches!(key.code, KeyCode::Char(_) | KeyCode::Backspace);
@@ -153,9 +153,15 @@ pub fn press(view: &View, face: &mut Face, key: KeyEvent) -> Option<Action> {
     if key.kind == KeyEventKind::Release || held_down(view, face, key.code) || !acts {
         return None;
     }
-    let control = key.modifiers.contains(KeyModifiers::CONTROL);
-    let other = key.modifiers.intersects(KeyModifiers::ALT | KeyModifiers::SUPER | KeyModifiers::META);
-    let found = TABLE.iter().find(|row| row.places.contains(&here) && row.keys.contains(&(key.code, control)));
+    // AltGr comes as Control and Alt together on some systems; it types, it commands nothing.
+    let alt_gr = key.modifiers.contains(KeyModifiers::CONTROL | KeyModifiers::ALT);
+    let control = !alt_gr && key.modifiers.contains(KeyModifiers::CONTROL);
+    let other = key.modifiers.intersects(KeyModifiers::ALT | KeyModifiers::SUPER | KeyModifiers::META) && !alt_gr;
+    let code = match key.code {
+        KeyCode::Char(c) if control || here != Place::Prompt => KeyCode::Char(c.to_ascii_lowercase()),
+        code => code,
+    };
+    let found = TABLE.iter().find(|row| row.places.contains(&here) && row.keys.contains(&(code, control)));
     match (found, key.code) {
         (Some(row), _) if !other => (row.act)(view, face),
         (None, KeyCode::Char(c)) if !control && here == Place::Prompt => type_in(face, c),

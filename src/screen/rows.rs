@@ -112,9 +112,7 @@ fn draw_tile(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
     canvas.text((x, area.y + 1), words, &format!("live{:>8}", figures.signed(row.live)), Role::Quiet);
     match flag(row) {
         Some(flag) => canvas.text((x, area.y + 2), words, &format!(" {flag} "), Role::Trouble),
-        None => {
-            canvas.text((x, area.y + 2), words, &format!("sd  {:>8}", figures.spread(row.fluctuation)), Role::Quiet)
-        }
+        None => canvas.text((x, area.y + 2), words, &format!("sd{:>7}", figures.spread(row.fluctuation)), Role::Quiet),
     };
     let value = Rect::new(area.x + TILE_WORDS, area.y, TILE_VALUE, 3);
     let role = held_role(view);
@@ -125,6 +123,8 @@ fn draw_tile(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
     let trace = Rect::new(value.right() + 3, area.y, area.width.saturating_sub(TILE_WORDS + TILE_VALUE + 4), 3);
     if trace.width >= 8 {
         draw_trace(row, &figures, canvas, trace);
+    } else {
+        draw_trace(row, &figures, canvas, Rect::new(x + 10, area.y + 2, 6, 1));
     }
 }
 
@@ -181,11 +181,21 @@ fn draw_line(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
     }
 }
 
-/// The newest points of the trace, one a column, the newest at the right; the scale is the row's own, but never finer
-/// than sixteen of the smallest steps shown, so that the noise of a still sensor looks still.
+/// The whole trace, the newest at the right; where it is longer than the area is wide, neighbouring points are averaged.
+fn points(trace: &[Option<f64>], width: usize) -> Vec<Option<f64>> {
+    let count = trace.len().min(width);
+    let bucket = |i: usize| &trace[i * trace.len() / count..(i + 1) * trace.len() / count];
+    let mean = |bucket: &[Option<f64>]| {
+        let good: Vec<f64> = bucket.iter().flatten().copied().filter(|v| v.is_finite()).collect();
+        (!good.is_empty()).then(|| good.iter().map(|v| v / good.len() as f64).sum())
+    };
+    (0..count).map(|i| mean(bucket(i))).collect()
+}
+
+/// The scale is the row's own, but never finer than sixteen of the smallest steps shown, so that the noise of a still
+/// sensor looks still.
 fn draw_trace(row: &Row, figures: &Figures, canvas: &mut Canvas, area: Rect) {
-    let skip = row.trace.len().saturating_sub(usize::from(area.width));
-    let points: Vec<Option<f64>> = row.trace.iter().skip(skip).map(|p| p.filter(|v| v.is_finite())).collect();
+    let points = points(&row.trace, usize::from(area.width));
     let (low, high) = points.iter().flatten().fold((f64::MAX, f64::MIN), |(l, h), v| (l.min(*v), h.max(*v)));
     if low > high {
         return;

@@ -136,6 +136,19 @@ fn escape_keeps_a_segment_and_so_does_taking() {
 }
 
 #[test]
+fn caps_lock_makes_no_other_key_and_alt_gr_types() {
+    let view = scenes::steady();
+    assert_eq!(letter(&view, &mut face(), 'Z'), command(Command::Zero));
+    let mut note = with(prompt(PromptKind::Note, "Q"));
+    assert_eq!(letter(&view, &mut note, 'Z'), None);
+    let alt_gr = KeyEvent::new(KeyCode::Char('@'), KeyModifiers::CONTROL | KeyModifiers::ALT);
+    assert_eq!(press(&view, &mut note, alt_gr), None);
+    assert_eq!(note.overlay, prompt(PromptKind::Note, "QZ@"));
+    let alt = KeyEvent::new(KeyCode::Char('z'), KeyModifiers::ALT);
+    assert_eq!(press(&view, &mut face(), alt), None);
+}
+
+#[test]
 fn nothing_kept_means_nothing_to_void() {
     let mut face = face();
     assert_eq!(tap(&scenes::no_speed(), &mut face, KeyCode::PageUp), None);
