@@ -3,8 +3,89 @@
 //! The view is plain data made from the pipeline and the state of the journal; drawing it is pure, so that
 //! a screen is tested as text. Speeds are km/h and pressures Pa in here; [`View::show`] says how they are shown.
 
+mod below;
+mod canvas;
+mod digits;
+mod drive;
+mod figures;
+pub mod keys;
+mod overlays;
+mod rows;
+pub mod text;
+mod theme;
+
+pub use theme::Theme;
+
 use crate::config::Show;
 use crate::units::StreamTime;
+use canvas::Canvas;
+use ratatui::buffer::Buffer;
+
+/// State of the interface itself, which no record holds: what is open, how it is drawn.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct Face {
+    /// Colours.
+    pub theme: Theme,
+    /// Draw with ASCII alone (old consoles, screen readers).
+    pub plain: bool,
+    /// The driver is alone: nothing that invites reading.
+    pub solo: bool,
+    /// What lies over the Drive screen.
+    pub overlay: Overlay,
+    /// The key that took or voided last and when it last came, to tell a held key from a second press.
+    pub last_key: Option<(crossterm::event::KeyCode, StreamTime)>,
+}
+
+/// What lies over the Drive screen; it never stops the one key from taking, save where text is typed.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub enum Overlay {
+    /// Nothing.
+    #[default]
+    None,
+    /// The key table.
+    Help,
+    /// "Leave?"
+    Quit,
+    /// "Void this segment?"
+    Void(u32),
+    /// The list of configurations and which one is marked.
+    Configuration(usize),
+    /// A line of text being typed.
+    Prompt(Prompt),
+}
+
+/// A line of text being typed.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Prompt {
+    /// What it will become.
+    pub kind: PromptKind,
+    /// So far, as typed.
+    pub text: String,
+    /// Why the last Enter was refused.
+    pub complaint: Option<String>,
+}
+
+/// What a typed line becomes.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum PromptKind {
+    /// A note.
+    Note,
+    /// The air measured by hand.
+    Air,
+    /// Channels on taps.
+    Taps,
+}
+
+/// Draws the Drive screen over the whole buffer. Pure; any size, down to one cell, is drawn without panic.
+pub fn render(view: &View, face: &Face, buffer: &mut Buffer) {
+    let mut canvas = Canvas::new(buffer, face.theme, face.plain);
+    if drive::too_small(&canvas) {
+        drive::draw_small(view, face, &mut canvas);
+    } else {
+        drive::draw(view, face, &mut canvas);
+        overlays::draw(view, face, &mut canvas);
+    }
+}
 
 /// Everything the Drive screen draws.
 #[derive(Clone, Debug, PartialEq)]
@@ -17,6 +98,8 @@ pub struct View {
     pub show: Show,
     /// State of the speed window.
     pub window: Window,
+    /// All targets of the outing, km/h.
+    pub targets_kmh: Vec<f64>,
     /// The dwell that is held, if any.
     pub held: Option<Held>,
     /// `take` was pressed and waits for the next full dwell.

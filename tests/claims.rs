@@ -1,1 +1,3 @@
+//! The table of contents of all tests.
 
+mod screens;

@@ -1,0 +1,273 @@
+//! Guards the promise that every printed key acts, that leaving and voiding ask once, and that one press takes once.
+
+use super::{scenes, text};
+use crossterm::event::{KeyCode, KeyEvent, KeyEventKind, KeyModifiers};
+use scenes::{face, with};
+use steadytap::screen::keys::{Action, Place, TABLE, paste, press};
+use steadytap::screen::{Face, Kept, Overlay, Prompt, PromptKind, View};
+use steadytap::session::Direction;
+use steadytap::stream::command::{Command, DirectionWord, LONGEST_TEXT};
+use steadytap::units::StreamTime;
+
+fn key(code: KeyCode, control: bool) -> KeyEvent {
+    KeyEvent::new(code, if control { KeyModifiers::CONTROL } else { KeyModifiers::NONE })
+}
+
+fn tap(view: &View, face: &mut Face, code: KeyCode) -> Option<Action> {
+    press(view, face, key(code, false))
+}
+
+fn letter(view: &View, face: &mut Face, c: char) -> Option<Action> {
+    tap(view, face, KeyCode::Char(c))
+}
+
+fn command(command: Command) -> Option<Action> {
+    Some(Action::Command(command))
+}
+
+fn later(view: &View, seconds: i64) -> View {
+    View { now: view.now.plus(seconds * 1_000_000), ..view.clone() }
+}
+
+fn prompt(kind: PromptKind, text: &str) -> Overlay {
+    Overlay::Prompt(Prompt { kind, text: text.into(), complaint: None })
+}
+
+fn face_at(place: Place) -> Face {
+    with(match place {
+        Place::Drive => Overlay::None,
+        Place::Help => Overlay::Help,
+        Place::Quit => Overlay::Quit,
+        Place::Void => Overlay::Void(12),
+        Place::Configuration => Overlay::Configuration(0),
+        Place::Prompt => prompt(PromptKind::Note, "gust"),
+    })
+}
+
+#[test]
+fn every_row_of_the_key_table_acts_in_every_place_it_names() {
+    let view = scenes::held(Kept::OnDisk(12));
+    for row in TABLE {
+        for place in row.places {
+            for (code, control) in row.keys {
+                let before = face_at(*place);
+                let mut after = before.clone();
+                let action = press(&view, &mut after, key(*code, *control));
+                after.last_key = None;
+                assert!(action.is_some() || after != before, "{} in {place:?} does nothing", row.shown);
+            }
+        }
+    }
+}
+
+#[test]
+fn no_key_stands_twice_in_one_place() {
+    for (i, row) in TABLE.iter().enumerate() {
+        for other in &TABLE[i + 1..] {
+            let both = row.places.iter().any(|p| other.places.contains(p));
+            assert!(!(both && row.keys.iter().any(|k| other.keys.contains(k))), "{} and {}", row.shown, other.shown);
+        }
+    }
+}
+
+#[test]
+fn every_printed_key_stands_where_it_acts() {
+    let view = scenes::held(Kept::OnDisk(12));
+    for size in [(60, 18), (80, 24), (120, 40)] {
+        for row in TABLE.iter().filter(|row| !row.does.is_empty()) {
+            let place = if row.places.contains(&Place::Drive) { Place::Help } else { row.places[0] };
+            let box_text = text(&view, &face_at(place), size);
+            let both = box_text.lines().any(|l| l.contains(row.shown) && l.contains(row.does));
+            assert!(both, "{size:?} misses {} {}\n{box_text}", row.shown, row.does);
+        }
+    }
+}
+
+#[test]
+fn help_and_leave_stand_in_the_line_of_keys_at_every_width() {
+    for columns in 60..200 {
+        let text = text(&scenes::steady(), &super::face(), (columns, 24));
+        let line = text.lines().last().expect("a line of keys");
+        assert!(line.contains("Space take") && line.ends_with("? help  q leave"), "{columns}: {line}");
+    }
+}
+
+#[test]
+fn one_press_takes_once_however_the_terminal_repeats_it() {
+    let view = scenes::held(Kept::No);
+    let mut face = face();
+    assert_eq!(letter(&view, &mut face, ' '), command(Command::Take));
+    for i in 1..50 {
+        let soon = View { now: view.now.plus(i * 100_000), ..view.clone() };
+        assert_eq!(letter(&soon, &mut face, ' '), None, "event {i} of a held key");
+    }
+    assert_eq!(letter(&later(&view, 7), &mut face, ' '), command(Command::Take));
+}
+
+#[test]
+fn releases_and_repeats_take_nothing() {
+    let view = scenes::held(Kept::No);
+    for kind in [KeyEventKind::Release, KeyEventKind::Repeat] {
+        for code in [KeyCode::Char(' '), KeyCode::PageDown, KeyCode::Char('z')] {
+            assert_eq!(press(&view, &mut face(), KeyEvent { kind, ..key(code, false) }), None);
+        }
+    }
+}
+
+#[test]
+fn voiding_asks_once_and_two_presses_of_a_remote_do_it() {
+    let view = scenes::held(Kept::OnDisk(12));
+    let mut face = face();
+    assert_eq!(tap(&view, &mut face, KeyCode::PageUp), None);
+    assert_eq!(face.overlay, Overlay::Void(12));
+    assert_eq!(tap(&view, &mut face, KeyCode::PageUp), None, "the same press, held");
+    assert_eq!(tap(&later(&view, 1), &mut face, KeyCode::PageUp), command(Command::Void(12)));
+    assert_eq!(face.overlay, Overlay::None);
+}
+
+#[test]
+fn escape_keeps_a_segment_and_so_does_taking() {
+    let view = scenes::held(Kept::OnDisk(12));
+    let mut escaped = with(Overlay::Void(12));
+    assert_eq!((tap(&view, &mut escaped, KeyCode::Esc), &escaped.overlay), (None, &Overlay::None));
+    let mut taken = with(Overlay::Void(12));
+    assert_eq!(tap(&view, &mut taken, KeyCode::PageDown), command(Command::Take));
+    assert_eq!(taken.overlay, Overlay::None);
+}
+
+#[test]
+fn caps_lock_makes_no_other_key_and_alt_gr_types() {
+    let view = scenes::steady();
+    assert_eq!(letter(&view, &mut face(), 'Z'), command(Command::Zero));
+    let mut note = with(prompt(PromptKind::Note, "Q"));
+    assert_eq!(letter(&view, &mut note, 'Z'), None);
+    let alt_gr = KeyEvent::new(KeyCode::Char('@'), KeyModifiers::CONTROL | KeyModifiers::ALT);
+    assert_eq!(press(&view, &mut note, alt_gr), None);
+    assert_eq!(note.overlay, prompt(PromptKind::Note, "QZ@"));
+    let alt = KeyEvent::new(KeyCode::Char('z'), KeyModifiers::ALT);
+    assert_eq!(press(&view, &mut face(), alt), None);
+}
+
+#[test]
+fn nothing_kept_means_nothing_to_void() {
+    let mut face = face();
+    assert_eq!(tap(&scenes::no_speed(), &mut face, KeyCode::PageUp), None);
+    assert_eq!(face.overlay, Overlay::None);
+}
+
+#[test]
+fn leaving_asks_once() {
+    let view = scenes::steady();
+    for (first, second) in [
+        ((KeyCode::Char('q'), false), (KeyCode::Char('q'), false)),
+        ((KeyCode::Char('c'), true), (KeyCode::Char('c'), true)),
+    ] {
+        let mut face = face();
+        assert_eq!(press(&view, &mut face, key(first.0, first.1)), None);
+        assert_eq!(face.overlay, Overlay::Quit);
+        assert_eq!(press(&view, &mut face.clone(), key(second.0, second.1)), Some(Action::Quit));
+        assert_eq!((tap(&view, &mut face, KeyCode::Esc), face.overlay), (None, Overlay::None));
+    }
+}
+
+#[test]
+fn direction_goes_by_track_out_back_other_and_round() {
+    let mut view = scenes::steady();
+    let expected = [
+        DirectionWord::By(Direction::Out),
+        DirectionWord::By(Direction::Back),
+        DirectionWord::By(Direction::Other),
+        DirectionWord::Auto,
+    ];
+    for word in expected {
+        assert_eq!(letter(&view, &mut face(), 'd'), command(Command::Direction(word)));
+        match word {
+            DirectionWord::By(way) => (view.tag.by_hand, view.tag.direction) = (true, way.word()),
+            DirectionWord::Auto => view.tag.by_hand = false,
+        }
+    }
+}
+
+#[test]
+fn the_target_goes_round_and_a_single_one_stays() {
+    let mut view = scenes::steady();
+    assert_eq!(letter(&view, &mut face(), 't'), command(Command::Target(80.0)));
+    view.window.target_kmh = 80.0;
+    assert_eq!(letter(&view, &mut face(), 't'), command(Command::Target(100.0)));
+    view.targets_kmh = vec![80.0];
+    assert_eq!(letter(&view, &mut face(), 't'), None);
+    view.targets_kmh = vec![];
+    assert_eq!(letter(&view, &mut face(), 't'), None);
+}
+
+#[test]
+fn a_configuration_is_chosen_by_letter_number_or_arrows() {
+    let view = scenes::steady();
+    for choose in ['a', 'A', '1'] {
+        let mut face = face();
+        assert_eq!(letter(&view, &mut face, 'c'), None);
+        assert_eq!(letter(&view, &mut face, choose), command(Command::Configuration("A".into())), "{choose}");
+        assert_eq!(face.overlay, Overlay::None);
+    }
+    let mut face = face();
+    letter(&view, &mut face, 'c');
+    tap(&view, &mut face, KeyCode::Down);
+    assert_eq!(tap(&view, &mut face, KeyCode::Enter), command(Command::Configuration("A".into())));
+    letter(&view, &mut face, 'c');
+    assert_eq!(letter(&view, &mut face, '7'), None);
+    assert_eq!(face.overlay, Overlay::Configuration(1), "an unknown letter changes nothing");
+}
+
+#[test]
+fn a_span_begins_and_ends_with_one_key() {
+    assert_eq!(letter(&scenes::steady(), &mut face(), 's'), command(Command::SpanBegin));
+    assert_eq!(letter(&scenes::span(), &mut face(), 's'), command(Command::SpanEnd));
+}
+
+#[test]
+fn a_note_may_hold_every_letter_that_is_a_key_and_a_pasted_line() {
+    let view = scenes::steady();
+    let mut face = face();
+    letter(&view, &mut face, 'n');
+    "q ? z ".chars().for_each(|c| drop(letter(&view, &mut face, c)));
+    paste(&mut face, "pasted\r\n\x1b[31m text");
+    assert_eq!(tap(&view, &mut face, KeyCode::Enter), command(Command::Note("q ? z pasted[31m text".into())));
+    assert_eq!(face.overlay, Overlay::None);
+}
+
+#[test]
+fn a_remote_takes_while_a_note_is_typed() {
+    let mut face = with(prompt(PromptKind::Note, "gu"));
+    assert_eq!(tap(&scenes::steady(), &mut face, KeyCode::PageDown), command(Command::Take));
+    assert_eq!(face.overlay, prompt(PromptKind::Note, "gu"));
+}
+
+#[test]
+fn a_hundred_kilobytes_pasted_are_cut_and_outside_a_prompt_nothing() {
+    let mut face = with(prompt(PromptKind::Note, ""));
+    paste(&mut face, &"ä".repeat(100_000));
+    assert_eq!(face.overlay, prompt(PromptKind::Note, &"ä".repeat(LONGEST_TEXT)));
+    let mut drive = super::face();
+    paste(&mut drive, "q q q");
+    assert_eq!(drive, super::face());
+}
+
+#[test]
+fn what_a_prompt_cannot_read_stays_with_a_complaint() {
+    let view = scenes::steady();
+    let mut face = with(prompt(PromptKind::Air, "18.5 1011"));
+    assert_eq!(tap(&view, &mut face, KeyCode::Enter), None);
+    let Overlay::Prompt(Prompt { complaint: Some(complaint), .. }) = &face.overlay else { panic!("{face:?}") };
+    assert!(complaint.contains("humidity"), "{complaint}");
+    " 60".chars().for_each(|c| drop(letter(&view, &mut face, c)));
+    let air = steadytap::config::Air { temperature_c: 18.5, pressure_hpa: 1011.0, humidity_pct: 60.0 };
+    assert_eq!(tap(&view, &mut face, KeyCode::Enter), command(Command::Air(air)));
+}
+
+#[test]
+fn stream_time_that_stands_still_at_the_end_blocks_no_key() {
+    let view = View { ended: true, now: StreamTime::ZERO, ..scenes::held(Kept::OnDisk(12)) };
+    let mut face = face();
+    tap(&view, &mut face, KeyCode::PageUp);
+    assert_eq!(tap(&view, &mut face, KeyCode::PageUp), command(Command::Void(12)));
+}
