@@ -36,5 +36,6 @@
 pub mod config;
 pub mod screen;
 pub mod session;
+pub mod simulate;
 pub mod stream;
 pub mod units;

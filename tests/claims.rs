@@ -1,1 +1,1 @@
-
+mod simulate_van;
