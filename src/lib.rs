@@ -41,5 +41,6 @@ pub mod screen;
 pub mod session;
 pub mod shell;
 pub mod signal;
+pub mod simulate;
 pub mod stream;
 pub mod units;

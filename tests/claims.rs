@@ -1,3 +1,4 @@
 //! The table of contents of all tests.
 
 mod screens;
+mod simulate_van;

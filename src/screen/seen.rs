@@ -1,0 +1,198 @@
+//! The view of a pipeline: every figure that the Drive screen draws, taken out of the instrument.
+
+use super::{
+    Held, Journal, Kept, Message, PortHealth, PortState, Row, Tag, View, Window, WindowState, text,
+};
+use crate::hold::{State, Stretch};
+use crate::pipeline::Pipeline;
+use crate::pipeline::health::Condition;
+use crate::session::Segment;
+use crate::units::{Quantity, StreamTime};
+use std::collections::BTreeSet;
+
+/// What the instrument's surroundings add to a view.
+pub struct Surroundings<'a> {
+    /// Stream time now.
+    pub now: StreamTime,
+    /// Session file and disk.
+    pub journal: Journal,
+    /// Segments whose line is on a disk.
+    pub on_disk: &'a BTreeSet<u32>,
+    /// What happened last.
+    pub messages: &'a [Message],
+    /// The stream is over.
+    pub ended: bool,
+}
+
+impl View {
+    /// What there is to see of `pipeline`.
+    pub fn of(pipeline: &Pipeline, around: Surroundings<'_>) -> Self {
+        let (setup, logbook, now) = (pipeline.setup(), pipeline.logbook(), around.now);
+        let live = logbook.segments().iter().filter(|s| !s.void);
+        Self {
+            title: text::safe(&setup.outing.title),
+            now,
+            show: setup.outing.show.clone(),
+            window: window(pipeline, now),
+            held: held(pipeline, &around),
+            armed: logbook.armed(),
+            span: logbook.span(),
+            rows: rows(pipeline, now),
+            tag: tag(pipeline, now),
+            ports: ports(pipeline, now),
+            kept: u32::try_from(live.clone().count()).unwrap_or(u32::MAX),
+            last_segment: live.map(|s| s.id).max(),
+            configurations: setup.outing.configurations.iter().map(|c| (c.letter.clone(), c.name.clone())).collect(),
+            zero_age_s: logbook.zero().map(|z| now.since(z.t1) as f64 / 1e6),
+            journal: around.journal,
+            messages: around.messages.to_vec(),
+            ended: around.ended,
+        }
+    }
+}
+
+/// The running stretch; none once the watched channel has been silent for too long.
+fn running(pipeline: &Pipeline, now: StreamTime) -> Option<&Stretch> {
+    pipeline.hold().state().stretch().filter(|_| speed(pipeline, now).is_some())
+}
+
+/// The last watched speed, while it is fresh.
+fn speed(pipeline: &Pipeline, now: StreamTime) -> Option<f64> {
+    let eye = pipeline.eye(pipeline.watched()).filter(|eye| !eye.stale(now))?;
+    eye.latest().map(|value| pipeline.watched_kmh(value))
+}
+
+fn window(pipeline: &Pipeline, now: StreamTime) -> Window {
+    let rule = pipeline.hold().rule();
+    let speed_kmh = speed(pipeline, now);
+    let stretch = running(pipeline, now);
+    let target_kmh = match stretch {
+        Some(s) => rule.targets_kmh[s.target],
+        None => aim(pipeline, speed_kmh),
+    };
+    let (progress, left_us) = stretch.map_or((0.0, 0), |s| {
+        let age = now.since(s.t0);
+        let (done, whole) = match pipeline.hold().state() {
+            State::Settling(_) => (age, rule.settle_us),
+            _ => ((age - rule.settle_us).rem_euclid(rule.dwell_us), rule.dwell_us),
+        };
+        ((done as f64 / whole.max(1) as f64).clamp(0.0, 1.0), (whole - done).max(0))
+    });
+    let state = match (pipeline.hold().state(), speed_kmh) {
+        (_, None) => WindowState::NoSpeed,
+        (State::Off, Some(v)) if v < target_kmh => WindowState::TooSlow,
+        (State::Off, Some(_)) => WindowState::TooFast,
+        (State::Settling(_), _) => WindowState::Settling,
+        (State::Steady(_), _) => WindowState::Steady,
+        (State::Held(_), _) => WindowState::Held,
+    };
+    let airspeed = matches!(pipeline.setup().outing.watch, crate::config::Watch::Airspeed(_));
+    let tolerance_kmh = rule.tolerance_kmh;
+    Window { state, speed_kmh, target_kmh, tolerance_kmh, progress, left_s: left_us as f64 / 1e6, airspeed }
+}
+
+/// The target to drive next: the one chosen by key, else the nearest to the speed, else the first.
+fn aim(pipeline: &Pipeline, speed_kmh: Option<f64>) -> f64 {
+    let targets = &pipeline.hold().rule().targets_kmh;
+    let nearest = |v: f64| targets.iter().copied().min_by(|a, b| (a - v).abs().total_cmp(&(b - v).abs()));
+    let chosen = pipeline.logbook().aim_kmh();
+    chosen.or_else(|| speed_kmh.filter(|v| *v > 20.0).and_then(nearest)).unwrap_or(targets[0])
+}
+
+fn held(pipeline: &Pipeline, around: &Surroundings<'_>) -> Option<Held> {
+    let held = pipeline.logbook().held()?;
+    let kept = match held.kept {
+        None => Kept::No,
+        Some(id) if around.on_disk.contains(&id) => Kept::OnDisk(id),
+        Some(id) if around.journal.trouble.is_some() => Kept::Failed(id),
+        Some(id) => Kept::Writing(id),
+    };
+    let s = &held.segment;
+    Some(Held { target_kmh: s.target_kmh.unwrap_or(0.0), t0: s.t0, t1: s.t1, kept })
+}
+
+/// Channels on taps first, then q, then the others, each in rig order; the watched channel has its large digits.
+fn rows(pipeline: &Pipeline, now: StreamTime) -> Vec<Row> {
+    let (channels, taps) = (&pipeline.setup().rig.channels, pipeline.logbook().taps());
+    let place = |i: &usize| match channels[*i].quantity {
+        _ if taps.contains_key(&channels[*i].name) => 0,
+        Quantity::DynamicPressure => 1,
+        _ => 2,
+    };
+    let mut order: Vec<usize> = (0..channels.len()).filter(|i| *i != pipeline.watched() || place(i) < 2).collect();
+    order.sort_by_key(place);
+    let held = pipeline.logbook().held().map(|h| &h.segment);
+    order.into_iter().map(|i| row(pipeline, i, held, now)).collect()
+}
+
+fn row(pipeline: &Pipeline, i: usize, held: Option<&Segment>, now: StreamTime) -> Row {
+    let channel = &pipeline.setup().rig.channels[i];
+    let eye = pipeline.eye(i);
+    let statistics = held.and_then(|s| s.channels.get(&channel.name));
+    let collecting = || pipeline.hold().collecting().and_then(|d| d.interval.channels[i].finish()).and_then(|s| s.sd);
+    let zero = match channel.quantity {
+        Quantity::Pressure | Quantity::DynamicPressure => pipeline.logbook().zero_of(i),
+        _ => 0.0,
+    };
+    let label = pipeline.logbook().taps().get(&channel.name).unwrap_or(&channel.name);
+    // Something else must live for a value that stands still to be stuck.
+    let alive = || (0..pipeline.setup().rig.channels.len()).any(|k| pipeline.eye(k).is_some_and(|e| !e.stale(now) && !e.still(now)));
+    let pressure = matches!(channel.quantity, Quantity::Pressure | Quantity::DynamicPressure);
+    Row {
+        label: text::safe(label),
+        channel: channel.name.clone(),
+        quantity: channel.quantity,
+        live: eye.and_then(|e| e.live()).map(|x| x - zero),
+        held: statistics.map(|s| s.mean - zero),
+        fluctuation: statistics.map_or_else(collecting, |s| s.sd),
+        trace: eye.map(|e| e.trace(now)).unwrap_or_default(),
+        saturated: eye.is_some_and(|e| e.saturated(now)),
+        stale: eye.is_some_and(|e| e.stale(now)),
+        stuck: pressure && eye.is_some_and(|e| e.still(now)) && alive(),
+    }
+}
+
+fn tag(pipeline: &Pipeline, now: StreamTime) -> Tag {
+    let (logbook, outing) = (pipeline.logbook(), &pipeline.setup().outing);
+    let letter = logbook.configuration();
+    let name = outing.configurations.iter().find(|c| c.letter == letter).map_or("", |c| c.name.as_str());
+    let window = window(pipeline, now);
+    let stretch = running(pipeline, now).filter(|s| s.complete > 0).map(|_| pipeline.hold().stretches());
+    Tag {
+        configuration: text::safe(letter),
+        name: text::safe(name),
+        direction: logbook.direction().word(),
+        by_hand: logbook.by_hand().is_some(),
+        pass: logbook.pass(window.target_kmh, stretch),
+        wanted: outing.passes,
+    }
+}
+
+fn ports(pipeline: &Pipeline, now: StreamTime) -> Vec<PortHealth> {
+    let ports = pipeline.setup().rig.ports.iter().enumerate();
+    ports
+        .map(|(i, port)| {
+            let health = pipeline.health(i);
+            let state = match health.condition(now) {
+                Condition::Waiting => PortState::Waiting,
+                Condition::Good => PortState::Good,
+                Condition::CheckBaud => PortState::CheckBaud,
+                Condition::Silent => PortState::Silent,
+                Condition::Lost => PortState::Lost,
+                Condition::NoFix => PortState::NoFix,
+            };
+            let escaped = |line: &[u8]| {
+                let mut out = Vec::new();
+                crate::stream::record::escape_into(&mut out, line);
+                String::from_utf8_lossy(&out).into_owned()
+            };
+            PortHealth {
+                name: port.name.clone(),
+                state,
+                lines_per_s: health.lines_per_s(now),
+                rejected_share: health.rejected_share(now),
+                last_bad: health.last_bad().map(|(line, why)| (escaped(line), why.to_string())),
+            }
+        })
+        .collect()
+}
