@@ -9,8 +9,10 @@ mod digits;
 mod drive;
 mod figures;
 pub mod keys;
+pub mod messages;
 mod overlays;
 mod rows;
+pub mod seen;
 pub mod text;
 mod theme;
 

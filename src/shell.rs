@@ -5,15 +5,22 @@
 #![expect(clippy::disallowed_methods, reason = "the shell reads the clock for everybody")]
 #![expect(clippy::disallowed_macros, reason = "the shell talks for everybody")]
 
+pub mod check;
 pub mod clock;
 pub mod engine;
+pub mod feed;
 pub mod files;
 pub mod journal;
+pub mod listen;
+pub mod live;
+pub mod outing;
 pub mod player;
 pub mod progress;
 pub mod recorder;
+pub mod reduce;
 pub mod rehold;
 pub mod serial;
+pub mod terminal;
 
 use std::fmt;
 

@@ -65,23 +65,26 @@ pub fn source(path: &Path) -> Result<Source, Trouble> {
     Ok(Source { path: path.display().to_string(), text })
 }
 
-/// Outing, rig and car, read from the outing file and the two files that it names.
+/// Outing, rig and car, read from the outing file and the two files that it names; and what should be looked at.
 ///
 /// # Errors
 /// Every problem of all three files at once.
-pub fn setup(outing: &Path) -> Result<Setup, Vec<Trouble>> {
+pub fn setup_and_warnings(outing: &Path) -> Result<(Setup, Vec<Trouble>), Vec<Trouble>> {
     let source_of_outing = source(outing).map_err(|t| vec![t])?;
-    let head = config::outing_head(&source_of_outing).map_err(troubles)?;
+    let head = config::outing_head(&source_of_outing).map_err(|p| troubles(&p))?;
     let beside = |name: &str| outing.parent().unwrap_or(Path::new("")).join(name);
     let (rig, car) = (source(&beside(&head.rig)), source(&beside(&head.car)));
     match (rig, car) {
-        (Ok(rig), Ok(car)) => config::setup(&source_of_outing, &rig, &car).map_err(troubles),
+        (Ok(rig), Ok(car)) => {
+            let (setup, warnings) = config::setup(&source_of_outing, &rig, &car).map_err(|p| troubles(&p))?;
+            Ok((setup, troubles(&warnings)))
+        }
         (rig, car) => Err([rig.err(), car.err()].into_iter().flatten().collect()),
     }
 }
 
 /// Problems of configuration files as a person is told them.
-pub fn troubles(problems: Vec<config::Problem>) -> Vec<Trouble> {
+pub fn troubles(problems: &[config::Problem]) -> Vec<Trouble> {
     problems.iter().map(trouble).collect()
 }
 

@@ -74,6 +74,11 @@ fn explain(error: &serialport::Error, device: &str) -> Trouble {
 }
 
 impl Reader {
+    /// The open port alone.
+    pub fn into_port(self) -> Box<dyn SerialPort> {
+        self.open
+    }
+
     /// Reads until `send` says stop.
     pub fn run(mut self, clock: StreamClock, mut send: impl FnMut(Arrival) -> bool) {
         let port = self.index;

@@ -1,0 +1,365 @@
+//! Words → a command → an exit status.
+//!
+//! 0 done · 1 the work found a problem in its input · 2 wrong usage · 3 finished but something was degraded. Data goes to standard
+//! output, talk to standard error.
+#![expect(clippy::disallowed_macros, reason = "this room talks to the person at the shell")]
+
+use crate::config::{self, Setup};
+use crate::shell::feed::Feed;
+use crate::shell::outing::{self, Ending, Plan};
+use crate::shell::player::{Pace, Source};
+use crate::shell::{Trouble, check, files, listen, reduce, rehold, serial};
+use crate::simulate;
+use clap::{Args, Parser, Subcommand};
+use std::path::{Path, PathBuf};
+
+/// Shown at first start, in the README and before a drive alone.
+pub const SAFETY: &str = "\
+The driver drives and touches nothing; the passenger works the laptop. Alone: start and stop it only when parked.
+Obey the law and the conditions of the road. Secure laptop, hoses and mast: nothing may come loose, hide the view
+or lie in an airbag's way; keep hoses off hot and moving parts. The figures are test results, not approval of a
+part: strength, road legality and handling are for licensed people and local rules.";
+
+/// Tells, before you drive home, whether a body change moved the air pressures, by how much, and how sure you may be.
+#[derive(Parser, Debug)]
+#[command(name = "steadytap", version, about, after_help = "\
+Examples:
+  steadytap                                  a whole outing on a simulated van, no hardware
+  steadytap listen                           what is plugged in and talking
+  steadytap drive outing.toml                the live screen on the rig's serial ports
+  steadytap reduce outing.session            what the passes say
+Exit status: 0 done, 1 a problem in the input, 2 wrong usage, 3 done but something was degraded.")]
+struct Words {
+    #[command(subcommand)]
+    command: Option<Word>,
+}
+
+#[derive(Subcommand, Debug)]
+enum Word {
+    /// A whole outing on a simulated van: the real screen, engine and files
+    Rehearse(Rehearse),
+    /// The live screen on the rig's serial ports, or on a record
+    Drive(Drive),
+    /// What is plugged in and talking, with a rig stanza to paste
+    Listen {
+        /// Only this device, such as /dev/ttyACM0
+        port: Option<String>,
+    },
+    /// Validates rig, car, outing, session and record files: every problem at once
+    Check {
+        /// Files to check
+        #[arg(required = true)]
+        files: Vec<PathBuf>,
+    },
+    /// The same hold rule over a record again, perhaps with another window
+    Rehold(Rehold),
+    /// Coefficients, differences and verdicts of sessions
+    Reduce(Reduce),
+}
+
+#[derive(Args, Debug, Default)]
+struct Run {
+    /// Session file; an existing one is gone on with [default: a new one in the data directory]
+    #[arg(long, value_name = "FILE")]
+    session: Option<PathBuf>,
+    /// Write no record beside the session
+    #[arg(long)]
+    no_record: bool,
+    /// No screen: keep every full dwell, print one line an event, then the reduction
+    #[arg(long)]
+    unattended: bool,
+    /// Stop after so many seconds of stream time
+    #[arg(long = "for", value_name = "SECONDS", value_parser = positive)]
+    seconds: Option<f64>,
+    /// Times real time, or max
+    #[arg(long, value_name = "N|max")]
+    fast: Option<Pace>,
+}
+
+#[derive(Args, Debug, Default)]
+struct Rehearse {
+    #[command(flatten)]
+    run: Run,
+    /// Another simulated day
+    #[arg(long, default_value_t = 1)]
+    seed: u64,
+}
+
+#[derive(Args, Debug)]
+struct Drive {
+    /// The outing file
+    outing: PathBuf,
+    /// Feed it from this record instead of the ports; - is standard input
+    #[arg(long, value_name = "RECORD")]
+    stream: Option<PathBuf>,
+    #[command(flatten)]
+    run: Run,
+}
+
+#[derive(Args, Debug)]
+struct Rehold {
+    /// The record; - is standard input
+    record: PathBuf,
+    /// The outing file
+    outing: PathBuf,
+    /// Table of every full dwell and channel; - is standard output
+    #[arg(long, value_name = "FILE")]
+    csv: Option<PathBuf>,
+    /// A new session file
+    #[arg(long, value_name = "FILE")]
+    session: Option<PathBuf>,
+    /// Obey the record's own take, span and void: gives the driven session again
+    #[arg(long)]
+    as_driven: bool,
+    /// Other target speeds, km/h
+    #[arg(long, value_name = "KMH", value_parser = positive, value_delimiter = ',')]
+    target: Vec<f64>,
+    /// Another half width of the window, km/h
+    #[arg(long, value_name = "KMH", value_parser = positive)]
+    tolerance: Option<f64>,
+    /// Another settling time, s
+    #[arg(long, value_name = "SECONDS", value_parser = not_negative)]
+    settle: Option<f64>,
+    /// Another length of a dwell, s
+    #[arg(long, value_name = "SECONDS", value_parser = positive)]
+    dwell: Option<f64>,
+}
+
+#[derive(Args, Debug)]
+struct Reduce {
+    /// Session files of one car and baseline
+    #[arg(required = true)]
+    sessions: Vec<PathBuf>,
+    /// Tables in long form; - is standard output
+    #[arg(long, value_name = "FILE")]
+    csv: Option<PathBuf>,
+    /// Everything as JSON; - is standard output
+    #[arg(long, value_name = "FILE")]
+    json: Option<PathBuf>,
+    /// Speed at which pressures and forces are stated, km/h [default: the first target]
+    #[arg(long, value_name = "KMH", value_parser = positive)]
+    at: Option<f64>,
+    /// Compare with this configuration instead
+    #[arg(long, value_name = "LETTER")]
+    baseline: Option<String>,
+}
+
+fn number(text: &str) -> Result<f64, String> {
+    text.parse::<f64>().ok().filter(|v| v.is_finite() && *v < 1e6).ok_or_else(|| format!("`{text}` is no number"))
+}
+
+fn positive(text: &str) -> Result<f64, String> {
+    number(text).and_then(|v| if v > 0.0 { Ok(v) } else { Err("must be above 0".to_string()) })
+}
+
+fn not_negative(text: &str) -> Result<f64, String> {
+    number(text).and_then(|v| if v >= 0.0 { Ok(v) } else { Err("must not be below 0".to_string()) })
+}
+
+/// How the program ends.
+enum Outcome {
+    Done,
+    Degraded(Vec<String>),
+    Problems(Vec<Trouble>),
+}
+
+impl From<Trouble> for Outcome {
+    fn from(trouble: Trouble) -> Self {
+        Self::Problems(vec![trouble])
+    }
+}
+
+/// Runs the program on these words and gives its exit status.
+pub fn run(words: impl IntoIterator<Item = std::ffi::OsString>) -> u8 {
+    let words = match Words::try_parse_from(words) {
+        Ok(words) => words,
+        Err(e) => {
+            let _ = e.print();
+            return u8::try_from(e.exit_code()).unwrap_or(2);
+        }
+    };
+    let outcome = match words.command.unwrap_or_else(|| Word::Rehearse(Rehearse { seed: 1, ..Rehearse::default() })) {
+        Word::Rehearse(words) => rehearse(&words),
+        Word::Drive(words) => drive(&words),
+        Word::Listen { port } => listen(port.as_deref()),
+        Word::Check { files } => check_files(&files),
+        Word::Rehold(words) => rehold_record(words),
+        Word::Reduce(words) => reduce_sessions(words),
+    };
+    match outcome {
+        Outcome::Done => 0,
+        Outcome::Degraded(what) => {
+            what.iter().for_each(|what| eprintln!("degraded: {what}"));
+            3
+        }
+        Outcome::Problems(troubles) => {
+            for (i, trouble) in troubles.iter().enumerate() {
+                eprintln!("{}{trouble}", if i > 0 { "\n" } else { "" });
+            }
+            1
+        }
+    }
+}
+
+fn ended(result: Result<Ending, Trouble>) -> Outcome {
+    match result {
+        Ok(Ending::Done) => Outcome::Done,
+        Ok(Ending::Degraded(what)) => Outcome::Degraded(what),
+        Err(trouble) => trouble.into(),
+    }
+}
+
+impl Run {
+    fn plan(&self, name: &str, rehearsal: bool) -> Plan {
+        Plan {
+            name: name.to_string(),
+            session: self.session.clone(),
+            record: !self.no_record,
+            unattended: self.unattended,
+            seconds: self.seconds,
+            rehearsal,
+        }
+    }
+}
+
+// ---------------------------------------------------------------- the commands
+
+/// Rig, car and outing of the simulated van: the same files that `configs/` holds.
+pub fn van() -> Result<Setup, Vec<config::Problem>> {
+    let source = |path: &str, text: &str| config::Source { path: path.to_string(), text: text.to_string() };
+    config::setup(
+        &source("configs/van-outing.toml", include_str!("../configs/van-outing.toml")),
+        &source("configs/van-rig.toml", include_str!("../configs/van-rig.toml")),
+        &source("configs/van.toml", include_str!("../configs/van.toml")),
+    )
+    .map(|(setup, _)| setup)
+}
+
+fn rehearse(words: &Rehearse) -> Outcome {
+    let setup = match van() {
+        Ok(setup) => setup,
+        Err(problems) => return Outcome::Problems(files::troubles(&problems)),
+    };
+    if !words.run.unattended {
+        eprintln!("{SAFETY}\n");
+    }
+    let pace = words.run.fast.unwrap_or(Pace::Times(1.0));
+    let feed = Feed::Van(simulate::Outing::new(words.seed), pace);
+    ended(outing::run(&setup, feed, &words.run.plan("rehearsal", true)))
+}
+
+fn drive(words: &Drive) -> Outcome {
+    let setup = match files::setup_and_warnings(&words.outing) {
+        Ok((setup, warnings)) => {
+            warnings.iter().for_each(|w| eprintln!("{}", w.to_string().replacen("error:", "warning:", 1)));
+            setup
+        }
+        Err(troubles) => return Outcome::Problems(troubles),
+    };
+    let feed = match &words.stream {
+        Some(record) => match Source::open(record) {
+            Ok(source) => Feed::Record(Box::new(source), words.run.fast.unwrap_or(Pace::Times(1.0))),
+            Err(trouble) => return trouble.into(),
+        },
+        None => match ports(&setup) {
+            Ok(feed) => feed,
+            Err(troubles) => return Outcome::Problems(troubles),
+        },
+    };
+    let name = words.outing.file_stem().map_or("outing".into(), |s| s.to_string_lossy().into_owned());
+    ended(outing::run(&setup, feed, &words.run.plan(&name, false)))
+}
+
+/// Opens every port of the rig; every one that cannot be opened is told.
+fn ports(setup: &Setup) -> Result<Feed, Vec<Trouble>> {
+    let (mut readers, mut troubles) = (Vec::new(), Vec::new());
+    for (index, port) in setup.rig.ports.iter().enumerate() {
+        match serial::open(index, port) {
+            Ok(reader) => readers.push(reader),
+            Err(trouble) => troubles.push(trouble),
+        }
+    }
+    if troubles.is_empty() { Ok(Feed::Ports(readers)) } else { Err(troubles) }
+}
+
+fn listen(device: Option<&str>) -> Outcome {
+    match listen::listen(device) {
+        Ok(text) => {
+            print!("{text}");
+            Outcome::Done
+        }
+        Err(trouble) => trouble.into(),
+    }
+}
+
+fn check_files(paths: &[PathBuf]) -> Outcome {
+    let mut problems = Vec::new();
+    for path in paths {
+        let found = check::check(path);
+        found.warnings.iter().for_each(|w| eprintln!("{}", w.to_string().replacen("error:", "warning:", 1)));
+        if found.errors.is_empty() {
+            println!("{}: good {}", path.display(), found.summary);
+        }
+        problems.extend(found.errors);
+    }
+    if problems.is_empty() { Outcome::Done } else { Outcome::Problems(problems) }
+}
+
+fn rehold_record(words: Rehold) -> Outcome {
+    if words.csv.is_none() && words.session.is_none() {
+        eprintln!("error: nothing to write\n\nhint: say --csv FILE, --csv - or --session FILE");
+        return Outcome::Problems(Vec::new());
+    }
+    let mut setup = match files::setup_and_warnings(&words.outing) {
+        Ok((setup, _)) => setup,
+        Err(troubles) => return Outcome::Problems(troubles),
+    };
+    let outing = &mut setup.outing;
+    if !words.target.is_empty() {
+        outing.targets_kmh = words.target;
+    }
+    outing.tolerance_kmh = words.tolerance.unwrap_or(outing.tolerance_kmh);
+    outing.settle_s = words.settle.unwrap_or(outing.settle_s);
+    outing.dwell_s = words.dwell.unwrap_or(outing.dwell_s);
+    let task = rehold::Task {
+        record: words.record,
+        csv: words.csv,
+        session: words.session,
+        as_driven: words.as_driven,
+    };
+    match rehold::rehold(&setup, &task) {
+        Ok(found) => told(&found, &task.record),
+        Err(trouble) => trouble.into(),
+    }
+}
+
+/// What a re-hold found, on standard error; more than 1 % of lines lost is a degradation.
+fn told(found: &rehold::Found, record: &Path) -> Outcome {
+    let [good, rejected, unknown] = found.lines;
+    let [dwells, not_held] = found.dwells;
+    eprintln!(
+        "{}: {good} lines, {rejected} rejected, {} damaged, {unknown} of other ports; {dwells} full dwells, {not_held} not held",
+        record.display(),
+        found.damaged
+    );
+    let lost = rejected + found.damaged;
+    if lost * 100 > good + lost {
+        return Outcome::Degraded(vec![format!("{lost} of {} lines did not parse", good + lost)]);
+    }
+    Outcome::Done
+}
+
+fn reduce_sessions(words: Reduce) -> Outcome {
+    let task = reduce::Task {
+        sessions: words.sessions,
+        csv: words.csv,
+        json: words.json,
+        at_kmh: words.at,
+        baseline: words.baseline,
+    };
+    match reduce::reduce(&task) {
+        Ok(degraded) if degraded.is_empty() => Outcome::Done,
+        Ok(degraded) => Outcome::Degraded(degraded),
+        Err(trouble) => trouble.into(),
+    }
+}
