@@ -282,6 +282,7 @@ pub(super) fn draw_small(view: &View, face: &Face, canvas: &mut Canvas) {
         Some((word.to_string(), role)),
         Some((format!("{speed} {}", figures.unit()), Role::Strong)),
         Some(fate(view)),
+        view.journal.trouble.as_ref().map(|t| (format!("DISK: {t}"), Role::Trouble)),
         asks.map(|a| (a, Role::Strong)),
         Some((format!("{} kept", view.kept), Role::Base)),
         Some((needs, Role::Quiet)),
