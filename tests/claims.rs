@@ -1,1 +1,3 @@
+//! The one test binary: each module guards a promise that stands at its head.
+
 mod simulate_van;
