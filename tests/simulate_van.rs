@@ -69,6 +69,22 @@ fn the_same_seed_gives_the_same_bytes_and_another_seed_others() {
     assert_ne!(short(3, &[]), short(4, &[]));
 }
 
+/// CRC-32C over time, port and bytes of every line of the short outing. The figure is the program's own, first seen on
+/// x86-64 Linux: another machine or compiler must come to the same. It changes only when the van is changed on purpose.
+#[test]
+fn the_bytes_are_the_same_on_every_machine() {
+    let crc = crc::Crc::<u32>::new(&crc::CRC_32_ISCSI);
+    let mut digest = crc.digest();
+    for moment in short(1, &[]) {
+        digest.update(&moment.at().micros().to_le_bytes());
+        if let Moment::Line { port, bytes, .. } = moment {
+            digest.update(port.as_bytes());
+            digest.update(&bytes);
+        }
+    }
+    assert_eq!(format!("{:08x}", digest.finalize()), "d6dbcbea");
+}
+
 #[test]
 fn time_never_goes_back() {
     for moments in [FULL.clone(), short(9, &[])] {
@@ -96,7 +112,8 @@ fn gauge_lines_are_finite_decimals_but_for_the_few_that_the_wire_spoiled() {
     let torn = spoiled.iter().filter(|(_, b)| !b.ends_with(b"\n")).count();
     assert_eq!((banners, torn), (2, 1), "one banner at each start, one torn line");
     assert!((4..15).contains(&(spoiled.len() - 3)), "{} disturbed", spoiled.len() - 3);
-    assert!(FULL.iter().all(|m| !matches!(m, Moment::Line { bytes, .. } if bytes.windows(3).any(|w| w.eq_ignore_ascii_case(b"nan") || w.eq_ignore_ascii_case(b"inf")))));
+    let wordy = |b: &[u8]| [b"nan", b"inf"].iter().any(|w| b.windows(3).any(|part| part.eq_ignore_ascii_case(*w)));
+    assert!(!lines(&FULL, GAUGE).chain(lines(&FULL, GPS)).any(|(_, bytes)| wordy(bytes)));
 }
 
 #[test]

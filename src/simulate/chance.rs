@@ -80,6 +80,12 @@ impl Lag {
         Self { gain: STEP_S / (lag_s + STEP_S), value: 0.0 }
     }
 
+    /// What it gives now.
+    #[cfg(test)]
+    pub(super) fn value(&self) -> f64 {
+        self.value
+    }
+
     /// Takes the input of one step, gives the output.
     pub(super) fn step(&mut self, input: f64) -> f64 {
         self.value += self.gain * (input - self.value);

@@ -15,8 +15,9 @@ pub const GAUGE: &str = "gauge";
 pub const GPS: &str = "gps";
 
 const STEP_US: i64 = 1_000_000 / RATE_HZ as i64;
-/// A line is whole so long after its sample: the wire, then what the USB adapter adds (up to), µs.
-const GAUGE_WIRE_US: i64 = 5_000;
+/// A line is whole so long after its sample (the van's lag counts the mean, 7 ms, in): the wire, then what the USB
+/// adapter adds (up to), µs.
+const GAUGE_WIRE_US: i64 = 6_000;
 const GAUGE_JITTER_US: u64 = 2_000;
 const GPS_WIRE_US: i64 = 60_000;
 const GPS_JITTER_US: u64 = 8_000;
@@ -65,11 +66,11 @@ impl Gauge {
                 out.push(Moment::Event { at: at.plus(1_000), port: GAUGE, word: "lost" });
                 return;
             }
-            (None, false) => self.start(tick, at, out),
-            (Some(started), false) => {
+            (None, false) => self.start(tick, at.plus(-1_000), out),
+            (Some(_), false) => {
                 let reset = active(faults, now, FaultKind::Reset);
-                if reset && started + 1 < tick && !active(faults, moment_of(tick - 1), FaultKind::Reset) {
-                    self.start(tick, at, out);
+                if reset && !active(faults, moment_of(tick - 1), FaultKind::Reset) {
+                    self.start(tick, at.plus(-1_000), out);
                 }
             }
         }
@@ -77,16 +78,16 @@ impl Gauge {
             return;
         }
         let bytes = self.line(tick, reading, faults);
-        out.push(Moment::Line { at: at.plus(1_000), port: GAUGE, bytes });
+        out.push(Moment::Line { at, port: GAUGE, bytes });
     }
 
-    /// Power comes: the port is found again (unless this is the beginning), the controller greets, its clock is at zero.
+    /// Power comes: the port is found again (unless this is the beginning), the controller greets, its clock is zero.
     fn start(&mut self, tick: u64, at: StreamTime, out: &mut Vec<Moment>) {
         if self.lines > 0 && self.started.is_none() {
             out.push(Moment::Event { at, port: GAUGE, word: "found" });
         }
         self.started = Some(tick);
-        out.push(Moment::Line { at: at.plus(500), port: GAUGE, bytes: BANNER.to_vec() });
+        out.push(Moment::Line { at, port: GAUGE, bytes: BANNER.to_vec() });
     }
 
     fn line(&mut self, tick: u64, mut reading: Reading, faults: &[Fault]) -> Vec<u8> {

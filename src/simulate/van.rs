@@ -8,8 +8,10 @@ use super::road::{Motion, sine_of_degrees};
 
 /// True over indicated airspeed at the probe.
 pub const PROBE_FACTOR: f64 = 1.03;
-/// Delay of every pressure channel, hose and sensor, s.
+/// Delay of every pressure channel, hose, sensor and wire together, s.
 pub const LAG_S: f64 = 0.05;
+/// The wire's share of it: mean time from a sample to the end of its line, s.
+const WIRE_S: f64 = 0.007;
 /// Tap channels read from −500 to +500 Pa, the dynamic pressure from −100 to +1000 Pa.
 pub(super) const TAP_RANGE_PA: [f64; 2] = [-500.0, 500.0];
 const Q_RANGE_PA: [f64; 2] = [-100.0, 1000.0];
@@ -95,7 +97,7 @@ impl Sensor {
         let size_pa = 1.0 + 0.02 * chance.below(100) as f64;
         let warming_pa = if chance.below(2) == 0 { size_pa } else { -size_pa };
         let walk = Wander::new(Chance::new(seed, 200 + number), 0.3, 400.0);
-        Self { hose: Lag::new(LAG_S), noise: chance, cold_pa, warming_pa, walk, range_pa }
+        Self { hose: Lag::new(LAG_S - WIRE_S), noise: chance, cold_pa, warming_pa, walk, range_pa }
     }
 
     fn read(&mut self, true_pa: f64, warmth: f64) -> f64 {
@@ -249,6 +251,21 @@ fn density_kg_m3(air: &Reading) -> f64 {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// A first-order lag after a fall from q to nothing leaves an area of q times its time.
+    /// The zero's scatter, 0.02 Pa over a second, and the noise, 0.06 Pa s, leave 0.0002 s at 400 Pa.
+    #[test]
+    fn the_hoses_lag_by_what_the_rig_takes_off() {
+        let mut body = Body::new(3);
+        let moving = |speed_m_s| Motion { speed_m_s, track_deg: 90.0, east_m: 0.0, fitted: "A", incident: None };
+        let rest: Vec<f64> = (0..500).map(|_| body.step(&moving(0.0)).q_pa).collect();
+        let zero = rest[100..].iter().sum::<f64>() / 400.0;
+        let at_the_end = (0..200).map(|_| body.step(&moving(27.8))).last();
+        assert!(at_the_end.is_some_and(|r| r.q_pa > 300.0));
+        let at_speed = body.q.hose.value();
+        let area: f64 = (0..50).map(|_| body.step(&moving(0.0)).q_pa - zero).sum::<f64>() * STEP_S;
+        assert!((area / at_speed + WIRE_S - LAG_S).abs() < 0.001, "{area} Pa s after {at_speed} Pa");
+    }
 
     /// CIPM-2007 (Picard et al. 2008, Metrologia 45:149): 20 °C, 1013.25 hPa, 50 % gives 1.19931 kg/m³, and 27 °C,
     /// 1000 hPa, 80 % gives 1.14852 kg/m³.
