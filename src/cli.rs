@@ -22,13 +22,18 @@ part: strength, road legality and handling are for licensed people and local rul
 
 /// Tells, before you drive home, whether a body change moved the air pressures, by how much, and how sure you may be.
 #[derive(Parser, Debug)]
-#[command(name = "steadytap", version, about, after_help = "\
+#[command(
+    name = "steadytap",
+    version,
+    about,
+    after_help = "\
 Examples:
   steadytap                                  a whole outing on a simulated van, no hardware
   steadytap listen                           what is plugged in and talking
   steadytap drive outing.toml                the live screen on the rig's serial ports
   steadytap reduce outing.session            what the passes say
-Exit status: 0 done, 1 a problem in the input, 2 wrong usage, 3 done but something was degraded.")]
+Exit status: 0 done, 1 a problem in the input, 2 wrong usage, 3 done but something was degraded."
+)]
 struct Words {
     #[command(subcommand)]
     command: Option<Word>,
@@ -321,12 +326,8 @@ fn rehold_record(words: Rehold) -> Outcome {
     outing.tolerance_kmh = words.tolerance.unwrap_or(outing.tolerance_kmh);
     outing.settle_s = words.settle.unwrap_or(outing.settle_s);
     outing.dwell_s = words.dwell.unwrap_or(outing.dwell_s);
-    let task = rehold::Task {
-        record: words.record,
-        csv: words.csv,
-        session: words.session,
-        as_driven: words.as_driven,
-    };
+    let task =
+        rehold::Task { record: words.record, csv: words.csv, session: words.session, as_driven: words.as_driven };
     match rehold::rehold(&setup, &task) {
         Ok(found) => told(&found, &task.record),
         Err(trouble) => trouble.into(),

@@ -4,6 +4,17 @@
 //! here are the *checked* ones; they are also what a session's first line carries, so that a session
 //! reduces by itself years later. Reading never guesses: an unknown key is an error that names the nearest known one.
 
+mod car;
+mod outing;
+mod problem;
+mod reader;
+mod rig;
+
+pub use car::check as check_car;
+pub use outing::{Head, kind, outing_head, setup};
+pub use problem::{Kind, Place, Problem, Severity, Source};
+pub use rig::check as check_rig;
+
 use crate::units::{Quantity, Unit, micros};
 use serde::{Deserialize, Serialize};
 use std::collections::BTreeMap;

@@ -38,6 +38,7 @@ pub mod config;
 pub mod hold;
 pub mod pipeline;
 pub mod reduction;
+pub mod report;
 pub mod screen;
 pub mod session;
 pub mod shell;

@@ -92,9 +92,8 @@ impl Wiring {
     pub fn new(rig: &Rig, index: usize, slot: impl Fn(&str) -> Option<usize>) -> Self {
         let name = &rig.ports[index].name;
         let links = rig.channels.iter().enumerate().filter(|(_, c)| &c.port == name);
-        let links = links.filter_map(|(channel, c)| {
-            slot(&c.field).map(|slot| Link { slot, channel, scaler: Scaler::new(c) })
-        });
+        let links =
+            links.filter_map(|(channel, c)| slot(&c.field).map(|slot| Link { slot, channel, scaler: Scaler::new(c) }));
         Self { links: links.collect() }
     }
 

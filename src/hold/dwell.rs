@@ -31,7 +31,8 @@ impl Interval {
     pub fn new(start: StreamTime, end: StreamTime, angles: &[bool]) -> Self {
         let length = end.since(start).max(1);
         let bin_us = ((length + BINS - 1) / BINS).clamp(1, LONGEST_BIN_US);
-        let bins = if end == StreamTime::NEVER { 0 } else { usize::try_from((length + bin_us - 1) / bin_us).unwrap_or(0) };
+        let bins =
+            if end == StreamTime::NEVER { 0 } else { usize::try_from((length + bin_us - 1) / bin_us).unwrap_or(0) };
         let channels = angles.iter().map(|angle| Accumulator::new(*angle, bins)).collect();
         Self { start, end, bin_us, channels }
     }

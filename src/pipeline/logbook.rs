@@ -8,8 +8,8 @@ use crate::config::{Air, Configuration, Setup};
 use crate::hold::Rule;
 use crate::hold::dwell::{Dwell, Interval};
 use crate::session::{
-    AirChange, AirSource, Change, ChannelStatistics, Direction, End, Entry, Rejected, Remark, Segment, SegmentAir, Session,
-    TapsChange, Void, Zero,
+    AirChange, AirSource, Change, ChannelStatistics, Direction, End, Entry, Rejected, Remark, Segment, SegmentAir,
+    Session, TapsChange, Void, Zero,
 };
 use crate::signal::Sample;
 use crate::stream::command::{Command, DirectionWord};
@@ -438,7 +438,8 @@ impl Logbook {
         };
         // A value that stands still is stuck only beside living ones.
         if pressures().any(|(_, a)| a.n() > 1 && !a.still()) {
-            flags.extend(pressures().filter(|(_, a)| a.n() >= 5 && a.still()).map(|(c, _)| format!("stuck:{}", c.name)));
+            flags
+                .extend(pressures().filter(|(_, a)| a.n() >= 5 && a.still()).map(|(c, _)| format!("stuck:{}", c.name)));
         }
         for (i, (c, a)) in self.channels.iter().zip(&interval.channels).enumerate() {
             if !self.essential(i) && a.saturated() {
@@ -451,9 +452,7 @@ impl Logbook {
     /// Whether a dwell is worth nothing without this channel: the watched one, q, and all that sit on taps.
     fn essential(&self, channel: usize) -> bool {
         let facts = &self.channels[channel];
-        channel == self.watched
-            || facts.quantity == Quantity::DynamicPressure
-            || self.taps.contains_key(&facts.name)
+        channel == self.watched || facts.quantity == Quantity::DynamicPressure || self.taps.contains_key(&facts.name)
     }
 
     /// Why a full dwell cannot be held.
@@ -528,7 +527,12 @@ impl Logbook {
         self.write(at, Entry::Mark(Remark { t: at, text }), out);
     }
 
-    fn move_taps(&mut self, at: StreamTime, map: BTreeMap<String, String>, out: &mut Vec<Event>) -> Result<(), Refusal> {
+    fn move_taps(
+        &mut self,
+        at: StreamTime,
+        map: BTreeMap<String, String>,
+        out: &mut Vec<Event>,
+    ) -> Result<(), Refusal> {
         let mut taps = self.taps.clone();
         for (channel, tap) in map {
             if !self.channels.iter().any(|c| c.name == channel && c.quantity == Quantity::Pressure) {
@@ -542,7 +546,10 @@ impl Logbook {
         let mut seen: Vec<&String> = taps.values().collect();
         seen.sort();
         if let Some(twice) = seen.windows(2).find(|w| w[0] == w[1]) {
-            return Err(Refusal::Taps(format!("tap `{}` would be on two channels; name both in one command", twice[0])));
+            return Err(Refusal::Taps(format!(
+                "tap `{}` would be on two channels; name both in one command",
+                twice[0]
+            )));
         }
         self.taps = taps.clone();
         self.write(at, Entry::Taps(TapsChange { t: at, taps }), out);

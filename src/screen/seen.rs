@@ -1,8 +1,6 @@
 //! The view of a pipeline: every figure that the Drive screen draws, taken out of the instrument.
 
-use super::{
-    Held, Journal, Kept, Message, PortHealth, PortState, Row, Tag, View, Window, WindowState, text,
-};
+use super::{Held, Journal, Kept, Message, PortHealth, PortState, Row, Tag, View, Window, WindowState, text};
 use crate::hold::{State, Stretch};
 use crate::pipeline::Pipeline;
 use crate::pipeline::health::Condition;
@@ -34,6 +32,7 @@ impl View {
             now,
             show: setup.outing.show.clone(),
             window: window(pipeline, now),
+            targets_kmh: pipeline.hold().rule().targets_kmh.clone(),
             held: held(pipeline, &around),
             armed: logbook.armed(),
             span: logbook.span(),
@@ -136,7 +135,10 @@ fn row(pipeline: &Pipeline, i: usize, held: Option<&Segment>, now: StreamTime) -
     };
     let label = pipeline.logbook().taps().get(&channel.name).unwrap_or(&channel.name);
     // Something else must live for a value that stands still to be stuck.
-    let alive = || (0..pipeline.setup().rig.channels.len()).any(|k| pipeline.eye(k).is_some_and(|e| !e.stale(now) && !e.still(now)));
+    let alive = || {
+        (0..pipeline.setup().rig.channels.len())
+            .any(|k| pipeline.eye(k).is_some_and(|e| !e.stale(now) && !e.still(now)))
+    };
     let pressure = matches!(channel.quantity, Quantity::Pressure | Quantity::DynamicPressure);
     Row {
         label: text::safe(label),

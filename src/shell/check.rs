@@ -70,9 +70,7 @@ fn outing(path: &Path) -> Found {
 }
 
 fn sorted(word: &str, problems: &[config::Problem]) -> Found {
-    let of = |severity| {
-        problems.iter().filter(|p| p.severity == severity).map(files::trouble).collect::<Vec<_>>()
-    };
+    let of = |severity| problems.iter().filter(|p| p.severity == severity).map(files::trouble).collect::<Vec<_>>();
     Found { summary: word.to_string(), errors: of(Severity::Error), warnings: of(Severity::Warning) }
 }
 

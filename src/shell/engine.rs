@@ -198,7 +198,8 @@ impl Engine {
         let entries: Vec<&Entry> = events.iter().filter_map(Event::entry).collect();
         let on_disk = entries.is_empty() || self.journal.append(&entries);
         if on_disk {
-            self.on_disk.extend(entries.iter().filter_map(|e| if let Entry::Segment(s) = e { Some(s.id) } else { None }));
+            self.on_disk
+                .extend(entries.iter().filter_map(|e| if let Entry::Segment(s) = e { Some(s.id) } else { None }));
         }
         out.extend(events.into_iter().map(|event| Outcome { on_disk: on_disk || event.entry().is_none(), event }));
     }

@@ -144,9 +144,9 @@ pub fn write(path: &Path, bytes: &[u8]) -> Result<(), Trouble> {
 pub fn write_new(path: &Path, bytes: &[u8]) -> Result<(), Trouble> {
     let made = OpenOptions::new().write(true).create_new(true).open(path);
     let mut file = made.map_err(|e| match e.kind() {
-        io::ErrorKind::AlreadyExists => {
-            Trouble::new("the file exists already").at(path.display()).hint("give another name; nothing was overwritten")
-        }
+        io::ErrorKind::AlreadyExists => Trouble::new("the file exists already")
+            .at(path.display())
+            .hint("give another name; nothing was overwritten"),
         _ => Trouble::new(format!("the file cannot be written: {e}")).at(path.display()).hint("give another place"),
     })?;
     file.write_all(bytes).and_then(|()| file.sync_all()).map_err(|e| {

@@ -42,7 +42,9 @@ impl Journal {
     pub fn open(path: &Path, header: &Header) -> Result<Opened, Trouble> {
         let place = path.display();
         if std::fs::symlink_metadata(path).is_ok_and(|m| !m.is_file()) {
-            return Err(Trouble::new("the session is no plain file").at(place).hint("give another name with --session"));
+            return Err(Trouble::new("the session is no plain file")
+                .at(place)
+                .hint("give another name with --session"));
         }
         let new = !path.exists();
         let file = OpenOptions::new().read(true).append(true).create(true).open(path);
@@ -169,7 +171,8 @@ fn lock(file: &File, path: &Path) -> Result<(), Trouble> {
 
 /// Moves a torn tail to `*.torn`, so that the next line starts clean.
 fn repair(path: &Path, file: &File, bytes: &mut Vec<u8>, contents: &Contents) -> Result<Option<PathBuf>, Trouble> {
-    let failed = |e: io::Error| Trouble::new(format!("the session's torn end cannot be repaired: {e}")).at(path.display());
+    let failed =
+        |e: io::Error| Trouble::new(format!("the session's torn end cannot be repaired: {e}")).at(path.display());
     if contents.end_missing {
         bytes.push(b'\n');
         (&*file).write_all(b"\n").and_then(|()| file.sync_data()).map_err(failed)?;
@@ -192,10 +195,16 @@ fn repair(path: &Path, file: &File, bytes: &mut Vec<u8>, contents: &Contents) ->
 /// The session to go on with, if it rests on the same setup.
 fn resumable(path: &Path, contents: Contents, header: &Header) -> Result<Session, Trouble> {
     let hint = "give another name with --session to begin a new one";
-    let no_header = || Trouble::new("this is no session file, or its first line is damaged").at(format!("{}:1", path.display())).hint(hint);
+    let no_header = || {
+        Trouble::new("this is no session file, or its first line is damaged")
+            .at(format!("{}:1", path.display()))
+            .hint(hint)
+    };
     let session = contents.session().ok_or_else(no_header)?;
     if session.header.setup != header.setup {
-        return Err(Trouble::new("this session was begun with another rig, car or outing").at(path.display()).hint(hint));
+        return Err(Trouble::new("this session was begun with another rig, car or outing")
+            .at(path.display())
+            .hint(hint));
     }
     Ok(session)
 }

@@ -185,7 +185,13 @@ fn describe(out: &mut String, device: &str, listed: Option<&SerialPortInfo>, hea
         let _ = writeln!(out, "# silent at every speed tried: is it powered, and does it send by itself?\n");
         return;
     };
-    let _ = writeln!(out, "# {:.1} lines/s at {baud} baud, {:.0} % parse; the last: {}", heard.rate, heard.share * 100.0, heard.sample);
+    let _ = writeln!(
+        out,
+        "# {:.1} lines/s at {baud} baud, {:.0} % parse; the last: {}",
+        heard.rate,
+        heard.share * 100.0,
+        heard.sample
+    );
     let Some(format) = heard.format else {
         let _ = writeln!(out, "# no known line format: columns, pairs, json and nmea were tried; check baud\n");
         return;
@@ -202,7 +208,11 @@ fn stanza(out: &mut String, (device, baud): (&str, u32), usb: Option<Usb>, (form
     match usb {
         Some((vid, pid, serial)) => {
             let serial = serial.map(|s| format!(":{s}")).unwrap_or_default();
-            let _ = writeln!(out, "usb = {}          # found again under a changed device name", quote(&format!("{vid:04x}:{pid:04x}{serial}")));
+            let _ = writeln!(
+                out,
+                "usb = {}          # found again under a changed device name",
+                quote(&format!("{vid:04x}:{pid:04x}{serial}"))
+            );
         }
         None => {
             let _ = writeln!(out, "device = {}", quote(device));
@@ -219,11 +229,17 @@ fn stanza(out: &mut String, (device, baud): (&str, u32), usb: Option<Usb>, (form
         let names: Vec<String> = fields.iter().map(|f| quote(f)).collect();
         let _ = writeln!(out, "columns = [{}]          # give them your names", names.join(", "));
     } else if !fields.is_empty() {
-        let _ = writeln!(out, "# fields seen: {}", fields.iter().map(|f| crate::screen::text::safe(f)).collect::<Vec<_>>().join(", "));
+        let _ = writeln!(
+            out,
+            "# fields seen: {}",
+            fields.iter().map(|f| crate::screen::text::safe(f)).collect::<Vec<_>>().join(", ")
+        );
     }
     if format == LineFormat::Nmea {
-        let _ = writeln!(out, "[[channel]]\nname = \"speed\"\nfrom = \"gps.speed\"\nquantity = \"speed\"\nunit = \"km/h\"");
-        let _ = writeln!(out, "[[channel]]\nname = \"track\"\nfrom = \"gps.track\"\nquantity = \"track\"\nunit = \"deg\"");
+        let _ =
+            writeln!(out, "[[channel]]\nname = \"speed\"\nfrom = \"gps.speed\"\nquantity = \"speed\"\nunit = \"km/h\"");
+        let _ =
+            writeln!(out, "[[channel]]\nname = \"track\"\nfrom = \"gps.track\"\nquantity = \"track\"\nunit = \"deg\"");
     }
     out.push('\n');
 }

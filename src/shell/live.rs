@@ -9,7 +9,7 @@ use super::outing::Plan;
 use super::{Trouble, terminal};
 use crate::screen::keys::{self, Action};
 use crate::screen::seen::Surroundings;
-use crate::screen::{Face, Journal, Message, View, Weight, messages};
+use crate::screen::{Journal, Message, View, Weight, messages};
 use crate::units::StreamTime;
 use crossterm::event::{Event as TerminalEvent, EventStream};
 use futures_util::StreamExt;
@@ -35,7 +35,7 @@ const PATIENCE: Duration = Duration::from_secs(1);
 pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trouble> {
     terminal::require()?;
     super::outing::stop_on_signals(running.sender.clone());
-    let mut desk = Desk::new(engine, running.clock, plan);
+    let desk = Desk::new(engine, running.clock, plan);
     let (publish, views) = watch::channel(desk.view());
     let keys_to = running.sender.clone();
     let (done, is_done) = channel();
@@ -54,7 +54,8 @@ pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trou
     };
     terminal::restore();
     let engine = engine.map_err(|_| {
-        Trouble::new("the engine broke; what it said to have kept is on the disk").hint("start again with the same --session")
+        Trouble::new("the engine broke; what it said to have kept is on the disk")
+            .hint("start again with the same --session")
     })?;
     drawn.map(|()| engine)
 }

@@ -90,8 +90,9 @@ fn session_path(plan: &Plan) -> Result<PathBuf, Trouble> {
     if let Some(path) = &plan.session {
         return Ok(path.clone());
     }
-    let directory = files::data_directory()
-        .ok_or_else(|| Trouble::new("there is no home directory for the session").hint("say where with --session FILE"))?;
+    let directory = files::data_directory().ok_or_else(|| {
+        Trouble::new("there is no home directory for the session").hint("say where with --session FILE")
+    })?;
     std::fs::create_dir_all(&directory).map_err(|e| {
         Trouble::new(format!("the data directory cannot be made: {e}"))
             .at(directory.display())

@@ -154,19 +154,13 @@ impl Run<'_> {
 
 /// The first line of a session of this program.
 pub fn header(setup: &Setup, started: Option<String>) -> Header {
-    Header {
-        schema: SCHEMA.to_string(),
-        version: env!("CARGO_PKG_VERSION").to_string(),
-        started,
-        setup: setup.clone(),
-    }
+    Header { schema: SCHEMA.to_string(), version: env!("CARGO_PKG_VERSION").to_string(), started, setup: setup.clone() }
 }
 
 fn table() -> csv::Writer<Vec<u8>> {
     let mut table = csv::Writer::from_writer(Vec::new());
-    let head = [
-        "stretch", "target_kmh", "dwell", "t_start", "t_end", "channel", "n", "mean", "sd", "min", "max", "flags",
-    ];
+    let head =
+        ["stretch", "target_kmh", "dwell", "t_start", "t_end", "channel", "n", "mean", "sd", "min", "max", "flags"];
     table.write_record(head).expect("writing to memory cannot fail");
     table
 }

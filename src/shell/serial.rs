@@ -60,11 +60,11 @@ pub fn open(index: usize, port: &Port) -> Result<Reader, Trouble> {
 fn explain(error: &serialport::Error, device: &str) -> Trouble {
     let exists = std::fs::metadata(device).is_ok();
     match error.kind() {
-        ErrorKind::Io(io::ErrorKind::PermissionDenied) => Trouble::new("no right to open the port")
-            .hint("add yourself to the group that owns it (usually `sudo usermod -aG dialout $USER`), then log in again"),
-        _ if !exists => {
-            Trouble::new("there is no such port").hint("plug it in, or correct the rig; `steadytap listen` shows what is there")
-        }
+        ErrorKind::Io(io::ErrorKind::PermissionDenied) => Trouble::new("no right to open the port").hint(
+            "add yourself to the group that owns it (usually `sudo usermod -aG dialout $USER`), then log in again",
+        ),
+        _ if !exists => Trouble::new("there is no such port")
+            .hint("plug it in, or correct the rig; `steadytap listen` shows what is there"),
         ErrorKind::NoDevice => {
             Trouble::new(format!("the port is busy: {error}")).hint("close the other program that has it open")
         }
