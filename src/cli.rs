@@ -262,7 +262,7 @@ fn drive(words: &Drive) -> Outcome {
         Err(troubles) => return Outcome::Problems(troubles),
     };
     let feed = match &words.stream {
-        Some(record) => match Source::open(record) {
+        Some(record) => match Source::open(record, Some(&setup.rig)) {
             Ok(source) => Feed::Record(Box::new(source), words.run.fast.unwrap_or(Pace::Times(1.0))),
             Err(trouble) => return trouble.into(),
         },

@@ -99,9 +99,9 @@ fn session(path: &Path) -> Found {
 fn record(path: &Path) -> Found {
     let mut commands = 0u64;
     let mut errors = Vec::new();
-    let read = Source::open(path).and_then(|mut source| {
-        while source.next(&mut |line| {
-            if let crate::stream::record::Line::Command { at, words } = line {
+    let read = Source::open(path, None).and_then(|mut source| {
+        while source.next(&mut |told| {
+            if let crate::stream::record::Told::Command { at, words } = told {
                 commands += 1;
                 if let Err(e) = crate::stream::command::Command::parse(&words) {
                     errors.push(Trouble::new(e.to_string()).at(format!("{}, at {at}", path.display())));

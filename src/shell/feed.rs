@@ -3,7 +3,8 @@
 use super::Trouble;
 use super::clock::StreamClock;
 use super::engine::Arrival;
-use super::player::{Pace, Played, Source};
+use super::player::{Pace, Source};
+use crate::stream::record::Tally;
 use super::serial;
 use crate::config::Rig;
 use crate::simulate::{self, Moment};
@@ -52,7 +53,7 @@ pub struct Running {
     /// The world's clock, for sources that have no time of their own.
     pub clock: Option<StreamClock>,
     /// What the record held beside good lines, once it was played.
-    pub played: Option<JoinHandle<Result<(Played, u64), Trouble>>>,
+    pub played: Option<JoinHandle<Result<Tally, Trouble>>>,
 }
 
 impl Feed {
@@ -60,7 +61,7 @@ impl Feed {
     pub fn start(self, rig: &Rig) -> Running {
         match self {
             Self::Ports(readers) => ports(readers),
-            Self::Record(source, pace) => record(source, pace, rig.clone()),
+            Self::Record(source, pace) => record(source, pace),
             Self::Van(outing, pace) => van(outing, pace, rig.clone()),
         }
     }
@@ -76,13 +77,13 @@ fn ports(readers: Vec<serial::Reader>) -> Running {
     Running { arrivals, sender: Sender::Free(sender), clock: Some(clock), played: None }
 }
 
-fn record(mut source: Box<Source>, pace: Pace, rig: Rig) -> Running {
+fn record(mut source: Box<Source>, pace: Pace) -> Running {
     let (sender, arrivals) = mpsc::sync_channel(AHEAD);
     let to = sender.clone();
     let played = std::thread::spawn(move || {
-        let played = source.play(&rig, pace, &mut |arrival| to.send(arrival).is_ok());
+        let played = source.play(pace, &mut |arrival| to.send(arrival).is_ok());
         let _ = to.send(Arrival::End);
-        played.map(|p| (p, source.tally().damaged))
+        played.map(|()| source.tally().clone())
     });
     Running { arrivals, sender: Sender::Bounded(sender), clock: None, played: Some(played) }
 }

@@ -11,6 +11,7 @@ use crate::session::{Entry, Session};
 use crate::units::StreamTime;
 use std::io::Write;
 use std::path::{Path, PathBuf};
+use std::thread::JoinHandle;
 use std::time::Duration;
 
 /// How a run was asked for.
@@ -71,20 +72,20 @@ pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
     let played = running.played.take();
     let engine = if plan.unattended { unattended(engine, running, plan) } else { live::run(engine, running, plan)? };
     if let Some(Ok(played)) = played.filter(JoinHandle::is_finished).map(JoinHandle::join) {
-        let (played, damaged) = played?;
-        if damaged > 0 {
-            degraded.push(format!("{damaged} damaged lines of the record were passed over"));
+        let tally = played?;
+        if tally.damaged * 100 > tally.lines {
+            degraded.push(format!("{} of {} lines of the record were damaged", tally.damaged, tally.lines));
+        } else if tally.damaged > 0 {
+            eprintln!("{} damaged lines of the record were passed over", tally.damaged);
         }
-        if played.unknown_port > 0 {
-            eprintln!("{} lines of ports that the rig does not name were passed over", played.unknown_port);
+        if tally.unknown_port > 0 {
+            eprintln!("{} lines of ports that the rig does not name were passed over", tally.unknown_port);
         }
     }
     degraded.extend(degradation(&engine, plan));
     conclude(&engine);
     Ok(if degraded.is_empty() { Ending::Done } else { Ending::Degraded(degraded) })
 }
-
-use std::thread::JoinHandle;
 
 fn session_path(plan: &Plan) -> Result<PathBuf, Trouble> {
     if let Some(path) = &plan.session {

@@ -5,7 +5,7 @@ use super::clock::StreamClock;
 use super::engine::Arrival;
 use crate::config::Rig;
 use crate::stream::command::Command;
-use crate::stream::record::{self, Line, Reader, Tally};
+use crate::stream::record::{self, Line, Reader, Tally, Told};
 use crate::units::StreamTime;
 use std::fs::File;
 use std::io::{self, Read};
@@ -60,11 +60,11 @@ pub struct Source {
 }
 
 impl Source {
-    /// Opens a record; `-` is standard input.
+    /// Opens a record; `-` is standard input. Without a rig every port's lines are good.
     ///
     /// # Errors
     /// [`Trouble`] when there is none to read.
-    pub fn open(path: &Path) -> Result<Self, Trouble> {
+    pub fn open(path: &Path, rig: Option<&Rig>) -> Result<Self, Trouble> {
         let name = path.display().to_string();
         let (input, size): (Box<dyn Read + Send>, _) = if name == "-" {
             (Box::new(io::stdin()), None)
@@ -77,7 +77,7 @@ impl Source {
             }
             (Box::new(file), metadata.is_file().then_some(metadata.len()))
         };
-        let reader = Reader::default();
+        let reader = Reader::new(rig.map(|r| r.ports.as_slice()));
         let mut source = Self { name, input, block: vec![0; BLOCK], reader, bytes: 0, ahead: 0, size };
         source.ahead = source.read()?;
         Ok(source)
@@ -106,7 +106,7 @@ impl Source {
     ///
     /// # Errors
     /// [`Trouble`] when reading fails, or what is read is no record.
-    pub fn next(&mut self, each: &mut impl FnMut(Line<'_>)) -> Result<bool, Trouble> {
+    pub fn next(&mut self, each: &mut impl FnMut(Told<'_>)) -> Result<bool, Trouble> {
         let n = match std::mem::take(&mut self.ahead) {
             0 => self.read()?,
             n => n,
@@ -157,14 +157,13 @@ impl Source {
     ///
     /// # Errors
     /// As [`Source::next`].
-    pub fn play(&mut self, rig: &Rig, pace: Pace, send: &mut impl FnMut(Arrival) -> bool) -> Result<Played, Trouble> {
-        let mut played = Played::default();
+    pub fn play(&mut self, pace: Pace, send: &mut impl FnMut(Arrival) -> bool) -> Result<(), Trouble> {
         let mut clock: Option<StreamClock> = None;
         let mut going = true;
         while going {
-            let more = self.next(&mut |line| {
-                let Some(arrival) = arrival(rig, &line, &mut played).filter(|_| going) else { return };
-                if let (Some(at), Pace::Times(n)) = (time_of(&line), pace) {
+            let more = self.next(&mut |told| {
+                let Some((at, arrival)) = arrival(&told).filter(|_| going) else { return };
+                if let Pace::Times(n) = pace {
                     let clock = clock.get_or_insert_with(|| StreamClock::start(at, Some(n)));
                     if let Some(wait) = clock.until(at) {
                         std::thread::sleep(wait);
@@ -174,51 +173,17 @@ impl Source {
             })?;
             going &= more;
         }
-        Ok(played)
+        Ok(())
     }
 }
 
-/// What a played record held beside good lines.
-#[derive(Clone, Debug, Default, PartialEq, Eq)]
-pub struct Played {
-    /// Lines of ports that the rig does not name.
-    pub unknown_port: u64,
-    /// Commands that are not understood.
-    pub unknown_command: u64,
-}
-
-fn time_of(line: &Line<'_>) -> Option<StreamTime> {
-    match line {
-        Line::Port { at, .. } | Line::Event { at, .. } | Line::Command { at, .. } => Some(*at),
-        _ => None,
-    }
-}
-
-/// Index of a port by its name in a record.
-pub fn port_index(rig: &Rig, name: &[u8]) -> Option<usize> {
-    rig.ports.iter().position(|p| p.name.as_bytes() == name)
-}
-
-/// What a record's line is for the engine; none for what it does not need.
-fn arrival(rig: &Rig, line: &Line<'_>, played: &mut Played) -> Option<Arrival> {
-    match line {
-        Line::Port { at, port, escaped } => {
-            let Some(port) = port_index(rig, port) else {
-                played.unknown_port += 1;
-                return None;
-            };
-            Some(Arrival::Line { port, at: *at, line: record::unescape(escaped).into_owned() })
+/// What a record's line is for the engine, and when; none for a command that is not understood.
+fn arrival(told: &Told<'_>) -> Option<(StreamTime, Arrival)> {
+    Some(match told {
+        Told::Line { at, port, escaped } => {
+            (*at, Arrival::Line { port: *port, at: *at, line: record::unescape(escaped).into_owned() })
         }
-        Line::Event { at, port, word } => {
-            port_index(rig, port).map(|port| Arrival::Port { port, at: *at, word: word.to_string() })
-        }
-        Line::Command { at, words } => match Command::parse(words) {
-            Ok(command) => Some(Arrival::Command { at: *at, command }),
-            Err(_) => {
-                played.unknown_command += 1;
-                None
-            }
-        },
-        Line::Started(_) | Line::Version(_) | Line::Comment => None,
-    }
+        Told::Event { at, port, word } => (*at, Arrival::Port { port: *port, at: *at, word: word.to_string() }),
+        Told::Command { at, words } => (*at, Arrival::Command { at: *at, command: Command::parse(words).ok()? }),
+    })
 }

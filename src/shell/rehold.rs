@@ -1,6 +1,6 @@
 //! `rehold`: the same hold rule over a record again, as fast as it goes.
 
-use super::player::{Source, port_index};
+use super::player::Source;
 use super::{Trouble, files};
 use crate::config::Setup;
 use crate::hold::dwell::Dwell;
@@ -8,7 +8,7 @@ use crate::pipeline::{Event, Input, Pipeline, What};
 use crate::session::codec;
 use crate::session::{Entry, Header, SCHEMA};
 use crate::stream::command::Command;
-use crate::stream::record::{self, Line};
+use crate::stream::record::{self, Told};
 use crate::units::StreamTime;
 use std::path::{Path, PathBuf};
 
@@ -45,7 +45,6 @@ struct Run<'a> {
     events: Vec<Event>,
     table: Option<csv::Writer<Vec<u8>>>,
     session: String,
-    unescaped: Vec<u8>,
     found: Found,
 }
 
@@ -58,7 +57,7 @@ pub fn rehold(setup: &Setup, task: &Task) -> Result<Found, Trouble> {
         let hint = "give another name; nothing was overwritten";
         return Err(Trouble::new("the session exists already").at(path.display()).hint(hint));
     }
-    let mut source = Source::open(&task.record)?;
+    let mut source = Source::open(&task.record, Some(&setup.rig))?;
     let mut run = Run {
         setup,
         pipeline: Pipeline::new(setup, None, false),
@@ -66,51 +65,40 @@ pub fn rehold(setup: &Setup, task: &Task) -> Result<Found, Trouble> {
         events: Vec::new(),
         table: task.csv.as_ref().map(|_| table()),
         session: String::new(),
-        unescaped: Vec::new(),
         found: Found::default(),
     };
     if !task.as_driven {
         run.pipeline.step(Input::Command { at: StreamTime::ZERO, command: Command::TakeEvery }, &mut run.events);
     }
     let progress = super::progress::Progress::new("re-holding", source.size);
-    while source.next(&mut |line| run.line(&line))? {
+    while source.next(&mut |told| run.told(&told))? {
         progress.at(source.bytes());
     }
     progress.done();
     run.pipeline.finish(&mut run.events);
     run.settle();
     run.found.damaged = source.tally().damaged;
+    run.found.lines[2] = source.tally().unknown_port;
     let started = source.tally().started.clone();
     run.write(task, started)
 }
 
 impl Run<'_> {
     #[inline]
-    fn line(&mut self, line: &Line<'_>) {
-        match line {
-            Line::Port { at, port, escaped } => {
-                let Some(port) = port_index(&self.setup.rig, port) else {
-                    self.found.lines[2] += 1;
-                    return;
-                };
-                if memchr::memchr(b'\\', escaped).is_some() {
-                    self.unescaped = record::unescape(escaped).into_owned();
-                    self.pipeline.step(Input::Line { port, at: *at, line: &self.unescaped }, &mut self.events);
-                } else {
-                    self.pipeline.step(Input::Line { port, at: *at, line: escaped }, &mut self.events);
-                }
+    fn told(&mut self, told: &Told<'_>) {
+        match told {
+            Told::Line { at, port, escaped } => {
+                let line = record::unescape(escaped);
+                self.pipeline.step(Input::Line { port: *port, at: *at, line: &line }, &mut self.events);
             }
-            Line::Event { at, port, word } => {
-                if let Some(port) = port_index(&self.setup.rig, port) {
-                    self.pipeline.step(Input::Port { port, at: *at, word }, &mut self.events);
-                }
+            Told::Event { at, port, word } => {
+                self.pipeline.step(Input::Port { port: *port, at: *at, word }, &mut self.events);
             }
-            Line::Command { at, words } => match Command::parse(words) {
+            Told::Command { at, words } => match Command::parse(words) {
                 Ok(command) if !self.as_driven && command.decides_what_is_kept() => {}
                 Ok(command) => self.pipeline.step(Input::Command { at: *at, command }, &mut self.events),
                 Err(_) => self.found.unknown_command += 1,
             },
-            Line::Started(_) | Line::Version(_) | Line::Comment => {}
         }
         if !self.events.is_empty() {
             self.settle();

@@ -159,13 +159,41 @@ pub fn write_command(out: &mut Vec<u8>, at: StreamTime, command: &super::command
     out.push(b'\n');
 }
 
-/// Longest line of a record file: the longest line of a port, all of it escaped, and its head.
-const LONGEST_RECORD_LINE: usize = 4 * LONGEST_LINE + 256;
-const _: () = assert!(LONGEST_RECORD_LINE > LONGEST_LINE);
+/// A line that concerns the rig.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub enum Told<'a> {
+    /// A line of the port at this index.
+    Line {
+        /// When.
+        at: StreamTime,
+        /// Index of the port.
+        port: usize,
+        /// What it sent, escaped.
+        escaped: &'a [u8],
+    },
+    /// Something happened to the port at this index.
+    Event {
+        /// When.
+        at: StreamTime,
+        /// Index of the port.
+        port: usize,
+        /// What.
+        word: Cow<'a, str>,
+    },
+    /// The person did something.
+    Command {
+        /// When.
+        at: StreamTime,
+        /// The words.
+        words: Cow<'a, str>,
+    },
+}
 
 /// Reads a record from chunks of any size.
-#[derive(Debug, Default)]
+#[derive(Debug)]
 pub struct Reader {
+    /// Names of the rig's ports; none: any name will do, and all are port 0.
+    ports: Option<Vec<Vec<u8>>>,
     pending: Vec<u8>,
     overlong: bool,
     last: StreamTime,
@@ -180,6 +208,8 @@ pub struct Tally {
     pub lines: u64,
     /// Lines whose head parsed.
     pub good: u64,
+    /// Of these: lines and events of ports that the rig does not name, passed over.
+    pub unknown_port: u64,
     /// Lines passed over as damage.
     pub damaged: u64,
     /// The first of these, from 1, and what was wrong.
@@ -191,8 +221,14 @@ pub struct Tally {
 }
 
 impl Reader {
-    /// Hands every good port line, event and command that ends in `chunk` to `each`, in order.
-    pub fn push(&mut self, mut chunk: &[u8], each: &mut impl FnMut(Line<'_>)) {
+    /// Reads what concerns these ports, or all ports.
+    pub fn new(ports: Option<&[crate::config::Port]>) -> Self {
+        let ports = ports.map(|list| list.iter().map(|p| p.name.clone().into_bytes()).collect());
+        Self { ports, pending: Vec::new(), overlong: false, last: StreamTime::ZERO, tally: Tally::default() }
+    }
+
+    /// Hands everything that ends in `chunk` and concerns the rig to `each`, in order.
+    pub fn push(&mut self, mut chunk: &[u8], each: &mut impl FnMut(Told<'_>)) {
         if !self.pending.is_empty() || self.overlong {
             let Some(end) = memchr::memchr(b'\n', chunk) else { return self.keep(chunk) };
             self.keep(&chunk[..end]);
@@ -206,7 +242,7 @@ impl Reader {
         self.keep(chunk);
     }
 
-    /// The file has ended: a last line without its end was torn, and is damage unless it is blank.
+    /// The file has ended: a last line without its end was torn, and is damage.
     pub fn finish(&mut self) {
         if !self.pending.is_empty() || self.overlong {
             self.damage("torn: the last line has no end");
@@ -221,7 +257,7 @@ impl Reader {
         self.pending.extend_from_slice(&bytes[..bytes.len().min(room)]);
     }
 
-    fn end_pending(&mut self, each: &mut impl FnMut(Line<'_>)) {
+    fn end_pending(&mut self, each: &mut impl FnMut(Told<'_>)) {
         let pending = std::mem::take(&mut self.pending);
         if std::mem::take(&mut self.overlong) {
             self.damage("longer than a record line can be");
@@ -233,28 +269,51 @@ impl Reader {
     }
 
     #[inline]
-    fn line(&mut self, line: &[u8], each: &mut impl FnMut(Line<'_>)) {
+    fn line(&mut self, line: &[u8], each: &mut impl FnMut(Told<'_>)) {
         let line = line.strip_suffix(b"\r").unwrap_or(line);
         let Some(parsed) = parse(line) else { return self.damage("no `seconds port line` head") };
-        match parsed {
-            Line::Port { at, .. } | Line::Event { at, .. } | Line::Command { at, .. } => {
-                if at < self.last {
-                    return self.damage("its time goes back");
-                }
-                self.last = at;
+        let told = match parsed {
+            Line::Port { at, port, escaped } => self.port(port).map(|port| (at, Told::Line { at, port, escaped })),
+            Line::Event { at, port, word } => self.port(port).map(|port| (at, Told::Event { at, port, word })),
+            Line::Command { at, words } => Some((at, Told::Command { at, words })),
+            header => {
                 self.tally.lines += 1;
-                self.tally.good += 1;
-                each(parsed);
+                return self.header(&header);
             }
+        };
+        let Some((at, told)) = told else {
+            self.tally.lines += 1;
+            self.tally.good += 1;
+            self.tally.unknown_port += 1;
+            return;
+        };
+        if at < self.last {
+            return self.damage("its time goes back");
+        }
+        self.last = at;
+        self.tally.lines += 1;
+        self.tally.good += 1;
+        each(told);
+    }
+
+    #[inline]
+    fn port(&self, name: &[u8]) -> Option<usize> {
+        match &self.ports {
+            Some(ports) => ports.iter().position(|p| p == name),
+            None => Some(0),
+        }
+    }
+
+    #[cold]
+    fn header(&mut self, line: &Line<'_>) {
+        match line {
             Line::Started(instant) => {
-                self.tally.started.get_or_insert_with(|| instant.to_string());
-                self.tally.lines += 1;
-            }
+                self.tally.started.get_or_insert_with(|| (*instant).to_string());
+            },
             Line::Version(version) => {
-                self.tally.version.get_or_insert_with(|| version.to_string());
-                self.tally.lines += 1;
-            }
-            Line::Comment => self.tally.lines += 1,
+                self.tally.version.get_or_insert_with(|| (*version).to_string());
+            },
+            _ => {}
         }
     }
 
@@ -266,3 +325,6 @@ impl Reader {
         self.tally.first_damage.get_or_insert((line, what));
     }
 }
+
+/// Longest line of a record file: the longest line of a port, all of it escaped, and its head.
+const LONGEST_RECORD_LINE: usize = 4 * LONGEST_LINE + 256;
