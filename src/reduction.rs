@@ -1,23 +1,414 @@
-//! placeholder until merge
+//! Sessions → coefficients, differences, verdicts: what the outing says, and how sure one may be.
+//!
+//! Segments → passes (`passes`), with zeros interpolated (`zeros`) → Cp by the measured q (`probe`, `air`) → one linear model a tap and
+//! target (`model`, `compare`) → verdicts at 5 % over the family (`inference`). Plain data out; `report` gives it a shape.
+
 pub mod air;
-/// x
-#[derive(Default)]
+pub mod compare;
+pub mod inference;
+pub mod model;
+pub mod passes;
+pub mod probe;
+pub mod zeros;
+
+use crate::config::{Air, Configuration, ProbeFactor, Setup};
+use crate::session::{AirSource, Direction, Entry, Session};
+use compare::{Comparison, Level, Question, Weakness};
+use passes::{LeftOut, Pass};
+use std::collections::BTreeSet;
+use zeros::Zeros;
+
+/// Two passes further apart in time than this make no pair: the wind will have changed, s.
+const PAIR_WITHIN_S: f64 = 1200.0;
+
+/// What a reduction is asked for.
+#[derive(Clone, Debug, Default, PartialEq)]
 pub struct Options {
-    /// x
+    /// Speed at which pressures are stated, km/h; none: the first target.
     pub at_kmh: Option<f64>,
-    /// x
+    /// Letter of another baseline than the outing's.
     pub baseline: Option<String>,
 }
-/// x
-pub struct Reduction;
-/// x
-#[derive(Debug, thiserror::Error)]
+
+/// Why nothing can be reduced.
+#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
 pub enum ReductionError {
-    /// x
-    #[error("x")]
-    X,
+    /// No session was given.
+    #[error("no session to reduce")]
+    NoSession,
+    /// Sessions of different cars.
+    #[error("the sessions are of different cars (`{0}` and `{1}`): reduce them apart")]
+    DifferentCars(String, String),
+    /// Sessions with different baselines.
+    #[error("the sessions have different baselines (`{0}` and `{1}`): name one with --baseline")]
+    DifferentBaselines(String, String),
+    /// A letter that no session has.
+    #[error("there is no configuration `{letter}` to be the baseline: the outing has {known}")]
+    NoSuchBaseline {
+        /// What was asked for.
+        letter: String,
+        /// What there is.
+        known: String,
+    },
 }
-/// x
-pub fn reduce(_: &[crate::session::Session], _: &Options) -> Result<Reduction, ReductionError> {
-    Ok(Reduction)
+
+/// Everything that sessions say.
+#[derive(Clone, Debug)]
+pub struct Reduction {
+    /// Title of the first outing.
+    pub title: String,
+    /// Name of the car.
+    pub car: String,
+    /// Letter of the baseline.
+    pub baseline: String,
+    /// Configurations in the order of the outing.
+    pub configurations: Vec<Configuration>,
+    /// Speed at which pressures are stated, km/h.
+    pub at_kmh: f64,
+    /// q of that speed in ISA sea-level air, Pa.
+    pub at_q_pa: f64,
+    /// Smallest pressure change worth knowing at the first target, Pa, and as a Cp difference.
+    pub resolve: (f64, f64),
+    /// Passes wanted of each configuration, direction and target.
+    pub wanted: u32,
+    /// Mean air of all passes; none without a pass.
+    pub air: Option<MeanAir>,
+    /// True over indicated airspeed that was applied.
+    pub probe_factor: f64,
+    /// Passes in time order.
+    pub passes: Vec<Pass>,
+    /// Level of every tap, configuration and target.
+    pub levels: Vec<Level>,
+    /// Differences from the baseline.
+    pub comparisons: Vec<Comparison>,
+    /// Wind of every out-and-back pair.
+    pub wind: Vec<WindPair>,
+    /// Drift of every pressure channel between consecutive zeros.
+    pub drift: Vec<Drift>,
+    /// What was left out.
+    pub left_out: Vec<LeftOut>,
+    /// Cautions, in words.
+    pub flags: Vec<String>,
+}
+
+/// Mean air of the passes.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct MeanAir {
+    /// Temperature, pressure, humidity.
+    pub air: Air,
+    /// Density, kg/m³.
+    pub density: f64,
+    /// Weakest source of any segment.
+    pub source: AirSource,
+}
+
+/// Wind along the road by one out-and-back pair.
+#[derive(Clone, Debug, PartialEq)]
+pub struct WindPair {
+    /// Target, km/h.
+    pub target_kmh: f64,
+    /// Middle of the pair, s.
+    pub t_s: f64,
+    /// True over indicated airspeed.
+    pub k: f64,
+    /// Head wind on the way out, km/h.
+    pub head_wind_out_kmh: f64,
+}
+
+/// Drift of a channel between two zeros.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Drift {
+    /// Channel.
+    pub channel: String,
+    /// Times of the two zeros, s.
+    pub from_s: f64,
+    /// Second one.
+    pub to_s: f64,
+    /// Change, Pa.
+    pub change_pa: f64,
+    /// Standard uncertainty of that, Pa.
+    pub u_pa: f64,
+    /// It exceeds the change sought.
+    pub exceeds: bool,
+}
+
+/// Reduces sessions of one car and baseline together.
+///
+/// # Errors
+/// [`ReductionError`] when they do not belong together. Poor data is no error: what cannot be told is absent, with the reason in `flags`.
+pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, ReductionError> {
+    let first = sessions.first().ok_or(ReductionError::NoSession)?;
+    let setup = &first.header.setup;
+    let configurations = configurations(sessions);
+    let baseline = baseline(sessions, &configurations, options)?;
+    let zeros: Vec<Zeros<'_>> = sessions.iter().map(Zeros::of).collect();
+    let (mut passes, mut left_out) = (Vec::new(), Vec::new());
+    for (index, session) in sessions.iter().enumerate() {
+        let (mut some, mut out) = passes::passes(index, session);
+        passes.append(&mut some);
+        left_out.append(&mut out);
+    }
+    let at_kmh = options.at_kmh.unwrap_or(setup.outing.targets_kmh[0]);
+    let resolve_pa = setup.outing.resolve_pa;
+    let resolve_cp = resolve_pa / probe::dynamic_pressure(air::ISA_DENSITY, setup.outing.targets_kmh[0]);
+    let wind = wind(&passes);
+    let mut flags = Vec::new();
+    let probe_factor = probe_factor(setup, &wind, &passes, &mut flags);
+    correct(&mut passes, setup, probe_factor);
+    let letters: Vec<String> = configurations.iter().map(|c| c.letter.clone()).collect();
+    let question = Question { configurations: &letters, baseline: &baseline, resolve_cp };
+    let (levels, comparisons) = compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
+    let drift = drift(&zeros, sessions, resolve_pa);
+    let mut reduction = Reduction {
+        title: setup.outing.title.clone(),
+        car: setup.car.name.clone(),
+        baseline,
+        configurations,
+        at_kmh,
+        at_q_pa: probe::dynamic_pressure(air::ISA_DENSITY, at_kmh),
+        resolve: (resolve_pa, resolve_cp),
+        wanted: setup.outing.passes,
+        air: mean_air(sessions),
+        probe_factor,
+        passes,
+        levels,
+        comparisons,
+        wind,
+        drift,
+        left_out,
+        flags,
+    };
+    let cautions = cautions(&reduction, sessions, &zeros);
+    reduction.flags.splice(0..0, cautions);
+    Ok(reduction)
+}
+
+/// Configurations of all sessions, in the order in which they are first named.
+fn configurations(sessions: &[Session]) -> Vec<Configuration> {
+    let mut all: Vec<Configuration> = Vec::new();
+    for c in sessions.iter().flat_map(|s| &s.header.setup.outing.configurations) {
+        if !all.iter().any(|a| a.letter == c.letter) {
+            all.push(c.clone());
+        }
+    }
+    all
+}
+
+fn baseline(sessions: &[Session], all: &[Configuration], options: &Options) -> Result<String, ReductionError> {
+    let cars: Vec<&str> = sessions.iter().map(|s| s.header.setup.car.name.as_str()).collect();
+    if let Some(other) = cars.iter().find(|c| **c != cars[0]) {
+        return Err(ReductionError::DifferentCars(cars[0].to_string(), (*other).to_string()));
+    }
+    if let Some(letter) = &options.baseline {
+        if !all.iter().any(|c| &c.letter == letter) {
+            let known: Vec<&str> = all.iter().map(|c| c.letter.as_str()).collect();
+            return Err(ReductionError::NoSuchBaseline { letter: letter.clone(), known: known.join(", ") });
+        }
+        return Ok(letter.clone());
+    }
+    let letters: Vec<&str> = sessions.iter().map(|s| s.header.setup.outing.baseline()).collect();
+    match letters.iter().find(|l| **l != letters[0]) {
+        Some(other) => Err(ReductionError::DifferentBaselines(letters[0].to_string(), (*other).to_string())),
+        None => Ok(letters[0].to_string()),
+    }
+}
+
+/// Taps in the order of the car file.
+fn taps(sessions: &[Session]) -> Vec<String> {
+    let mut all: Vec<String> = Vec::new();
+    for tap in sessions.iter().flat_map(|s| &s.header.setup.car.taps) {
+        if !all.contains(&tap.name) {
+            all.push(tap.name.clone());
+        }
+    }
+    all
+}
+
+fn mean_air(sessions: &[Session]) -> Option<MeanAir> {
+    let segments = sessions
+        .iter()
+        .flat_map(|s| &s.entries)
+        .filter_map(|e| if let Entry::Segment(s) = e { Some(&s.air) } else { None });
+    let all: Vec<_> = segments.collect();
+    let n = all.len() as f64;
+    let mean = |of: fn(&Air) -> f64| all.iter().map(|a| of(&a.air)).sum::<f64>() / n;
+    let source = all.iter().map(|a| a.source).min()?;
+    let air = Air {
+        temperature_c: mean(|a| a.temperature_c),
+        pressure_hpa: mean(|a| a.pressure_hpa),
+        humidity_pct: mean(|a| a.humidity_pct),
+    };
+    Some(MeanAir { air, density: air::density(&air), source })
+}
+
+/// Consecutive opposite passes of one target make a pair.
+fn wind(passes: &[Pass]) -> Vec<WindPair> {
+    let mut pairs = Vec::new();
+    for pass in passes {
+        for other in passes.iter().filter(|o| o.session == pass.session && o.target_kmh == pass.target_kmh) {
+            let opposite = pass.direction == Direction::Out && other.direction == Direction::Back;
+            let apart = other.t_s - pass.t_s;
+            let nearest = apart > 0.0
+                && !passes.iter().any(|o| {
+                    o.session == pass.session
+                        && o.target_kmh == pass.target_kmh
+                        && o.t_s > pass.t_s
+                        && o.t_s < other.t_s
+                });
+            if opposite && nearest && apart <= PAIR_WITHIN_S {
+                pairs.extend(pair_of(pass, other));
+            }
+        }
+    }
+    pairs
+}
+
+fn pair_of(out: &Pass, back: &Pass) -> Option<WindPair> {
+    let air = |p: &Pass| p.q.as_ref().filter(|q| q.measured.is_some()).map(|q| probe::speed_of(p.density, q.pa));
+    let ground = [out.speed_kmh?, back.speed_kmh?];
+    let pair = probe::pair(ground, [air(out)?, air(back)?])?;
+    Some(WindPair {
+        target_kmh: out.target_kmh,
+        t_s: f64::midpoint(out.t_s, back.t_s),
+        k: pair.k,
+        head_wind_out_kmh: pair.head_wind,
+    })
+}
+
+/// One factor for the day: a factor for each configuration would put its own error into every difference.
+fn probe_factor(setup: &Setup, wind: &[WindPair], passes: &[Pass], flags: &mut Vec<String>) -> f64 {
+    if !passes.iter().any(|p| p.q.as_ref().is_some_and(|q| q.measured.is_some())) {
+        return 1.0;
+    }
+    let ks: Vec<f64> = wind.iter().map(|w| w.k).filter(|k| (0.5..2.0).contains(k)).collect();
+    match setup.car.probe.factor {
+        ProbeFactor::Stated(k) => k,
+        ProbeFactor::Pairs if ks.is_empty() => {
+            flags.push("probe factor: no out-and-back pair, 1 is used; drive one".to_string());
+            1.0
+        }
+        ProbeFactor::Pairs => ks.iter().sum::<f64>() / ks.len() as f64,
+    }
+}
+
+fn correct(passes: &mut [Pass], setup: &Setup, k: f64) {
+    let model = setup.car.probe.model;
+    for pass in passes.iter_mut().filter(|p| p.q.as_ref().is_some_and(|q| q.measured.is_some())) {
+        for tap in pass.taps.values_mut() {
+            tap.cp = tap.cp.map(|cp| probe::corrected_cp(cp, k, model));
+        }
+    }
+}
+
+fn compared(
+    passes: &[Pass],
+    zeros: &[Zeros<'_>],
+    taps: &[String],
+    (question, flags): (Question<'_>, &mut Vec<String>),
+) -> (Vec<Level>, Vec<Comparison>) {
+    let mut targets: Vec<f64> = passes.iter().map(|p| p.target_kmh).collect();
+    targets.sort_by(f64::total_cmp);
+    targets.dedup();
+    let (mut levels, mut comparisons) = (Vec::new(), Vec::new());
+    let mut weaknesses: BTreeSet<(Weakness, String)> = BTreeSet::new();
+    for target in targets {
+        let of_target: Vec<&Pass> = passes.iter().filter(|p| p.target_kmh == target).collect();
+        let mut compared = compare::compare(&of_target, zeros, taps, question);
+        // By configuration, then tap: a configuration's verdicts stand together.
+        let place = |letter: &str| question.configurations.iter().position(|c| c == letter);
+        compared.comparisons.sort_by_key(|c| place(&c.configuration));
+        levels.append(&mut compared.levels);
+        comparisons.append(&mut compared.comparisons);
+        weaknesses.extend(compared.weaknesses.into_iter().map(|w| (w, format!("{target} km/h"))));
+    }
+    flags.extend(weaknesses.iter().map(|(weakness, at)| format!("{at}: {}", words_of(weakness))));
+    (levels, comparisons)
+}
+
+fn words_of(weakness: &Weakness) -> String {
+    match weakness {
+        Weakness::OnePass(c) => format!("one pass of {c} only, its scatter is borrowed from the others; drive more"),
+        Weakness::OneWay(c) => {
+            format!("{c} was driven one way only, wind and road may show as a change; drive it both ways")
+        }
+        Weakness::BaselineOnce => {
+            "the baseline was driven in one block, drift cannot be told from a change; drive it again at the end"
+                .to_string()
+        }
+        Weakness::NoScatter => "too few passes for any interval; drive more".to_string(),
+    }
+}
+
+fn drift(zeros: &[Zeros<'_>], sessions: &[Session], resolve_pa: f64) -> Vec<Drift> {
+    let mut list = Vec::new();
+    for (zeros, session) in zeros.iter().zip(sessions) {
+        for channel in session
+            .header
+            .setup
+            .rig
+            .channels
+            .iter()
+            .filter(|c| c.quantity.inside() == "Pa" && c.quantity != crate::units::Quantity::Barometer)
+        {
+            for (i, pair) in zeros.list().windows(2).enumerate() {
+                let mean = |k: usize| pair[k].channels.get(&channel.name).map(|s| s.mean);
+                let (Some(a), Some(b)) = (mean(0), mean(1)) else { continue };
+                let u_pa = zeros.standard_error(i, &channel.name).hypot(zeros.standard_error(i + 1, &channel.name));
+                list.push(Drift {
+                    channel: channel.name.clone(),
+                    from_s: pair[0].t1.seconds(),
+                    to_s: pair[1].t1.seconds(),
+                    change_pa: b - a,
+                    u_pa,
+                    exceeds: (b - a).abs() > resolve_pa,
+                });
+            }
+        }
+    }
+    list
+}
+
+/// What must be said about the data as a whole.
+fn cautions(r: &Reduction, sessions: &[Session], zeros: &[Zeros<'_>]) -> Vec<String> {
+    let mut words = Vec::new();
+    if r.passes.is_empty() {
+        words.push("no pass to reduce: no segment was kept, or all are void or left out".to_string());
+    }
+    for (i, zeros) in zeros.iter().enumerate() {
+        let which = if sessions.len() > 1 { format!("session {}: ", i + 1) } else { String::new() };
+        match zeros.list().len() {
+            0 => {
+                words.push(format!("{which}never zeroed: sensor offsets are in every pressure; press z at standstill"))
+            }
+            1 => words.push(format!("{which}one zero only: drift is not known; zero again at the end")),
+            _ => {}
+        }
+    }
+    if r.passes.iter().any(|p| p.q.as_ref().is_some_and(|q| q.measured.is_none())) {
+        words.push(
+            "q from ground speed and density (no dynamic-pressure channel): wind is in every Cp, a fallback"
+                .to_string(),
+        );
+    }
+    if r.passes.iter().any(|p| p.q.is_none()) {
+        words.push("passes without q: neither dynamic pressure nor speed was measured; no Cp there".to_string());
+    }
+    if r.passes.iter().any(|p| p.q.as_ref().is_some_and(|q| q.pa < passes::LEAST_Q_PA)) {
+        words.push(format!("passes with q below {} Pa give no Cp; check the probe's hoses", passes::LEAST_Q_PA));
+    }
+    if r.air.is_some_and(|a| a.source == AirSource::Assumed) {
+        words.push("air assumed standard: nobody stated or measured it; say it with the key a or in [air]".to_string());
+    }
+    for drift in r.drift.iter().filter(|d| d.exceeds) {
+        words.push(format!(
+            "zero of {} drifted {:+.1} Pa between {:.0} s and {:.0} s, more than the change sought; zero more often",
+            drift.channel, drift.change_pa, drift.from_s, drift.to_s
+        ));
+    }
+    if !r.comparisons.is_empty() {
+        words.push("ten passes without refitting the part replicate the road, not the part".to_string());
+    } else if !r.passes.is_empty() {
+        words.push(format!("nothing to compare: drive the baseline {} and another configuration", r.baseline));
+    }
+    words
 }

@@ -1,13 +1,9 @@
-//! placeholder until merge
-/// x
-pub fn text(_: &crate::reduction::Reduction, _: &crate::config::Show) -> String {
-    String::from("(reduction follows)\n")
-}
-/// x
-pub fn csv(_: &crate::reduction::Reduction) -> Vec<u8> {
-    Vec::new()
-}
-/// x
-pub fn json(_: &crate::reduction::Reduction) -> String {
-    String::new()
-}
+//! A reduction → text for the terminal, CSV and JSON; nothing is worked out here that the reduction does not know.
+
+mod json;
+mod tables;
+mod text;
+
+pub use json::json;
+pub use tables::csv;
+pub use text::text;

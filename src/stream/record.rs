@@ -309,10 +309,10 @@ impl Reader {
         match line {
             Line::Started(instant) => {
                 self.tally.started.get_or_insert_with(|| (*instant).to_string());
-            },
+            }
             Line::Version(version) => {
                 self.tally.version.get_or_insert_with(|| (*version).to_string());
-            },
+            }
             _ => {}
         }
     }

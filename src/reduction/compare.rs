@@ -1,0 +1,367 @@
+//! Configurations against the baseline: one linear model a tap and target over all passes, contrasts, verdicts.
+//!
+//! Cp of pass i = level of its configuration + heading/2·(±1) + session + drift·(t − t̄) + scatter, by ordinary least squares. Heading
+//! enters where every configuration was driven both ways; drift where the baseline was driven in separate blocks; session where there are
+//! several. The error of the zeros is common to passes and is added outside the scatter.
+
+use super::inference::{ALPHA, POWER, effective_dof, holm, passes_for, t_quantile, t_two_sided_p};
+use super::model::{self, Fit};
+use super::passes::Pass;
+use super::zeros::Zeros;
+use crate::session::Direction;
+use nalgebra::{DMatrix, DVector};
+use std::collections::{BTreeMap, BTreeSet};
+
+/// Degrees of freedom that a term must leave.
+const DOF_TO_LEAVE: usize = 2;
+
+/// A value with its 95 % half-width; none when nothing says how sure it is.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Estimate {
+    /// The value.
+    pub value: f64,
+    /// Standard uncertainty.
+    pub u: Option<f64>,
+    /// Degrees of freedom of that.
+    pub dof: Option<f64>,
+    /// Half-width of the 95 % interval.
+    pub u95: Option<f64>,
+}
+
+/// The verdict on one tap, target and configuration.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Verdict {
+    /// The adjusted test of "no difference" rejects.
+    Changed,
+    /// The interval of the difference lies within ± the smallest change worth knowing.
+    NoChange,
+    /// Neither.
+    Undecided,
+}
+
+impl Verdict {
+    /// Its word in the JSON.
+    pub const fn word(self) -> &'static str {
+        match self {
+            Self::Changed => "changed",
+            Self::NoChange => "no-change",
+            Self::Undecided => "undecided",
+        }
+    }
+}
+
+/// Level of one configuration at one tap and target.
+#[derive(Clone, Debug)]
+pub struct Level {
+    /// Tap.
+    pub tap: String,
+    /// Configuration.
+    pub configuration: String,
+    /// Target, km/h.
+    pub target_kmh: f64,
+    /// Passes.
+    pub passes: usize,
+    /// Cp by the indicated q.
+    pub cp: Estimate,
+}
+
+/// Difference of one configuration from the baseline.
+#[derive(Clone, Debug)]
+pub struct Comparison {
+    /// Tap.
+    pub tap: String,
+    /// Target, km/h.
+    pub target_kmh: f64,
+    /// Configuration.
+    pub configuration: String,
+    /// Passes of the baseline and of the configuration.
+    pub passes: [usize; 2],
+    /// Difference of Cp.
+    pub delta: Estimate,
+    /// p of "no difference", and adjusted over the family.
+    pub p: Option<f64>,
+    /// Holm over all taps and configurations of the target.
+    pub p_adjusted: Option<f64>,
+    /// Scatter between passes (residual standard deviation of Cp).
+    pub scatter: Option<f64>,
+    /// Smallest difference that would be found with [`POWER`].
+    pub detectable: Option<f64>,
+    /// The verdict.
+    pub verdict: Verdict,
+    /// About so many more passes of the configuration, and as many of the baseline, for undecided.
+    pub passes_needed: Option<u32>,
+}
+
+/// Weakness of a design, for one target.
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub enum Weakness {
+    /// One pass of a configuration: its scatter is borrowed from the others.
+    OnePass(String),
+    /// A configuration driven one way only while others were driven both ways.
+    OneWay(String),
+    /// The baseline was driven in one block: drift cannot be told from a change.
+    BaselineOnce,
+    /// No degrees of freedom: no intervals.
+    NoScatter,
+}
+
+/// Levels, comparisons, weaknesses of one target.
+#[derive(Clone, Debug, Default)]
+pub struct Compared {
+    /// Levels of every tap and configuration.
+    pub levels: Vec<Level>,
+    /// Differences from the baseline.
+    pub comparisons: Vec<Comparison>,
+    /// What is weak about the design.
+    pub weaknesses: BTreeSet<Weakness>,
+}
+
+/// What is compared.
+#[derive(Clone, Copy)]
+pub struct Question<'a> {
+    /// Letters in the order of the outing.
+    pub configurations: &'a [String],
+    /// Letter of the baseline.
+    pub baseline: &'a str,
+    /// Smallest Cp difference worth knowing.
+    pub resolve_cp: f64,
+}
+
+/// Compares every tap of the passes of one target.
+pub fn compare(passes: &[&Pass], zeros: &[Zeros<'_>], taps: &[String], question: Question<'_>) -> Compared {
+    let mut all = Compared::default();
+    for tap in taps {
+        let seen: Vec<&Pass> =
+            passes.iter().copied().filter(|p| p.taps.get(tap).is_some_and(|t| t.cp.is_some())).collect();
+        if !seen.is_empty() {
+            Model::new(&seen, tap, question).compare(zeros, &mut all);
+        }
+    }
+    judge(&mut all.comparisons, question.resolve_cp);
+    all
+}
+
+/// Holm over the family, then the verdicts.
+fn judge(comparisons: &mut [Comparison], resolve_cp: f64) {
+    let tested: Vec<usize> = (0..comparisons.len()).filter(|i| comparisons[*i].p.is_some()).collect();
+    let p: Vec<f64> = tested.iter().filter_map(|i| comparisons[*i].p).collect();
+    for (i, adjusted) in tested.iter().zip(holm(&p)) {
+        comparisons[*i].p_adjusted = Some(adjusted);
+    }
+    let family = tested.len().max(1);
+    for c in comparisons {
+        c.verdict = match (c.p_adjusted, c.delta.u95) {
+            (Some(p), Some(_)) if p <= ALPHA => Verdict::Changed,
+            (Some(_), Some(u95)) if c.delta.value.abs() + u95 <= resolve_cp => Verdict::NoChange,
+            _ => Verdict::Undecided,
+        };
+        if c.verdict == Verdict::Undecided {
+            c.passes_needed = more_passes(c, resolve_cp, family);
+        }
+    }
+}
+
+/// Passes still missing for the nearer of the two verdicts: a change of the size seen, or none beyond the one worth knowing.
+fn more_passes(c: &Comparison, resolve_cp: f64, family: usize) -> Option<u32> {
+    let scatter = c.scatter.filter(|s| *s > 0.0)?;
+    let seen = c.delta.value.abs();
+    let change = passes_for(seen / scatter, ALPHA / family as f64);
+    let no_change = passes_for((resolve_cp - seen) / scatter, ALPHA);
+    let needed = [change, no_change].into_iter().flatten().min()?;
+    let driven = u32::try_from(c.passes[0].min(c.passes[1])).unwrap_or(u32::MAX);
+    Some(needed.saturating_sub(driven).max(1))
+}
+
+/// One tap's observations and design.
+struct Model<'a> {
+    passes: &'a [&'a Pass],
+    tap: &'a str,
+    question: Question<'a>,
+    /// Letters with a pass, in the order of the outing.
+    present: Vec<&'a str>,
+    design: DMatrix<f64>,
+    weaknesses: BTreeSet<Weakness>,
+}
+
+impl<'a> Model<'a> {
+    fn new(passes: &'a [&'a Pass], tap: &'a str, question: Question<'a>) -> Self {
+        let present: Vec<&str> = question
+            .configurations
+            .iter()
+            .map(String::as_str)
+            .filter(|letter| passes.iter().any(|p| p.configuration == *letter))
+            .collect();
+        let levels = DMatrix::from_fn(passes.len(), present.len(), |i, j| {
+            f64::from(u8::from(passes[i].configuration == present[j]))
+        });
+        let mut model = Self { passes, tap, question, present, design: levels, weaknesses: BTreeSet::new() };
+        model.add_sessions();
+        model.add_heading();
+        model.add_drift();
+        model
+    }
+
+    /// Adds a nuisance column if it can be told from the others and leaves degrees of freedom; says whether it did.
+    fn add(&mut self, column: &[f64]) -> bool {
+        let columns = self.design.ncols();
+        let mut wider = self.design.clone().insert_column(columns, 0.0);
+        wider.set_column(columns, &DVector::from_column_slice(column));
+        let good = self.passes.len() >= columns + 1 + DOF_TO_LEAVE && model::rank(&wider) == columns + 1;
+        if good {
+            self.design = wider;
+        }
+        good
+    }
+
+    fn sessions(&self) -> BTreeSet<usize> {
+        self.passes.iter().map(|p| p.session).collect()
+    }
+
+    /// Each further session has an offset of its own, centred so that levels stay levels.
+    fn add_sessions(&mut self) {
+        for session in self.sessions().into_iter().skip(1) {
+            let n = self.passes.iter().filter(|p| p.session == session).count() as f64;
+            let share = n / self.passes.len() as f64;
+            let column: Vec<f64> =
+                self.passes.iter().map(|p| f64::from(u8::from(p.session == session)) - share).collect();
+            self.add(&column);
+        }
+    }
+
+    fn add_heading(&mut self) {
+        let driven =
+            |letter: &str, way: Direction| self.passes.iter().any(|p| p.configuration == letter && p.direction == way);
+        let both: Vec<bool> =
+            self.present.iter().map(|c| driven(c, Direction::Out) && driven(c, Direction::Back)).collect();
+        if both.iter().all(|b| *b) {
+            let column: Vec<f64> = self
+                .passes
+                .iter()
+                .map(|p| match p.direction {
+                    Direction::Out => 0.5,
+                    Direction::Back => -0.5,
+                    Direction::Other => 0.0,
+                })
+                .collect();
+            self.add(&column);
+        } else if both.iter().any(|b| *b) {
+            let one_way = self.present.iter().zip(&both).filter(|(_, both)| !**both);
+            self.weaknesses.extend(one_way.map(|(c, _)| Weakness::OneWay((*c).to_string())));
+        }
+    }
+
+    /// A drift for each session in which the baseline was driven both before and after something else.
+    fn add_drift(&mut self) {
+        let mut told = false;
+        for session in self.sessions() {
+            let within: Vec<&&Pass> = self.passes.iter().filter(|p| p.session == session).collect();
+            let base = |p: &&&Pass| p.configuration == self.question.baseline;
+            let blocks = within.iter().position(|p| base(&p)).zip(within.iter().rposition(|p| base(&p)));
+            let between = blocks.is_some_and(|(first, last)| !within[first..last].iter().all(|p| base(&p)));
+            if !between {
+                continue;
+            }
+            let mean = within.iter().map(|p| p.t_s).sum::<f64>() / within.len() as f64;
+            let column: Vec<f64> =
+                self.passes.iter().map(|p| if p.session == session { (p.t_s - mean) / 3600.0 } else { 0.0 }).collect();
+            told |= self.add(&column);
+        }
+        if !told && self.present.len() > 1 {
+            self.weaknesses.insert(Weakness::BaselineOnce);
+        }
+    }
+
+    fn compare(mut self, zeros: &[Zeros<'_>], all: &mut Compared) {
+        let y: Vec<f64> = self.passes.iter().filter_map(|p| p.taps[self.tap].cp).collect();
+        let Some(fit) = model::fit(&self.design, &DVector::from_vec(y)) else { return };
+        if fit.dof == 0 {
+            self.weaknesses.insert(Weakness::NoScatter);
+        }
+        let count = |letter: &str| self.passes.iter().filter(|p| p.configuration == letter).count();
+        let single: Vec<Weakness> =
+            self.present.iter().filter(|c| count(c) == 1).map(|c| Weakness::OnePass((*c).to_string())).collect();
+        for (j, letter) in self.present.iter().enumerate() {
+            let mut contrast = DVector::zeros(self.design.ncols());
+            contrast[j] = 1.0;
+            all.levels.push(Level {
+                tap: self.tap.to_string(),
+                configuration: (*letter).to_string(),
+                target_kmh: self.passes[0].target_kmh,
+                passes: count(letter),
+                cp: self.estimate(&fit, &contrast, zeros),
+            });
+        }
+        if let Some(base) = self.present.iter().position(|c| *c == self.question.baseline) {
+            for j in (0..self.present.len()).filter(|j| *j != base) {
+                let mut contrast = DVector::zeros(self.design.ncols());
+                (contrast[j], contrast[base]) = (1.0, -1.0);
+                let passes = [count(self.present[base]), count(self.present[j])];
+                all.comparisons.push(self.comparison(&fit, &contrast, zeros, (self.present[j], passes)));
+            }
+        }
+        all.weaknesses.extend(self.weaknesses);
+        all.weaknesses.extend(single);
+    }
+
+    fn comparison(
+        &self,
+        fit: &Fit,
+        contrast: &DVector<f64>,
+        zeros: &[Zeros<'_>],
+        (letter, passes): (&str, [usize; 2]),
+    ) -> Comparison {
+        let delta = self.estimate(fit, contrast, zeros);
+        let known = delta.u.zip(delta.dof).filter(|(u, _)| *u > 0.0);
+        let p = known.and_then(|(u, dof)| t_two_sided_p(delta.value / u, dof));
+        let detectable =
+            known.and_then(|(u, dof)| Some(u * (t_quantile(1.0 - ALPHA / 2.0, dof)? + t_quantile(POWER, dof)?)));
+        Comparison {
+            tap: self.tap.to_string(),
+            target_kmh: self.passes[0].target_kmh,
+            configuration: letter.to_string(),
+            passes,
+            delta,
+            p,
+            p_adjusted: None,
+            scatter: fit.variance.map(f64::sqrt),
+            detectable,
+            verdict: Verdict::Undecided,
+            passes_needed: None,
+        }
+    }
+
+    /// A contrast with the scatter's and the zeros' uncertainty.
+    fn estimate(&self, fit: &Fit, contrast: &DVector<f64>, zeros: &[Zeros<'_>]) -> Estimate {
+        let value = fit.value(contrast);
+        let Some(scatter) = fit.variance_of(contrast) else { return Estimate { value, u: None, dof: None, u95: None } };
+        let common = self.zero_variance(&fit.weights_of(contrast), zeros);
+        let dof = effective_dof(&[(scatter, fit.dof as f64), (common, f64::INFINITY)]);
+        let u = (scatter + common).sqrt();
+        let t = dof.and_then(|dof| t_quantile(1.0 - ALPHA / 2.0, dof));
+        let u95 = t.map(|t| t * u).filter(|x| x.is_finite());
+        Estimate { value, u: Some(u), dof, u95 }
+    }
+
+    /// Variance that the zeros' own errors give a contrast with these weights: every zero counts once, however many passes rest on it.
+    fn zero_variance(&self, weights: &DVector<f64>, zeros: &[Zeros<'_>]) -> f64 {
+        let mut effects: BTreeMap<(usize, usize, &str), f64> = BTreeMap::new();
+        for (pass, weight) in self.passes.iter().zip(weights.iter()) {
+            let (tap, Some(q)) = (&pass.taps[self.tap], &pass.q) else { continue };
+            let mut add = |channel: &'a str, parts: &[(usize, f64)], effect: f64| {
+                for (zero, share) in parts {
+                    *effects.entry((pass.session, *zero, channel)).or_default() += weight * share * effect;
+                }
+            };
+            if let Some(zero) = &tap.zero {
+                add(&tap.channel, &zero.parts, -1.0 / q.pa);
+            }
+            if let (Some((channel, Some(zero))), Some(cp)) = (&q.measured, tap.cp) {
+                add(channel, &zero.parts, cp / q.pa);
+            }
+        }
+        effects
+            .iter()
+            .map(|((session, zero, channel), effect)| (effect * zeros[*session].standard_error(*zero, channel)).powi(2))
+            .sum()
+    }
+}

@@ -1,0 +1,210 @@
+//! Segments → passes: consecutive dwells of one stretch are one pass, and the pass is the observation.
+//!
+//! Void segments are gone; marked ones, spans by hand and channels that stood still are left out, and that is told.
+
+use super::air;
+use super::probe::dynamic_pressure;
+use super::zeros::{Correction, Zeros};
+use crate::hold::statistics::standard_error;
+use crate::session::{Direction, Entry, Segment, Session};
+use crate::units::{KMH_PER_M_S, Quantity, StreamTime};
+use std::collections::{BTreeMap, BTreeSet};
+
+/// Below this q no coefficient is formed: it would be noise over noise, Pa.
+pub const LEAST_Q_PA: f64 = 5.0;
+
+/// One pass.
+#[derive(Clone, Debug)]
+pub struct Pass {
+    /// Which session, from 0.
+    pub session: usize,
+    /// Its segments.
+    pub segments: Vec<u32>,
+    /// What was fitted.
+    pub configuration: String,
+    /// Which way.
+    pub direction: Direction,
+    /// Target speed, km/h.
+    pub target_kmh: f64,
+    /// Middle of it, s of stream time.
+    pub t_s: f64,
+    /// Mean dynamic pressure and where it comes from.
+    pub q: Option<DynamicPressure>,
+    /// Mean ground speed, km/h.
+    pub speed_kmh: Option<f64>,
+    /// Mean course, degrees.
+    pub track_deg: Option<f64>,
+    /// Air density, kg/m³.
+    pub density: f64,
+    /// By tap.
+    pub taps: BTreeMap<String, TapMean>,
+}
+
+/// Mean dynamic pressure of a pass.
+#[derive(Clone, Debug)]
+pub struct DynamicPressure {
+    /// Its value, zero corrected, Pa.
+    pub pa: f64,
+    /// Its channel and zero; none when it comes from ground speed and density.
+    pub measured: Option<(String, Option<Correction>)>,
+}
+
+/// One tap over a pass.
+#[derive(Clone, Debug)]
+pub struct TapMean {
+    /// The channel it sat on.
+    pub channel: String,
+    /// Mean pressure, zero corrected, Pa.
+    pub pa: f64,
+    /// Its zero correction.
+    pub zero: Option<Correction>,
+    /// Cp by the pass's q, before any probe factor.
+    pub cp: Option<f64>,
+    /// Standard error of that within the pass; a floor of the scatter between passes.
+    pub cp_se: Option<f64>,
+}
+
+/// A segment, or a channel of one, that was left out.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct LeftOut {
+    /// Which session, from 0.
+    pub session: usize,
+    /// Its number.
+    pub segment: u32,
+    /// Why.
+    pub why: String,
+}
+
+/// The passes of a session in time order, and what was left out.
+pub fn passes(index: usize, session: &Session) -> (Vec<Pass>, Vec<LeftOut>) {
+    let zeros = Zeros::of(session);
+    let void: BTreeSet<u32> =
+        session.entries.iter().filter_map(|e| if let Entry::Void(v) = e { Some(v.segment) } else { None }).collect();
+    let mut left_out = Vec::new();
+    let mut groups: Vec<((u32, &Segment), Vec<&Segment>)> = Vec::new();
+    let mut run = 0;
+    for entry in &session.entries {
+        let segment = match entry {
+            Entry::End(_) => {
+                run += 1;
+                continue;
+            }
+            Entry::Segment(segment) => segment,
+            _ => continue,
+        };
+        if let Some(why) = reason_to_leave_out(segment, &void) {
+            left_out.push(LeftOut { session: index, segment: segment.id, why });
+            continue;
+        }
+        match groups.last_mut() {
+            Some(((r, first), group)) if *r == run && one_pass(first, segment) => group.push(segment),
+            _ => groups.push(((run, segment), vec![segment])),
+        }
+    }
+    for segment in groups.iter().flat_map(|(_, g)| g) {
+        for flag in segment.flags.iter().filter(|f| f.contains(':')) {
+            left_out.push(LeftOut { session: index, segment: segment.id, why: flag.clone() });
+        }
+    }
+    let made = groups.iter().filter_map(|(_, group)| pass(index, session, &zeros, group)).collect();
+    (made, left_out)
+}
+
+fn reason_to_leave_out(segment: &Segment, void: &BTreeSet<u32>) -> Option<String> {
+    if void.contains(&segment.id) {
+        return Some("void".to_string());
+    }
+    if segment.target_kmh.is_none() {
+        return Some("by-hand".to_string());
+    }
+    segment.flags.iter().find(|f| !f.contains(':')).cloned()
+}
+
+fn one_pass(a: &Segment, b: &Segment) -> bool {
+    a.stretch == b.stretch
+        && a.configuration == b.configuration
+        && a.direction == b.direction
+        && a.target_kmh == b.target_kmh
+        && a.taps == b.taps
+}
+
+/// Sample-weighted mean over the dwells of a pass; none where any dwell lacks the channel or flags it.
+fn mean(group: &[&Segment], channel: &str) -> Option<f64> {
+    let (mut sum, mut n) = (0.0, 0.0);
+    for segment in group {
+        if segment.flags.iter().any(|f| f.split_once(':').is_some_and(|(_, c)| c == channel)) {
+            return None;
+        }
+        let s = segment.channels.get(channel)?;
+        sum += s.mean * s.n as f64;
+        n += s.n as f64;
+    }
+    (n > 0.0 && f64::is_finite(sum)).then(|| sum / n)
+}
+
+fn pass(index: usize, session: &Session, zeros: &Zeros<'_>, group: &[&Segment]) -> Option<Pass> {
+    let (first, last) = (group.first()?, group.last()?);
+    let middle = StreamTime::from_micros(i64::midpoint(first.t0.micros(), last.t1.micros()));
+    let channels = &session.header.setup.rig.channels;
+    let named = |quantity| channels.iter().find(|c| c.quantity == quantity).map(|c| c.name.as_str());
+    let air = group.iter().map(|s| air::density(&s.air.air)).sum::<f64>() / group.len() as f64;
+    let speed = named(Quantity::Speed);
+    let q = named(Quantity::DynamicPressure)
+        .and_then(|c| measured_q(group, zeros, c, middle))
+        .or_else(|| speed.and_then(|c| ground_q(group, c, air)));
+    let q_channel = q.as_ref().and_then(|q| q.measured.as_ref()).map(|(c, _)| c.clone());
+    let tap = |(channel, tap): (&String, &String)| {
+        let raw = mean(group, channel)?;
+        let zero = zeros.at(channel, middle);
+        let pa = raw - zero.as_ref().map_or(0.0, |z| z.pa);
+        let cp = q.as_ref().filter(|q| q.pa >= LEAST_Q_PA).map(|q| pa / q.pa).filter(|cp| cp.is_finite());
+        let cp_se = cp
+            .zip(q.as_ref())
+            .and_then(|(cp, q)| residual_se(group, channel, q_channel.as_deref(), cp).map(|se| se / q.pa));
+        Some((tap.clone(), TapMean { channel: channel.clone(), pa, zero, cp, cp_se }))
+    };
+    Some(Pass {
+        session: index,
+        segments: group.iter().map(|s| s.id).collect(),
+        configuration: first.configuration.clone(),
+        direction: first.direction,
+        target_kmh: first.target_kmh?,
+        t_s: middle.seconds(),
+        speed_kmh: speed.and_then(|c| mean(group, c)),
+        track_deg: first.track_deg,
+        density: air,
+        taps: first.taps.iter().filter_map(tap).collect(),
+        q,
+    })
+}
+
+fn measured_q(group: &[&Segment], zeros: &Zeros<'_>, channel: &str, t: StreamTime) -> Option<DynamicPressure> {
+    let raw = mean(group, channel)?;
+    let zero = zeros.at(channel, t);
+    let pa = raw - zero.as_ref().map_or(0.0, |z| z.pa);
+    Some(DynamicPressure { pa, measured: Some((channel.to_string(), zero)) })
+}
+
+/// Mean of ρ V²/2 over the ground speed: wind is unknown, so this is a fallback.
+fn ground_q(group: &[&Segment], channel: &str, density: f64) -> Option<DynamicPressure> {
+    let v = mean(group, channel)?;
+    let sd = group.iter().filter_map(|s| s.channels.get(channel)?.sd).fold(0.0, f64::max);
+    let pa = dynamic_pressure(density, v) + 0.5 * density * (sd / KMH_PER_M_S).powi(2);
+    Some(DynamicPressure { pa, measured: None })
+}
+
+/// Standard error of the mean of p − Cp q within a pass, Pa: gusts cancel in it (ratio estimator, Cochran, Sampling Techniques, chapter 6).
+fn residual_se(group: &[&Segment], channel: &str, q: Option<&str>, cp: f64) -> Option<f64> {
+    let mut residuals = Vec::new();
+    for segment in group {
+        let p = &segment.channels.get(channel)?.bins;
+        let q = q.map(|q| segment.channels.get(q).map(|s| &s.bins)).and_then(|x| x);
+        for (i, p) in p.iter().enumerate() {
+            let q = q.map_or(Some(0.0), |q| q.get(i).copied().flatten());
+            if let (Some(p), Some(q)) = (p, q) {
+                residuals.push(p - cp * q);
+            }
+        }
+    }
+    standard_error(&residuals)
+}
