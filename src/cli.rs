@@ -249,7 +249,7 @@ fn rehearse(words: &Rehearse) -> Outcome {
         eprintln!("{SAFETY}\n");
     }
     let pace = words.run.fast.unwrap_or(Pace::Times(1.0));
-    let feed = Feed::Van(simulate::Outing::new(words.seed), pace);
+    let feed = Feed::Van(Box::new(simulate::Outing::new(words.seed)), pace);
     ended(outing::run(&setup, feed, &words.run.plan("rehearsal", true)))
 }
 

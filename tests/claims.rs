@@ -1,4 +1,5 @@
 //! The one test binary: each module guards a promise that stands at its head.
 
+mod samples_and_readme;
 mod screens;
 mod simulate_van;

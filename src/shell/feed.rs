@@ -41,7 +41,7 @@ pub enum Feed {
     /// A record.
     Record(Box<Source>, Pace),
     /// The simulated van.
-    Van(simulate::Outing, Pace),
+    Van(Box<simulate::Outing>, Pace),
 }
 
 /// A source that is running.
@@ -62,7 +62,7 @@ impl Feed {
         match self {
             Self::Ports(readers) => ports(readers),
             Self::Record(source, pace) => record(source, pace),
-            Self::Van(outing, pace) => van(outing, pace, rig.clone()),
+            Self::Van(outing, pace) => van(*outing, pace, rig.clone()),
         }
     }
 }

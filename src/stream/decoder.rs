@@ -211,8 +211,10 @@ fn columns(line: &[u8], values: &mut [Option<f64>]) -> Result<(), Reject> {
     }
     for (i, value) in values.iter_mut().enumerate() {
         if i > 0 {
-            at = separator(line, at).ok_or_else(|| {
-                if at >= line.len() { Reject::FieldCount { have: i, need } } else { Reject::NotANumber { field: i } }
+            at = separator(line, at).ok_or(if at >= line.len() {
+                Reject::FieldCount { have: i, need }
+            } else {
+                Reject::NotANumber { field: i }
             })?;
         }
         let (number, used) = number::leading(&line[at..]).ok_or(Reject::NotANumber { field: i + 1 })?;
