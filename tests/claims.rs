@@ -1,5 +1,7 @@
 //! The one test binary: each module guards a promise that stands at its head.
 
+mod outside;
 mod samples_and_readme;
 mod screens;
 mod simulate_van;
+mod torn_session;

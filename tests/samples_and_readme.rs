@@ -56,6 +56,11 @@ fn drive(scenario: Scenario) -> (Vec<u8>, Vec<u8>) {
     (read(&path.with_extension("record")), read(&path))
 }
 
+/// The session of the short outing.
+pub fn driven_session() -> Vec<u8> {
+    drive(short()).1
+}
+
 fn short() -> Scenario {
     Scenario { seed: 1, short: true, faults: Vec::new() }
 }

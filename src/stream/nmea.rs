@@ -48,7 +48,7 @@ pub struct Vtg {
     pub measured: bool,
     /// Course over ground, degrees true.
     pub track_deg: Option<f64>,
-    /// Speed over ground, km/h: from the knots field, which carries more digits, else the km/h field.
+    /// Speed over ground, km/h: from the km/h field, whose last digit is the finer one, else from knots.
     pub speed_kmh: Option<f64>,
 }
 
@@ -199,7 +199,7 @@ fn vtg(mut f: Fields<'_>) -> Result<Vtg, Reject> {
     let kmh = f.number()?;
     f.next(); // K
     let measured = measured(f.next());
-    Ok(Vtg { measured, track_deg, speed_kmh: knots.map(|k| k * KMH_PER_KNOT).or(kmh) })
+    Ok(Vtg { measured, track_deg, speed_kmh: kmh.or(knots.map(|k| k * KMH_PER_KNOT)) })
 }
 
 fn gga(mut f: Fields<'_>) -> Result<Gga, Reject> {
