@@ -13,13 +13,6 @@ use crate::simulate;
 use clap::{Args, Parser, Subcommand};
 use std::path::{Path, PathBuf};
 
-/// Shown at first start, in the README and before a drive alone.
-pub const SAFETY: &str = "\
-The driver drives and touches nothing; the passenger works the laptop. Alone: start and stop it only when parked.
-Obey the law and the conditions of the road. Secure laptop, hoses and mast: nothing may come loose, hide the view
-or lie in an airbag's way; keep hoses off hot and moving parts. The figures are test results, not approval of a
-part: strength, road legality and handling are for licensed people and local rules.";
-
 /// Tells, before you drive home, whether a body change moved the air pressures, by how much, and how sure you may be.
 #[derive(Parser, Debug)]
 #[command(
@@ -245,9 +238,6 @@ fn rehearse(words: &Rehearse) -> Outcome {
         Ok(setup) => setup,
         Err(problems) => return Outcome::Problems(files::troubles(&problems)),
     };
-    if !words.run.unattended {
-        eprintln!("{SAFETY}\n");
-    }
     let pace = words.run.fast.unwrap_or(Pace::Times(1.0));
     let feed = Feed::Van(Box::new(simulate::Outing::new(words.seed)), pace);
     ended(outing::run(&setup, feed, &words.run.plan("rehearsal", true)))

@@ -23,6 +23,18 @@ use crate::units::StreamTime;
 use canvas::Canvas;
 use ratatui::buffer::Buffer;
 
+/// The cautions: shown at the first start, in the README, and before a drive alone.
+pub const SAFETY: [&str; 8] = [
+    "The driver drives and touches nothing; the passenger works the laptop.",
+    "Alone: start and stop it only when parked.",
+    "Obey the law and the conditions of the road.",
+    "Secure laptop, hoses and mast: nothing may come loose, hide the view or lie",
+    "in an airbag's way; keep hoses off hot and moving parts.",
+    "The figures are test results, not approval of a part: strength, road",
+    "legality and handling are for licensed people and local rules.",
+    "",
+];
+
 /// State of the interface itself, which no record holds: what is open, how it is drawn.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct Face {
@@ -44,6 +56,8 @@ pub enum Overlay {
     /// Nothing.
     #[default]
     None,
+    /// The cautions, at the first start; any key closes them, and acts.
+    Safety,
     /// The key table.
     Help,
     /// "Leave?"

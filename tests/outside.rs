@@ -126,10 +126,14 @@ fn of_pitot(id: &str, i: &Value) -> Value {
 
 /// The NumAcc sets by their rules.
 fn num_acc(id: &str) -> Vec<f64> {
-    let pairs = |base: f64| std::iter::once(base + 0.2).chain((0..1000).map(move |i| base + if i % 2 == 0 { 0.1 } else { 0.3 })).collect();
+    let pairs = |base: f64| {
+        std::iter::once(base + 0.2).chain((0..1000).map(move |i| base + if i % 2 == 0 { 0.1 } else { 0.3 })).collect()
+    };
     match id {
         "seg-nist-numacc1" => vec![10_000_001.0, 10_000_003.0, 10_000_002.0],
-        "seg-nist-numacc2" => std::iter::once(1.2).chain((0..1000).map(|i| if i % 2 == 0 { 1.1 } else { 1.3 })).collect(),
+        "seg-nist-numacc2" => {
+            std::iter::once(1.2).chain((0..1000).map(|i| if i % 2 == 0 { 1.1 } else { 1.3 })).collect()
+        }
         "seg-nist-numacc3" => pairs(1_000_000.0),
         _ => pairs(10_000_000.0),
     }
@@ -150,7 +154,16 @@ fn of_segment(id: &str, i: &Value) -> Value {
 
 fn of_zero(i: &Value) -> Value {
     let zero = |id, t: f64, value: f64, u: f64| {
-        let statistics = ChannelStatistics { n: 100, mean: value, sd: None, min: value, max: value, se: Some(u), slope: None, bins: vec![] };
+        let statistics = ChannelStatistics {
+            n: 100,
+            mean: value,
+            sd: None,
+            min: value,
+            max: value,
+            se: Some(u),
+            slope: None,
+            bins: vec![],
+        };
         let t = StreamTime::from_micros(micros(t));
         Entry::Zero(Zero { id, t0: t, t1: t, bin_s: 0.3, channels: BTreeMap::from([("p".to_string(), statistics)]) })
     };
@@ -238,7 +251,8 @@ fn of_model(i: &Value) -> Value {
 }
 
 fn of_wind(i: &Value) -> Value {
-    let found = pair([number(i, "Vg1"), number(i, "Vg2")], [number(i, "Va1"), number(i, "Va2")]).expect("airspeeds are positive");
+    let found = pair([number(i, "Vg1"), number(i, "Vg2")], [number(i, "Va1"), number(i, "Va2")])
+        .expect("airspeeds are positive");
     json!({"k": found.k, "headwind_on_run1": found.head_wind})
 }
 
@@ -267,7 +281,9 @@ fn of_calibration(id: &str, i: &Value) -> Value {
         }
         "cal-ratiometric-trap" => {
             let (actual, assumed) = (number(i, "Vs_actual"), number(i, "Vs_assumed"));
-            let p = numbers(i, "p_true_Pa").into_iter().map(|p| ratiometric(assumed).scale(actual * (0.2 * p / 1000.0 + 0.5)).0);
+            let p = numbers(i, "p_true_Pa")
+                .into_iter()
+                .map(|p| ratiometric(assumed).scale(actual * (0.2 * p / 1000.0 + 0.5)).0);
             json!({"p_reported_Pa": p.collect::<Vec<_>>()})
         }
         "cal-counts" => {
@@ -325,8 +341,15 @@ fn of_nmea(id: &str, i: &Value) -> Value {
 type Tolerance = (f64, f64);
 
 /// Compares every field that we answer; numbers compared and what differs.
-fn compare(got: &Value, want: &Value, (tolerance, fields): (Tolerance, &Value), path: &str, wrong: &mut Vec<String>) -> usize {
-    let here = fields.get(path.rsplit('.').next().unwrap_or("")).map_or(tolerance, |t| (number(t, "rel"), number(t, "abs")));
+fn compare(
+    got: &Value,
+    want: &Value,
+    (tolerance, fields): (Tolerance, &Value),
+    path: &str,
+    wrong: &mut Vec<String>,
+) -> usize {
+    let here =
+        fields.get(path.rsplit('.').next().unwrap_or("")).map_or(tolerance, |t| (number(t, "rel"), number(t, "abs")));
     match (got, want) {
         (Value::Object(got), Value::Object(want)) => got
             .iter()

@@ -275,27 +275,33 @@ fn taps(top: &Table<'_, '_>, rig: Option<&Rig>, car: Option<&Car>) -> Option<BTr
         return None;
     };
     let entries = table.entries();
-    let (Some(rig), Some(car)) = (rig, car) else { return Some(BTreeMap::new()) };
     unique(top.problems, "the tap", entries.iter().map(|(_, tap)| tap));
     let mut taps = BTreeMap::new();
     for (channel, tap) in entries {
-        match rig.channels.iter().find(|c| c.name == channel.value) {
-            None => {
-                let pressures = rig.channels.iter().filter(|c| c.quantity == Quantity::Pressure);
-                let hint = nearest(&channel.value, pressures.map(|c| c.name.as_str()));
-                top.problems.error(&channel.span, format!("the rig has no channel `{}`", shown(&channel.value)), hint);
-            }
-            Some(c) if c.quantity != Quantity::Pressure => {
-                let what = format!("channel `{}` measures {}, it cannot sit on a tap", c.name, c.quantity.word());
-                top.problems.error(&channel.span, what, "only pressure channels do");
-            }
-            Some(_) => {}
+        if let Some(rig) = rig {
+            known_channel(top, rig, &channel);
         }
-        if !car.taps.iter().any(|t| t.name == tap.value) {
+        if let Some(car) = car.filter(|car| !car.taps.iter().any(|t| t.name == tap.value)) {
             let hint = nearest(&tap.value, car.taps.iter().map(|t| t.name.as_str()));
             top.problems.error(&tap.span, format!("the car has no tap `{}`", shown(&tap.value)), hint);
         }
         taps.insert(channel.value, tap.value);
     }
     Some(taps)
+}
+
+/// Only a pressure channel of the rig can sit on a tap.
+fn known_channel(top: &Table<'_, '_>, rig: &Rig, channel: &Item<String>) {
+    match rig.channels.iter().find(|c| c.name == channel.value) {
+        None => {
+            let pressures = rig.channels.iter().filter(|c| c.quantity == Quantity::Pressure);
+            let hint = nearest(&channel.value, pressures.map(|c| c.name.as_str()));
+            top.problems.error(&channel.span, format!("the rig has no channel `{}`", shown(&channel.value)), hint);
+        }
+        Some(c) if c.quantity != Quantity::Pressure => {
+            let what = format!("channel `{}` measures {}, it cannot sit on a tap", c.name, c.quantity.word());
+            top.problems.error(&channel.span, what, "only pressure channels do");
+        }
+        Some(_) => {}
+    }
 }

@@ -271,6 +271,7 @@ pub(super) fn draw_small(view: &View, face: &Face, canvas: &mut Canvas) {
     let Look { word, role, .. } = look(view);
     let asks = match &face.overlay {
         Overlay::None => None,
+        Overlay::Safety => Some("drive safely: any key".to_string()),
         Overlay::Help => Some("help is open: Esc".to_string()),
         Overlay::Quit => Some("leave? Enter or Esc".to_string()),
         Overlay::Void(id) => Some(format!("void {id}? Enter or Esc")),

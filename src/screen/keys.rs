@@ -136,7 +136,7 @@ pub(super) fn help_rows() -> impl Iterator<Item = &'static KeyRow> {
 /// The place that the face is in.
 pub fn place(face: &Face) -> Place {
     match face.overlay {
-        Overlay::None => Place::Drive,
+        Overlay::None | Overlay::Safety => Place::Drive,
         Overlay::Help => Place::Help,
         Overlay::Quit => Place::Quit,
         Overlay::Void(_) => Place::Void,

@@ -6,13 +6,14 @@ use super::canvas::Canvas;
 use super::keys::{Place, at_stake, help_rows, keys_of};
 use super::text::{safe, width};
 use super::theme::Role;
-use super::{Face, Overlay, Prompt, PromptKind, View};
+use super::{Face, Overlay, Prompt, PromptKind, SAFETY, View};
 use ratatui::layout::Rect;
 
 /// Draws the overlay that is open.
 pub(super) fn draw(view: &View, face: &Face, canvas: &mut Canvas) {
     match &face.overlay {
         Overlay::None => {}
+        Overlay::Safety => draw_safety(canvas),
         Overlay::Help => draw_help(canvas),
         Overlay::Quit => draw_quit(view, canvas),
         Overlay::Void(id) => draw_void(*id, canvas),
@@ -43,6 +44,14 @@ fn panel(canvas: &mut Canvas, (columns, rows): (u16, u16), title: &str) -> Rect 
     }
     canvas.text((outer.x + 2, outer.y), outer.width - 4, &format!(" {title} "), Role::Strong);
     Rect::new(outer.x + 2, outer.y + 1, outer.width - 4, outer.height - 2)
+}
+
+fn draw_safety(canvas: &mut Canvas) {
+    let rows = u16::try_from(SAFETY.len() + 1).unwrap_or(u16::MAX);
+    let inside = panel(canvas, (80, rows), "Before you drive");
+    for (y, line) in (inside.top()..inside.bottom()).zip(SAFETY.into_iter().chain(["any key goes on"])) {
+        canvas.text((inside.x, y), inside.width, line, Role::Base);
+    }
 }
 
 /// The key table; where the screen is low it covers the line of keys too.

@@ -84,7 +84,8 @@ fn lines_at(device: &str, baud: u32) -> Result<(Vec<Vec<u8>>, f64), Trouble> {
         columns: Vec::new(),
         dtr: true,
     };
-    let mut open = serial::open(0, &port)?.into_port();
+    let opened = serial::open(0, &port).map_err(|trouble| trouble.at(device));
+    let mut open = opened?.into_port();
     let (mut splitter, mut lines, mut buffer) = (Splitter::default(), Vec::new(), vec![0; 4096]);
     splitter.skip_to_line_end();
     let start = Instant::now();

@@ -1,7 +1,7 @@
 //! The terminal: entered once, always given back, whatever breaks.
 
 use super::Trouble;
-use crate::screen::{Face, Theme, View, render};
+use crate::screen::{Face, Overlay, Theme, View, render};
 use crossterm::event::{DisableBracketedPaste, EnableBracketedPaste};
 use crossterm::terminal::{
     BeginSynchronizedUpdate, EndSynchronizedUpdate, EnterAlternateScreen, LeaveAlternateScreen, disable_raw_mode,
@@ -79,7 +79,19 @@ pub fn face() -> Face {
     let dumb = std::env::var("TERM").is_ok_and(|t| t == "dumb");
     let no_colour = dumb || std::env::var("NO_COLOR").is_ok_and(|v| !v.is_empty());
     let theme = if no_colour { Theme::NoColour } else { Theme::default() };
-    Face { theme, plain: plain_locale || dumb, ..Face::default() }
+    let overlay = if first_start() { Overlay::Safety } else { Overlay::None };
+    Face { theme, plain: plain_locale || dumb, overlay, ..Face::default() }
+}
+
+/// Nobody has seen the cautions yet; from now on somebody has.
+fn first_start() -> bool {
+    let Some(directory) = super::files::data_directory() else { return true };
+    let seen = directory.join("cautions-seen");
+    let first = !seen.exists();
+    if first {
+        let _ = std::fs::create_dir_all(&directory).and_then(|()| std::fs::write(&seen, ""));
+    }
+    first
 }
 
 impl Screen {
