@@ -73,6 +73,9 @@ pub struct UsbId {
     pub serial: Option<String>,
 }
 
+/// The fields of an NMEA port that a channel may name: km/h, degrees, degrees, degrees, m, quality.
+pub const NMEA_FIELDS: [&str; 6] = ["speed", "track", "lat", "lon", "altitude", "fix"];
+
 /// How the lines of a port read.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 #[serde(rename_all = "lowercase")]

@@ -16,16 +16,16 @@
 //! | --- | --- | --- | --- |
 //! | 0 | [`units`] | text, trade units | stream time, SI and km/h |
 //! | 1 | [`config`] | rig, car and outing files | a checked [`config::Setup`] |
-//! | 2 | [`stream`] | bytes, record lines | frames, rejected lines, commands |
-//! | 3 | [`signal`] | frames | scaled, lag-shifted samples; what the eye sees |
-//! | 4 | [`hold`] | samples | off, settling, steady, held; full dwells |
-//! | 5 | [`session`] | entries | checksummed lines, and back, damage told |
+//! | 2 | [`session`] | entries, plain data | checksummed lines, and back, damage told |
+//! | 3 | [`stream`] | bytes, record lines | frames, rejected lines, commands |
+//! | 4 | [`signal`] | frames | scaled, lag-shifted samples; what the eye sees |
+//! | 5 | [`hold`] | samples | off, settling, steady, held; full dwells |
 //! | 6 | [`reduction`] | sessions | coefficients, comparisons, verdicts |
 //! | 7 | [`report`] | a reduction | text, CSV, JSON |
 //! | 8 | [`pipeline`] | inputs, one at a time | events and session entries: live, replay, re-hold |
-//! | – | [`screen`] | a pipeline | a drawn frame (observer) |
-//! | – | [`simulate`] | a seed | the bytes the ports of an invented van would send |
-//! | 9 | [`shell`] | the world: ports, files, clock, terminal | inputs for the pipeline; the only I/O |
+//! | 9 | [`screen`] | a pipeline | a drawn frame (observer) |
+//! | 9 | [`simulate`] | a seed | the bytes the ports of an invented van would send |
+//! | 10 | [`shell`] | the world: ports, files, clock, terminal | inputs for the pipeline; the only I/O |
 //! | 10 | [`cli`] | words | a command and its exit status |
 //!
 //! Nothing below the shell reads a clock, a file, an environment variable or a random source: the same

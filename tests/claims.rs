@@ -1,5 +1,7 @@
 //! The one test binary: each module guards a promise that stands at its head.
 
+mod holds;
+mod layers;
 mod outside;
 mod samples_and_readme;
 mod screens;

@@ -2,8 +2,7 @@
 
 use super::problem::{Kind, Source};
 use super::reader::{Item, Problems, Table, nearest, shown, unique};
-use super::{Channel, Convert, LineFormat, Port, Rig, UsbId};
-use crate::stream::decoder::NMEA_FIELDS;
+use super::{Channel, Convert, LineFormat, NMEA_FIELDS, Port, Rig, UsbId};
 use crate::units::{Quantity, Unit};
 
 /// Longest lag of a channel, s.

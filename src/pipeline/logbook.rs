@@ -302,7 +302,7 @@ impl Logbook {
                 Ok(())
             }
             Command::SpanBegin => self.span_begin(at, out),
-            Command::SpanEnd => self.span_end(at),
+            Command::SpanEnd => self.span_end(at, out),
             Command::Void(id) => self.void(at, id, out),
             Command::Zero => self.take_zero(at, out),
             Command::Configuration(letter) => self.fit(at, letter, out),
@@ -565,9 +565,10 @@ impl Logbook {
         Ok(())
     }
 
-    fn span_end(&mut self, at: StreamTime) -> Result<(), Refusal> {
+    fn span_end(&mut self, at: StreamTime, out: &mut Vec<Event>) -> Result<(), Refusal> {
         let span = self.span.as_mut().filter(|s| s.end == StreamTime::NEVER).ok_or(Refusal::NoSpan)?;
         span.end = at;
+        self.advance(at, out);
         Ok(())
     }
 

@@ -5,12 +5,10 @@
 
 use super::nmea::{self, Sentence};
 use super::number;
-use crate::config::{LineFormat, Port, Rig};
+use crate::config::{LineFormat, NMEA_FIELDS, Port, Rig};
 use crate::units::KMH_PER_M_S;
 use std::fmt;
 
-/// The fields of an NMEA port that a channel may name.
-pub const NMEA_FIELDS: [&str; 6] = ["speed", "track", "lat", "lon", "altitude", "fix"];
 /// Below this speed (km/h) a GPS course is noise and is dropped (common practice, no source).
 pub const SLOWEST_TRACK_KMH: f64 = KMH_PER_M_S;
 
