@@ -25,7 +25,16 @@ struct Rule {
 
 impl Default for Rule {
     fn default() -> Self {
-        Self { targets: vec![100.0], tolerance: 2.0, settle: 2.0, dwell: 4.0, slope: None, speed_stale: 2.5, speed_lag: 0.0, p_lag: 0.0 }
+        Self {
+            targets: vec![100.0],
+            tolerance: 2.0,
+            settle: 2.0,
+            dwell: 4.0,
+            slope: None,
+            speed_stale: 2.5,
+            speed_lag: 0.0,
+            p_lag: 0.0,
+        }
     }
 }
 
@@ -148,11 +157,20 @@ fn words(event: &Event) -> Option<String> {
         What::Entry(entry) => match &**entry {
             Entry::Segment(s) => {
                 let flags = if s.flags.is_empty() { String::new() } else { format!(" [{}]", s.flags.join(" ")) };
-                format!("kept {} {} {} {} to {}{flags}", s.id, s.configuration, s.direction.word(), seconds(s.t0), seconds(s.t1))
+                format!(
+                    "kept {} {} {} {} to {}{flags}",
+                    s.id,
+                    s.configuration,
+                    s.direction.word(),
+                    seconds(s.t0),
+                    seconds(s.t1)
+                )
             }
             Entry::Rejected(r) => format!("rejected {}", r.why.join(" ")),
             Entry::Void(v) => format!("void {}", v.segment),
-            Entry::Zero(z) => format!("zero {}: {} to {}, p n {}", z.id, seconds(z.t0), seconds(z.t1), z.channels["p"].n),
+            Entry::Zero(z) => {
+                format!("zero {}: {} to {}, p n {}", z.id, seconds(z.t0), seconds(z.t1), z.channels["p"].n)
+            }
             Entry::End(_) => return None,
             Entry::Configuration(c) => format!("configuration {}", c.to),
             Entry::Direction(d) => format!("direction {}", d.to),
@@ -169,7 +187,8 @@ fn every_scenario_goes_as_the_rule_says() {
     let directory = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/holds");
     let mut wrong = Vec::new();
     let mut count = 0;
-    let mut files: Vec<_> = std::fs::read_dir(directory).expect("the scenarios").map(|f| f.expect("a file").path()).collect();
+    let mut files: Vec<_> =
+        std::fs::read_dir(directory).expect("the scenarios").map(|f| f.expect("a file").path()).collect();
     files.sort();
     for path in files {
         let text = std::fs::read_to_string(&path).expect("a scenario file");
@@ -204,7 +223,10 @@ fn by_the_words(rule: &Rule, speed: &[(i64, f64)], p: &[(i64, f64)]) -> Vec<(i64
         };
         let t0 = speed[i].0;
         let mut last = i;
-        while last + 1 < speed.len() && target_of(speed[last + 1].1) == Some(target) && speed[last + 1].0 - speed[last].0 <= stale {
+        while last + 1 < speed.len()
+            && target_of(speed[last + 1].1) == Some(target)
+            && speed[last + 1].0 - speed[last].0 <= stale
+        {
             last += 1;
         }
         for k in 0.. {
