@@ -297,6 +297,10 @@ fn correct(passes: &mut [Pass], setup: &Setup, k: f64) {
         for tap in pass.taps.values_mut() {
             tap.cp = tap.cp.map(|cp| probe::corrected_cp(cp, k, model));
         }
+        // From here on q is the free stream's.
+        if let Some(q) = &mut pass.q {
+            q.pa *= k * k;
+        }
     }
 }
 

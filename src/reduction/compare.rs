@@ -7,7 +7,7 @@
 use super::inference::{ALPHA, POWER, effective_dof, holm, passes_for, t_quantile, t_two_sided_p};
 use super::model::{self, Fit};
 use super::passes::Pass;
-use super::zeros::Zeros;
+use super::zeros::{Correction, Zeros};
 use crate::session::Direction;
 use nalgebra::{DMatrix, DVector};
 use std::collections::{BTreeMap, BTreeSet};
@@ -117,7 +117,7 @@ pub struct Compared {
 }
 
 /// What is compared.
-#[derive(Clone, Copy)]
+#[derive(Clone, Copy, Debug)]
 pub struct Question<'a> {
     /// Letters in the order of the outing.
     pub configurations: &'a [String],
@@ -127,14 +127,47 @@ pub struct Question<'a> {
     pub resolve_cp: f64,
 }
 
+/// One pass's value of something linear in its Cps, and how the zeros enter it.
+#[derive(Clone, Debug)]
+pub struct Observation<'a> {
+    /// The pass.
+    pub pass: &'a Pass,
+    /// The value.
+    pub y: f64,
+    /// (channel, its zero correction, change of the value for one Pa more of that zero).
+    effects: Vec<(&'a str, &'a Correction, f64)>,
+}
+
+impl<'a> Observation<'a> {
+    /// Σ weight · Cp over taps; none where one of them has no Cp.
+    pub fn weighted(pass: &'a Pass, weights: &[(&str, f64)]) -> Option<Self> {
+        let q = pass.q.as_ref()?;
+        let mut y = 0.0;
+        let mut effects = Vec::new();
+        for (tap, weight) in weights {
+            let mean = pass.taps.get(*tap)?;
+            y += weight * mean.cp?;
+            effects.extend(mean.zero.as_ref().map(|zero| (mean.channel.as_str(), zero, -weight / q.pa)));
+        }
+        if let Some((channel, Some(zero))) = &q.measured {
+            effects.push((channel, zero, y / q.pa));
+        }
+        y.is_finite().then_some(Self { pass, y, effects })
+    }
+
+    /// A value that no zero enters.
+    pub fn plain(pass: &'a Pass, y: f64) -> Option<Self> {
+        y.is_finite().then_some(Self { pass, y, effects: Vec::new() })
+    }
+}
+
 /// Compares every tap of the passes of one target.
 pub fn compare(passes: &[&Pass], zeros: &[Zeros<'_>], taps: &[String], question: Question<'_>) -> Compared {
     let mut all = Compared::default();
     for tap in taps {
-        let seen: Vec<&Pass> =
-            passes.iter().copied().filter(|p| p.taps.get(tap).is_some_and(|t| t.cp.is_some())).collect();
-        if !seen.is_empty() {
-            Model::new(&seen, tap, question).compare(zeros, &mut all);
+        let seen: Vec<Observation<'_>> = passes.iter().filter_map(|p| Observation::weighted(p, &[(tap, 1.0)])).collect();
+        if let Some(model) = Model::new(seen, question) {
+            model.compare(tap, zeros, &mut all);
         }
     }
     judge(&mut all.comparisons, question.resolve_cp);
@@ -172,41 +205,41 @@ fn more_passes(c: &Comparison, resolve_cp: f64, family: usize) -> Option<u32> {
     Some(needed.saturating_sub(driven).max(1))
 }
 
-/// One tap's observations and design.
-struct Model<'a> {
-    passes: &'a [&'a Pass],
-    tap: &'a str,
+/// Observations of one quantity over all passes, and the model fitted to them.
+pub struct Model<'a> {
+    observations: Vec<Observation<'a>>,
     question: Question<'a>,
     /// Letters with a pass, in the order of the outing.
     present: Vec<&'a str>,
     design: DMatrix<f64>,
     weaknesses: BTreeSet<Weakness>,
+    fit: Fit,
 }
 
-impl<'a> Model<'a> {
-    fn new(passes: &'a [&'a Pass], tap: &'a str, question: Question<'a>) -> Self {
-        let present: Vec<&str> = question
-            .configurations
-            .iter()
-            .map(String::as_str)
-            .filter(|letter| passes.iter().any(|p| p.configuration == *letter))
-            .collect();
-        let levels = DMatrix::from_fn(passes.len(), present.len(), |i, j| {
-            f64::from(u8::from(passes[i].configuration == present[j]))
-        });
-        let mut model = Self { passes, tap, question, present, design: levels, weaknesses: BTreeSet::new() };
-        model.add_sessions();
-        model.add_heading();
-        model.add_drift();
-        model
-    }
+/// A configuration's level, or its difference from the baseline.
+#[derive(Clone, Debug)]
+pub struct Outcome<'a> {
+    /// The configuration.
+    pub configuration: &'a str,
+    /// Its passes; for a difference the baseline's first.
+    pub passes: [usize; 2],
+    /// The value.
+    pub estimate: Estimate,
+}
 
+/// Columns of a design as it grows.
+struct Columns<'o, 'a> {
+    observations: &'o [Observation<'a>],
+    design: DMatrix<f64>,
+}
+
+impl Columns<'_, '_> {
     /// Adds a nuisance column if it can be told from the others and leaves degrees of freedom; says whether it did.
     fn add(&mut self, column: &[f64]) -> bool {
         let columns = self.design.ncols();
         let mut wider = self.design.clone().insert_column(columns, 0.0);
         wider.set_column(columns, &DVector::from_column_slice(column));
-        let good = self.passes.len() >= columns + 1 + DOF_TO_LEAVE && model::rank(&wider) == columns + 1;
+        let good = self.observations.len() > columns + DOF_TO_LEAVE && model::rank(&wider) == columns + 1;
         if good {
             self.design = wider;
         }
@@ -214,128 +247,163 @@ impl<'a> Model<'a> {
     }
 
     fn sessions(&self) -> BTreeSet<usize> {
-        self.passes.iter().map(|p| p.session).collect()
+        self.observations.iter().map(|o| o.pass.session).collect()
     }
 
     /// Each further session has an offset of its own, centred so that levels stay levels.
     fn add_sessions(&mut self) {
         for session in self.sessions().into_iter().skip(1) {
-            let n = self.passes.iter().filter(|p| p.session == session).count() as f64;
-            let share = n / self.passes.len() as f64;
-            let column: Vec<f64> =
-                self.passes.iter().map(|p| f64::from(u8::from(p.session == session)) - share).collect();
+            let n = self.observations.iter().filter(|o| o.pass.session == session).count() as f64;
+            let share = n / self.observations.len() as f64;
+            let of = |o: &Observation<'_>| f64::from(u8::from(o.pass.session == session)) - share;
+            let column: Vec<f64> = self.observations.iter().map(of).collect();
             self.add(&column);
         }
     }
 
-    fn add_heading(&mut self) {
-        let driven =
-            |letter: &str, way: Direction| self.passes.iter().any(|p| p.configuration == letter && p.direction == way);
-        let both: Vec<bool> =
-            self.present.iter().map(|c| driven(c, Direction::Out) && driven(c, Direction::Back)).collect();
+    /// Where every configuration was driven both ways; else the ones that were not, if others were.
+    fn add_heading(&mut self, present: &[&str]) -> Vec<Weakness> {
+        let driven = |letter: &str, way: Direction| {
+            self.observations.iter().any(|o| o.pass.configuration == letter && o.pass.direction == way)
+        };
+        let both: Vec<bool> = present.iter().map(|c| driven(c, Direction::Out) && driven(c, Direction::Back)).collect();
         if both.iter().all(|b| *b) {
-            let column: Vec<f64> = self
-                .passes
-                .iter()
-                .map(|p| match p.direction {
-                    Direction::Out => 0.5,
-                    Direction::Back => -0.5,
-                    Direction::Other => 0.0,
-                })
-                .collect();
+            let half = |o: &Observation<'_>| match o.pass.direction {
+                Direction::Out => 0.5,
+                Direction::Back => -0.5,
+                Direction::Other => 0.0,
+            };
+            let column: Vec<f64> = self.observations.iter().map(half).collect();
             self.add(&column);
-        } else if both.iter().any(|b| *b) {
-            let one_way = self.present.iter().zip(&both).filter(|(_, both)| !**both);
-            self.weaknesses.extend(one_way.map(|(c, _)| Weakness::OneWay((*c).to_string())));
+            return Vec::new();
         }
+        let mixed = both.iter().any(|b| *b);
+        let one_way = present.iter().zip(&both).filter(|(_, both)| mixed && !**both);
+        one_way.map(|(c, _)| Weakness::OneWay((*c).to_string())).collect()
     }
 
-    /// A drift for each session in which the baseline was driven both before and after something else.
-    fn add_drift(&mut self) {
+    /// A drift for each session in which the baseline was driven both before and after something else; says whether any could be told.
+    fn add_drift(&mut self, baseline: &str) -> bool {
         let mut told = false;
         for session in self.sessions() {
-            let within: Vec<&&Pass> = self.passes.iter().filter(|p| p.session == session).collect();
-            let base = |p: &&&Pass| p.configuration == self.question.baseline;
-            let blocks = within.iter().position(&base).zip(within.iter().rposition(&base));
-            let between = blocks.is_some_and(|(first, last)| !within[first..last].iter().all(base));
-            if !between {
+            let within: Vec<&Pass> = self.observations.iter().map(|o| o.pass).filter(|p| p.session == session).collect();
+            let base = |p: &&Pass| p.configuration == baseline;
+            let blocks = within.iter().position(base).zip(within.iter().rposition(base));
+            if blocks.is_none_or(|(first, last)| within[first..last].iter().all(base)) {
                 continue;
             }
             let mean = within.iter().map(|p| p.t_s).sum::<f64>() / within.len() as f64;
-            let column: Vec<f64> =
-                self.passes.iter().map(|p| if p.session == session { (p.t_s - mean) / 3600.0 } else { 0.0 }).collect();
+            let of = |o: &Observation<'_>| if o.pass.session == session { (o.pass.t_s - mean) / 3600.0 } else { 0.0 };
+            let column: Vec<f64> = self.observations.iter().map(of).collect();
             told |= self.add(&column);
         }
-        if !told && self.present.len() > 1 {
-            self.weaknesses.insert(Weakness::BaselineOnce);
-        }
+        told
     }
+}
 
-    fn compare(mut self, zeros: &[Zeros<'_>], all: &mut Compared) {
-        let y: Vec<f64> = self.passes.iter().filter_map(|p| p.taps[self.tap].cp).collect();
-        let Some(fit) = model::fit(&self.design, &DVector::from_vec(y)) else { return };
+impl<'a> Model<'a> {
+    /// Fits configurations and what may be told of heading, sessions and drift; none without an observation.
+    pub fn new(observations: Vec<Observation<'a>>, question: Question<'a>) -> Option<Self> {
+        let with_pass = |letter: &&str| observations.iter().any(|o| o.pass.configuration == *letter);
+        let present: Vec<&str> = question.configurations.iter().map(String::as_str).filter(with_pass).collect();
+        let level = |i: usize, j: usize| f64::from(u8::from(observations[i].pass.configuration == present[j]));
+        let design = DMatrix::from_fn(observations.len(), present.len(), level);
+        let mut columns = Columns { observations: &observations, design };
+        columns.add_sessions();
+        let mut weaknesses: BTreeSet<Weakness> = columns.add_heading(&present).into_iter().collect();
+        if !columns.add_drift(question.baseline) && present.len() > 1 {
+            weaknesses.insert(Weakness::BaselineOnce);
+        }
+        let design = columns.design;
+        let y: Vec<f64> = observations.iter().map(|o| o.y).collect();
+        let fit = model::fit(&design, &DVector::from_vec(y))?;
         if fit.dof == 0 {
-            self.weaknesses.insert(Weakness::NoScatter);
+            weaknesses.insert(Weakness::NoScatter);
         }
-        let count = |letter: &str| self.passes.iter().filter(|p| p.configuration == letter).count();
-        let single: Vec<Weakness> =
-            self.present.iter().filter(|c| count(c) == 1).map(|c| Weakness::OnePass((*c).to_string())).collect();
-        for (j, letter) in self.present.iter().enumerate() {
-            let mut contrast = DVector::zeros(self.design.ncols());
-            contrast[j] = 1.0;
-            all.levels.push(Level {
-                tap: self.tap.to_string(),
-                configuration: (*letter).to_string(),
-                target_kmh: self.passes[0].target_kmh,
-                passes: count(letter),
-                cp: self.estimate(&fit, &contrast, zeros),
-            });
-        }
-        if let Some(base) = self.present.iter().position(|c| *c == self.question.baseline) {
-            for j in (0..self.present.len()).filter(|j| *j != base) {
-                let mut contrast = DVector::zeros(self.design.ncols());
-                (contrast[j], contrast[base]) = (1.0, -1.0);
-                let passes = [count(self.present[base]), count(self.present[j])];
-                all.comparisons.push(self.comparison(&fit, &contrast, zeros, (self.present[j], passes)));
-            }
-        }
-        all.weaknesses.extend(self.weaknesses);
-        all.weaknesses.extend(single);
+        let mut model = Self { observations, question, present, design, weaknesses, fit };
+        let single: Vec<&str> = model.present.iter().copied().filter(|c| model.count(c) == 1).collect();
+        model.weaknesses.extend(single.into_iter().map(|c| Weakness::OnePass(c.to_string())));
+        Some(model)
     }
 
-    fn comparison(
-        &self,
-        fit: &Fit,
-        contrast: &DVector<f64>,
-        zeros: &[Zeros<'_>],
-        (letter, passes): (&str, [usize; 2]),
-    ) -> Comparison {
-        let delta = self.estimate(fit, contrast, zeros);
+    fn count(&self, letter: &str) -> usize {
+        self.observations.iter().filter(|o| o.pass.configuration == letter).count()
+    }
+
+    /// Standard deviation between passes; none without degrees of freedom.
+    pub fn scatter(&self) -> Option<f64> {
+        self.fit.variance.map(f64::sqrt)
+    }
+
+    /// The fit, its design and its observations, for whoever adds columns of his own.
+    pub fn parts(&self) -> (&Fit, &DMatrix<f64>, &[Observation<'a>]) {
+        (&self.fit, &self.design, &self.observations)
+    }
+
+    fn level_contrast(&self, j: usize) -> DVector<f64> {
+        DVector::from_fn(self.design.ncols(), |i, _| f64::from(u8::from(i == j)))
+    }
+
+    /// Every configuration's level.
+    pub fn levels(&self, zeros: &[Zeros<'_>]) -> Vec<Outcome<'a>> {
+        let each = self.present.iter().enumerate().map(|(j, letter)| Outcome {
+            configuration: letter,
+            passes: [self.count(letter); 2],
+            estimate: self.estimate(&self.level_contrast(j), zeros),
+        });
+        each.collect()
+    }
+
+    /// Every configuration's difference from the baseline.
+    pub fn differences(&self, zeros: &[Zeros<'_>]) -> Vec<Outcome<'a>> {
+        let Some(base) = self.present.iter().position(|c| *c == self.question.baseline) else { return Vec::new() };
+        let others = (0..self.present.len()).filter(|j| *j != base);
+        let each = others.map(|j| Outcome {
+            configuration: self.present[j],
+            passes: [self.count(self.present[base]), self.count(self.present[j])],
+            estimate: self.estimate(&(self.level_contrast(j) - self.level_contrast(base)), zeros),
+        });
+        each.collect()
+    }
+
+    fn compare(self, tap: &str, zeros: &[Zeros<'_>], all: &mut Compared) {
+        let target_kmh = self.observations[0].pass.target_kmh;
+        all.levels.extend(self.levels(zeros).into_iter().map(|o| Level {
+            tap: tap.to_string(),
+            configuration: o.configuration.to_string(),
+            target_kmh,
+            passes: o.passes[0],
+            cp: o.estimate,
+        }));
+        all.comparisons.extend(self.differences(zeros).into_iter().map(|o| self.comparison(tap, &o)));
+        all.weaknesses.extend(self.weaknesses);
+    }
+
+    fn comparison(&self, tap: &str, outcome: &Outcome<'_>) -> Comparison {
+        let delta = outcome.estimate;
         let known = delta.u.zip(delta.dof).filter(|(u, _)| *u > 0.0);
-        let p = known.and_then(|(u, dof)| t_two_sided_p(delta.value / u, dof));
-        let detectable =
-            known.and_then(|(u, dof)| Some(u * (t_quantile(1.0 - ALPHA / 2.0, dof)? + t_quantile(POWER, dof)?)));
+        let found = |(u, dof): (f64, f64)| Some(u * (t_quantile(1.0 - ALPHA / 2.0, dof)? + t_quantile(POWER, dof)?));
         Comparison {
-            tap: self.tap.to_string(),
-            target_kmh: self.passes[0].target_kmh,
-            configuration: letter.to_string(),
-            passes,
+            tap: tap.to_string(),
+            target_kmh: self.observations[0].pass.target_kmh,
+            configuration: outcome.configuration.to_string(),
+            passes: outcome.passes,
             delta,
-            p,
+            p: known.and_then(|(u, dof)| t_two_sided_p(delta.value / u, dof)),
             p_adjusted: None,
-            scatter: fit.variance.map(f64::sqrt),
-            detectable,
+            scatter: self.scatter(),
+            detectable: known.and_then(found),
             verdict: Verdict::Undecided,
             passes_needed: None,
         }
     }
 
     /// A contrast with the scatter's and the zeros' uncertainty.
-    fn estimate(&self, fit: &Fit, contrast: &DVector<f64>, zeros: &[Zeros<'_>]) -> Estimate {
-        let value = fit.value(contrast);
-        let Some(scatter) = fit.variance_of(contrast) else { return Estimate { value, u: None, dof: None, u95: None } };
-        let common = self.zero_variance(&fit.weights_of(contrast), zeros);
-        let dof = effective_dof(&[(scatter, fit.dof as f64), (common, f64::INFINITY)]);
+    pub fn estimate(&self, contrast: &DVector<f64>, zeros: &[Zeros<'_>]) -> Estimate {
+        let value = self.fit.value(contrast);
+        let Some(scatter) = self.fit.variance_of(contrast) else { return Estimate { value, u: None, dof: None, u95: None } };
+        let common = self.zero_variance(&self.fit.weights_of(contrast), zeros);
+        let dof = effective_dof(&[(scatter, self.fit.dof as f64), (common, f64::INFINITY)]);
         let u = (scatter + common).sqrt();
         let t = dof.and_then(|dof| t_quantile(1.0 - ALPHA / 2.0, dof));
         let u95 = t.map(|t| t * u).filter(|x| x.is_finite());
@@ -345,23 +413,16 @@ impl<'a> Model<'a> {
     /// Variance that the zeros' own errors give a contrast with these weights: every zero counts once, however many passes rest on it.
     fn zero_variance(&self, weights: &DVector<f64>, zeros: &[Zeros<'_>]) -> f64 {
         let mut effects: BTreeMap<(usize, usize, &str), f64> = BTreeMap::new();
-        for (pass, weight) in self.passes.iter().zip(weights.iter()) {
-            let (tap, Some(q)) = (&pass.taps[self.tap], &pass.q) else { continue };
-            let mut add = |channel: &'a str, parts: &[(usize, f64)], effect: f64| {
-                for (zero, share) in parts {
-                    *effects.entry((pass.session, *zero, channel)).or_default() += weight * share * effect;
+        for (o, weight) in self.observations.iter().zip(weights.iter()) {
+            for (channel, correction, effect) in &o.effects {
+                for (zero, share) in &correction.parts {
+                    *effects.entry((o.pass.session, *zero, channel)).or_default() += weight * share * effect;
                 }
-            };
-            if let Some(zero) = &tap.zero {
-                add(&tap.channel, &zero.parts, -1.0 / q.pa);
-            }
-            if let (Some((channel, Some(zero))), Some(cp)) = (&q.measured, tap.cp) {
-                add(channel, &zero.parts, cp / q.pa);
             }
         }
-        effects
-            .iter()
-            .map(|((session, zero, channel), effect)| (effect * zeros[*session].standard_error(*zero, channel)).powi(2))
-            .sum()
+        let each = effects.iter().map(|((session, zero, channel), effect)| {
+            (effect * zeros[*session].standard_error(*zero, channel)).powi(2)
+        });
+        each.sum()
     }
 }
