@@ -5,6 +5,9 @@
 
 pub mod air;
 pub mod compare;
+pub mod contour;
+pub mod cores;
+pub mod force;
 pub mod inference;
 pub mod model;
 pub mod passes;
@@ -14,6 +17,9 @@ pub mod zeros;
 use crate::config::{Air, Configuration, ProbeFactor, Setup};
 use crate::session::{AirSource, Direction, Entry, Session};
 use compare::{Comparison, Level, Question, Weakness};
+use contour::ContourRow;
+use cores::CoreRow;
+use force::{AxleRow, BaseRow, ForceRow, Ground};
 use passes::{LeftOut, Pass};
 use std::collections::BTreeSet;
 use zeros::Zeros;
@@ -85,6 +91,16 @@ pub struct Reduction {
     pub wind: Vec<WindPair>,
     /// Drift of every pressure channel between consecutive zeros.
     pub drift: Vec<Drift>,
+    /// Forces by group and altogether.
+    pub forces: Vec<ForceRow>,
+    /// Axle loads.
+    pub balance: Vec<AxleRow>,
+    /// Base contribution to drag.
+    pub base_drag: Vec<BaseRow>,
+    /// Flow of heat-exchanger cores.
+    pub cores: Vec<CoreRow>,
+    /// Section coefficients of the contour.
+    pub contour: Vec<ContourRow>,
     /// What was left out.
     pub left_out: Vec<LeftOut>,
     /// Cautions, in words.
@@ -159,27 +175,42 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
     let question = Question { configurations: &letters, baseline: &baseline, resolve_cp };
     let (levels, comparisons) = compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
     let drift = drift(&zeros, sessions, resolve_pa);
+    let at_q_pa = probe::dynamic_pressure(air::ISA_DENSITY, at_kmh);
+    let ground = Ground { car: &setup.car, passes: &passes, zeros: &zeros, question };
+    let (cores, words_of_cores) = cores::cores(ground, at_kmh);
+    let (contour, words_of_contour) = contour::contour(ground);
+    flags.extend(words_of_cores);
+    flags.extend(words_of_contour);
+    let forces = force::forces(ground, &levels, at_q_pa);
+    let balance = force::balance(ground, at_q_pa);
+    let base_drag = force::base_drag(ground, at_q_pa, at_kmh);
     let mut reduction = Reduction {
         title: setup.outing.title.clone(),
         car: setup.car.name.clone(),
-        baseline,
-        configurations,
+        baseline: baseline.clone(),
+        configurations: configurations.clone(),
         at_kmh,
-        at_q_pa: probe::dynamic_pressure(air::ISA_DENSITY, at_kmh),
+        at_q_pa,
         resolve: (resolve_pa, resolve_cp),
         wanted: setup.outing.passes,
         air: mean_air(sessions),
         probe_factor,
-        passes,
+        passes: passes.clone(),
         levels,
         comparisons,
         wind,
         drift,
+        forces,
+        balance,
+        base_drag,
+        cores,
+        contour,
         left_out,
         flags,
     };
     let cautions = cautions(&reduction, sessions, &zeros);
     reduction.flags.splice(0..0, cautions);
+    reduction.flags.extend(force::without_area(&setup.car, &reduction));
     Ok(reduction)
 }
 

@@ -165,7 +165,8 @@ impl<'a> Observation<'a> {
 pub fn compare(passes: &[&Pass], zeros: &[Zeros<'_>], taps: &[String], question: Question<'_>) -> Compared {
     let mut all = Compared::default();
     for tap in taps {
-        let seen: Vec<Observation<'_>> = passes.iter().filter_map(|p| Observation::weighted(p, &[(tap, 1.0)])).collect();
+        let seen: Vec<Observation<'_>> =
+            passes.iter().filter_map(|p| Observation::weighted(p, &[(tap, 1.0)])).collect();
         if let Some(model) = Model::new(seen, question) {
             model.compare(tap, zeros, &mut all);
         }
@@ -286,7 +287,8 @@ impl Columns<'_, '_> {
     fn add_drift(&mut self, baseline: &str) -> bool {
         let mut told = false;
         for session in self.sessions() {
-            let within: Vec<&Pass> = self.observations.iter().map(|o| o.pass).filter(|p| p.session == session).collect();
+            let within: Vec<&Pass> =
+                self.observations.iter().map(|o| o.pass).filter(|p| p.session == session).collect();
             let base = |p: &&Pass| p.configuration == baseline;
             let blocks = within.iter().position(base).zip(within.iter().rposition(base));
             if blocks.is_none_or(|(first, last)| within[first..last].iter().all(base)) {
@@ -401,7 +403,9 @@ impl<'a> Model<'a> {
     /// A contrast with the scatter's and the zeros' uncertainty.
     pub fn estimate(&self, contrast: &DVector<f64>, zeros: &[Zeros<'_>]) -> Estimate {
         let value = self.fit.value(contrast);
-        let Some(scatter) = self.fit.variance_of(contrast) else { return Estimate { value, u: None, dof: None, u95: None } };
+        let Some(scatter) = self.fit.variance_of(contrast) else {
+            return Estimate { value, u: None, dof: None, u95: None };
+        };
         let common = self.zero_variance(&self.fit.weights_of(contrast), zeros);
         let dof = effective_dof(&[(scatter, self.fit.dof as f64), (common, f64::INFINITY)]);
         let u = (scatter + common).sqrt();

@@ -5,6 +5,7 @@
 use super::air;
 use super::probe::dynamic_pressure;
 use super::zeros::{Correction, Zeros};
+use crate::config::Channel;
 use crate::hold::statistics::standard_error;
 use crate::session::{Direction, Entry, Segment, Session};
 use crate::units::{KMH_PER_M_S, Quantity, StreamTime};
@@ -36,6 +37,10 @@ pub struct Pass {
     pub track_deg: Option<f64>,
     /// Air density, kg/m³.
     pub density: f64,
+    /// Air temperature, °C.
+    pub temperature_c: f64,
+    /// Ride heights against the zero, mm, by channel.
+    pub heights: BTreeMap<String, f64>,
     /// By tap.
     pub taps: BTreeMap<String, TapMean>,
 }
@@ -173,9 +178,17 @@ fn pass(index: usize, session: &Session, zeros: &Zeros<'_>, group: &[&Segment]) 
         speed_kmh: speed.and_then(|c| mean(group, c)),
         track_deg: first.track_deg,
         density: air,
+        temperature_c: group.iter().map(|s| s.air.air.temperature_c).sum::<f64>() / group.len() as f64,
+        heights: heights(group, zeros, channels, middle),
         taps: first.taps.iter().filter_map(tap).collect(),
         q,
     })
+}
+
+/// Ride heights less their zero; a channel that was never zeroed says nothing of a load.
+fn heights(group: &[&Segment], zeros: &Zeros<'_>, channels: &[Channel], t: StreamTime) -> BTreeMap<String, f64> {
+    let of = |c: &Channel| Some((c.name.clone(), mean(group, &c.name)? - zeros.at(&c.name, t)?.pa));
+    channels.iter().filter(|c| c.quantity == Quantity::RideHeight).filter_map(of).collect()
 }
 
 fn measured_q(group: &[&Segment], zeros: &Zeros<'_>, channel: &str, t: StreamTime) -> Option<DynamicPressure> {

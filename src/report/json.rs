@@ -1,8 +1,12 @@
 //! The reduction as JSON, schema `steadytap.reduction/1`. Never a non-finite number; what is not known is null, with the reason in `flags`.
 
 use crate::reduction::compare::Estimate;
+use crate::reduction::contour::ContourRow;
+use crate::reduction::cores::CoreRow;
+use crate::reduction::force::{AxleRow, BaseRow, ForceRow};
 use crate::reduction::{Drift, MeanAir, Reduction, WindPair};
 use crate::session::AirSource;
+use crate::units::STANDARD_GRAVITY;
 use serde_json::{Value, json};
 
 /// The whole reduction as one JSON object and a line end.
@@ -35,7 +39,12 @@ pub fn json(r: &Reduction) -> String {
         "comparisons": comparisons,
         "wind": r.wind.iter().map(wind).collect::<Vec<_>>(),
         "drift": r.drift.iter().map(drift).collect::<Vec<_>>(),
-        "forces": [], "balance": {}, "base_drag": [], "cores": [], "sweeps": [], "contour": [],
+        "forces": r.forces.iter().map(force).collect::<Vec<_>>(),
+        "balance": {"axles": r.balance.iter().map(axle).collect::<Vec<_>>()},
+        "base_drag": r.base_drag.iter().map(base).collect::<Vec<_>>(),
+        "cores": r.cores.iter().map(core).collect::<Vec<_>>(),
+        "sweeps": [],
+        "contour": r.contour.iter().map(contour).collect::<Vec<_>>(),
         "flags": r.flags,
     });
     let mut text = serde_json::to_string_pretty(&object).expect("a JSON value has string keys");
@@ -77,4 +86,44 @@ fn wind(w: &WindPair) -> Value {
 fn drift(d: &Drift) -> Value {
     json!({"channel": d.channel, "from_s": number(d.from_s), "to_s": number(d.to_s), "change_pa": number(d.change_pa),
         "u_pa": number(d.u_pa), "exceeds": d.exceeds})
+}
+
+fn force(f: &ForceRow) -> Value {
+    let bounds = f.bounds.map(|b| b.map(number));
+    json!({"group": f.group, "configuration": f.configuration, "target_kmh": f.target_kmh, "difference": f.difference,
+        "component": f.component.word(), "force_n": number(f.newton.value), "force_n_u95": option(f.newton.u95),
+        "force_kgf": number(f.newton.value / STANDARD_GRAVITY), "force_kgf_u95": option(f.newton.u95.map(|u| u / STANDARD_GRAVITY)),
+        "u95_independent_n": bounds.as_ref().map(|b| &b[0]), "u95_common_n": bounds.as_ref().map(|b| &b[1])})
+}
+
+fn axle(a: &AxleRow) -> Value {
+    let [front, rear] = &a.taps;
+    let height = |i: usize| a.ride_height[i].as_ref();
+    let apart = |i: usize, e: &Estimate| option(height(i).map(|h| h.value - e.value));
+    json!({"configuration": a.configuration, "target_kmh": a.target_kmh, "difference": a.difference,
+        "front_lift_n": number(front.value), "front_lift_n_u95": option(front.u95),
+        "rear_lift_n": number(rear.value), "rear_lift_n_u95": option(rear.u95),
+        "front_lift_by_ride_height_n": option(height(0).map(|h| h.value)), "front_lift_by_ride_height_n_u95": option(height(0).and_then(|h| h.u95)),
+        "rear_lift_by_ride_height_n": option(height(1).map(|h| h.value)), "rear_lift_by_ride_height_n_u95": option(height(1).and_then(|h| h.u95)),
+        "front_routes_apart_n": apart(0, front), "rear_routes_apart_n": apart(1, rear)})
+}
+
+fn base(b: &BaseRow) -> Value {
+    json!({"configuration": b.configuration, "target_kmh": b.target_kmh, "difference": b.difference,
+        "mean_cp": number(b.mean_cp.value), "mean_cp_u95": option(b.mean_cp.u95),
+        "cd_base_contribution": number(b.cd.value), "cd_base_contribution_u95": option(b.cd.u95),
+        "power_w": number(b.power_w.value), "power_w_u95": option(b.power_w.u95)})
+}
+
+fn core(c: &CoreRow) -> Value {
+    json!({"core": c.core, "configuration": c.configuration, "target_kmh": c.target_kmh, "difference": c.difference,
+        "velocity_ratio": number(c.ratio.value), "velocity_ratio_u95": option(c.ratio.u95),
+        "velocity_m_s": number(c.velocity_m_s.value), "velocity_m_s_u95": option(c.velocity_m_s.u95)})
+}
+
+fn contour(c: &ContourRow) -> Value {
+    let [drag, lift, moment] = &c.coefficients;
+    json!({"configuration": c.configuration, "target_kmh": c.target_kmh, "difference": c.difference,
+        "section_cd": number(drag.value), "section_cd_u95": option(drag.u95), "section_cl": number(lift.value),
+        "section_cl_u95": option(lift.u95), "section_cm": number(moment.value), "section_cm_u95": option(moment.u95)})
 }

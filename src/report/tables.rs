@@ -1,6 +1,7 @@
 //! The reduction as CSV in long form: one value a row, so that every table has the same columns.
 
 use crate::reduction::Reduction;
+use crate::reduction::compare::Estimate;
 
 const HEAD: [&str; 8] = ["table", "tap", "configuration", "target_kmh", "quantity", "value", "u95", "note"];
 
@@ -24,6 +25,9 @@ pub fn csv(r: &Reduction) -> Vec<u8> {
         row(cells(&head, "delta_pa_at", pa, c.verdict.word()));
         row(cells(&head, "p_adjusted", (c.p_adjusted, None), c.verdict.word()));
         row(cells(&head, "passes_needed", (c.passes_needed.map(f64::from), None), c.verdict.word()));
+    }
+    for (head, quantity, e) in meanings(r) {
+        row(cells(&head, &quantity, (Some(e.value), e.u95), ""));
     }
     for w in &r.wind {
         let head = ["wind".to_string(), String::new(), String::new(), w.target_kmh.to_string()];
@@ -56,4 +60,52 @@ fn cells(head: &[String; 4], quantity: &str, (value, u95): (Option<f64>, Option<
 fn guarded(cell: &str) -> String {
     let risky = cell.starts_with(['=', '+', '-', '@', '\t', '\r']) && cell.parse::<f64>().is_err();
     if risky { format!("'{cell}") } else { cell.to_string() }
+}
+
+/// Forces, axles, base, cores and contour as (table, place, configuration, target), quantity, value.
+fn meanings(r: &Reduction) -> Vec<([String; 4], String, Estimate)> {
+    let mut all = Vec::new();
+    let mut add = |table: &str,
+                   place: &str,
+                   (configuration, target, difference): (&str, f64, bool),
+                   quantity: &str,
+                   e: Estimate| {
+        let quantity = if difference { format!("delta_{quantity}") } else { quantity.to_string() };
+        all.push(([table.to_string(), place.to_string(), configuration.to_string(), target.to_string()], quantity, e));
+    };
+    for f in &r.forces {
+        let place = f.group.as_deref().unwrap_or("all");
+        add(
+            "forces",
+            place,
+            (&f.configuration, f.target_kmh, f.difference),
+            &format!("{}_n", f.component.word()),
+            f.newton,
+        );
+    }
+    for a in &r.balance {
+        let at = (a.configuration.as_str(), a.target_kmh, a.difference);
+        for (axle, taps, height) in [("front", a.taps[0], a.ride_height[0]), ("rear", a.taps[1], a.ride_height[1])] {
+            add("balance", axle, at, "lift_n", taps);
+            height.into_iter().for_each(|h| add("balance", axle, at, "lift_by_ride_height_n", h));
+        }
+    }
+    for b in &r.base_drag {
+        let at = (b.configuration.as_str(), b.target_kmh, b.difference);
+        add("base_drag", "base", at, "mean_cp", b.mean_cp);
+        add("base_drag", "base", at, "cd_base_contribution", b.cd);
+        add("base_drag", "base", at, "power_w", b.power_w);
+    }
+    for c in &r.cores {
+        let at = (c.configuration.as_str(), c.target_kmh, c.difference);
+        add("cores", &c.core, at, "velocity_ratio", c.ratio);
+        add("cores", &c.core, at, "velocity_m_s", c.velocity_m_s);
+    }
+    for c in &r.contour {
+        let at = (c.configuration.as_str(), c.target_kmh, c.difference);
+        for (quantity, e) in ["section_cd", "section_cl", "section_cm"].into_iter().zip(c.coefficients) {
+            add("contour", "", at, quantity, e);
+        }
+    }
+    all
 }

@@ -3,7 +3,7 @@
 use crate::config::Show;
 use crate::reduction::Reduction;
 use crate::reduction::compare::{Comparison, Estimate, Level, Verdict};
-use crate::units::{PRESSURES, Unit};
+use crate::units::{PRESSURES, STANDARD_GRAVITY, Unit};
 use std::fmt::Write;
 
 /// Widest line.
@@ -22,6 +22,7 @@ pub fn text(r: &Reduction, show: &Show) -> String {
     );
     verdicts(&mut out, r, unit);
     levels(&mut out, r, unit);
+    meanings(&mut out, r);
     surroundings(&mut out, r);
     left_out(&mut out, r);
     if !r.flags.is_empty() {
@@ -155,6 +156,93 @@ fn level(l: &Level, r: &Reduction, unit: Unit) -> String {
         with_half_width(&l.cp, r.at_q_pa, unit),
         cp(&l.cp, false)
     )
+}
+
+/// Forces, axles, base drag, cores, contour: only what the car file makes possible.
+fn meanings(out: &mut String, r: &Reduction) {
+    let whole: Vec<_> = r.forces.iter().filter(|f| f.group.is_none()).collect();
+    let what = |difference: bool| if difference { "against the baseline" } else { "" };
+    let head = |out: &mut String, title: &str| line(out, &format!("\n{title}, at {} km/h in standard air", r.at_kmh));
+    if !whole.is_empty() {
+        head(out, "Forces of the taps' panels (their areas are the car file's)");
+    }
+    for f in whole {
+        let bounds = f.bounds.map_or(String::new(), |[i, c]| format!(" (independent ± {i:.1}, common ± {c:.1})"));
+        let letter = safe(&f.configuration);
+        let n = physical(&f.newton, 1, "N");
+        let kgf = f.newton.value / STANDARD_GRAVITY;
+        line(
+            out,
+            &format!(
+                "  {letter:<4} {:>3} km/h {:<5} {n:>20} {kgf:>7.2} kgf{bounds} {}",
+                f.target_kmh,
+                f.component.word(),
+                what(f.difference)
+            ),
+        );
+    }
+    if !r.balance.is_empty() {
+        head(out, "Axle lift by the taps (negative is downforce)");
+    }
+    for a in &r.balance {
+        let height =
+            |i: usize| a.ride_height[i].map_or(String::new(), |h| format!(", by ride height {}", physical(&h, 1, "N")));
+        let (front, rear) = (physical(&a.taps[0], 1, "N"), physical(&a.taps[1], 1, "N"));
+        let letter = safe(&a.configuration);
+        line(
+            out,
+            &format!("  {letter:<4} {:>3} km/h front {front:>18}{} {}", a.target_kmh, height(0), what(a.difference)),
+        );
+        line(
+            out,
+            &format!("  {letter:<4} {:>3} km/h rear  {rear:>18}{} {}", a.target_kmh, height(1), what(a.difference)),
+        );
+    }
+    if !r.base_drag.is_empty() {
+        head(out, "Base contribution to drag (the rear face alone)");
+    }
+    for b in &r.base_drag {
+        let letter = safe(&b.configuration);
+        let (cd, power) = (physical(&b.cd, 4, ""), physical(&b.power_w, 0, "W"));
+        line(out, &format!("  {letter:<4} {:>3} km/h C_D {cd:>18} {power:>18} {}", b.target_kmh, what(b.difference)));
+    }
+    if !r.cores.is_empty() {
+        head(out, "Core flow by the bench curve");
+    }
+    for c in &r.cores {
+        let letter = safe(&c.configuration);
+        let (v, ratio) = (physical(&c.velocity_m_s, 2, "m/s"), physical(&c.ratio, 4, ""));
+        line(
+            out,
+            &format!(
+                "  {} {letter:<4} {:>3} km/h {v:>20}  v/V {ratio:>18} {}",
+                name(&c.core),
+                c.target_kmh,
+                what(c.difference)
+            ),
+        );
+    }
+    if !r.contour.is_empty() {
+        line(out, "\nSection of the contour, by chord; a coarse ring of taps shows a false drag");
+    }
+    for c in &r.contour {
+        let [d, l, m] = c.coefficients.map(|e| physical(&e, 3, ""));
+        line(
+            out,
+            &format!(
+                "  {:<4} {:>3} km/h cd {d:>15} cl {l:>15} cm {m:>15} {}",
+                safe(&c.configuration),
+                c.target_kmh,
+                what(c.difference)
+            ),
+        );
+    }
+}
+
+/// A value with its half-width and unit.
+fn physical(e: &Estimate, decimals: usize, unit: &str) -> String {
+    let half = e.u95.map_or("?".to_string(), |u| format!("{u:.decimals$}"));
+    format!("{:+.decimals$} ± {half} {unit}", e.value).trim_end().to_string()
 }
 
 fn surroundings(out: &mut String, r: &Reduction) {
