@@ -5,6 +5,7 @@
 
 pub mod air;
 pub mod compare;
+pub mod constancy;
 pub mod contour;
 pub mod cores;
 pub mod force;
@@ -179,6 +180,8 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
     let ground = Ground { car: &setup.car, passes: &passes, zeros: &zeros, question };
     let (cores, words_of_cores) = cores::cores(ground, at_kmh);
     let (contour, words_of_contour) = contour::contour(ground);
+    let density = passes.first().map_or(air::ISA_DENSITY, |p| p.density);
+    flags.extend(constancy::changes(&levels, density).iter().map(constancy::words));
     flags.extend(words_of_cores);
     flags.extend(words_of_contour);
     let forces = force::forces(ground, &levels, at_q_pa);

@@ -153,6 +153,9 @@ pub fn press(view: &View, face: &mut Face, key: KeyEvent) -> Option<Action> {
     if key.kind == KeyEventKind::Release || held_down(view, face, key.code) || !acts {
         return None;
     }
+    if face.overlay == Overlay::Safety {
+        face.overlay = Overlay::None;
+    }
     // AltGr comes as Control and Alt together on some systems; it types, it commands nothing.
     let alt_gr = key.modifiers.contains(KeyModifiers::CONTROL | KeyModifiers::ALT);
     let control = !alt_gr && key.modifiers.contains(KeyModifiers::CONTROL);

@@ -271,3 +271,14 @@ fn stream_time_that_stands_still_at_the_end_blocks_no_key() {
     tap(&view, &mut face, KeyCode::PageUp);
     assert_eq!(tap(&view, &mut face, KeyCode::PageUp), command(Command::Void(12)));
 }
+
+#[test]
+fn any_key_closes_the_cautions_and_acts_all_the_same() {
+    let view = scenes::off_slow();
+    let mut face = with(Overlay::Safety);
+    assert_eq!(letter(&view, &mut face, 'z'), command(Command::Zero));
+    assert_eq!(face.overlay, Overlay::None);
+    let mut face = with(Overlay::Safety);
+    assert_eq!(letter(&view, &mut face, 'x'), None);
+    assert_eq!(face.overlay, Overlay::None);
+}
