@@ -21,6 +21,7 @@ pub mod reduce;
 pub mod rehold;
 pub mod serial;
 pub mod terminal;
+pub mod watch;
 
 use std::fmt;
 

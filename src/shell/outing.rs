@@ -4,6 +4,7 @@ use super::engine::{Arrival, Engine, Outcome};
 use super::feed::{Feed, Running, Sender};
 use super::journal::Journal;
 use super::recorder::Recorder;
+use super::watch::Watch;
 use super::{Trouble, clock, files, live, rehold};
 use crate::config::Setup;
 use crate::pipeline::{Event, What};
@@ -65,9 +66,9 @@ pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
         false => None,
     };
     let shift_us = opened.before.as_ref().map_or(0, |s| shift(s, matches!(feed, Feed::Ports(_))));
-    let engine = Engine::new(setup, opened.journal, opened.before.as_ref(), !plan.unattended)
-        .shifted(shift_us)
-        .recording(recorder);
+    // A live stream is watched even where nobody looks.
+    let seen = !plan.unattended || matches!(feed, Feed::Ports(_));
+    let engine = Engine::new(setup, opened.journal, opened.before.as_ref(), seen).shifted(shift_us).recording(recorder);
     let mut running = feed.start(&setup.rig);
     let played = running.played.take();
     let engine = if plan.unattended { unattended(engine, running, plan) } else { live::run(engine, running, plan)? };
@@ -133,6 +134,7 @@ fn unattended(mut engine: Engine, running: Running, plan: &Plan) -> Engine {
     stop_on_signals(running.sender.clone());
     let mut outcomes = Vec::new();
     let mut first = None;
+    let mut watch = Watch::default();
     engine.keep_every(StreamTime::ZERO, &mut outcomes);
     loop {
         match running.arrivals.recv_timeout(Duration::from_millis(200)) {
@@ -141,6 +143,13 @@ fn unattended(mut engine: Engine, running: Running, plan: &Plan) -> Engine {
             Err(std::sync::mpsc::RecvTimeoutError::Timeout) => {}
         }
         tell(&mut outcomes);
+        if let Some(clock) = running.clock {
+            let now = clock.now().plus(engine.shift_us());
+            let mut out = std::io::stdout().lock();
+            for line in watch.look(engine.pipeline(), now) {
+                let _ = writeln!(out, "{line}");
+            }
+        }
         let now = running.clock.map_or_else(|| engine.pipeline().now(), |c| c.now());
         let first = *first.get_or_insert(if running.clock.is_some() { StreamTime::ZERO } else { now });
         if plan.seconds.is_some_and(|s| now.since(first) as f64 >= s * 1e6) {
