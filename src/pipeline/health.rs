@@ -132,6 +132,8 @@ impl Health {
             Condition::Silent
         } else if quiet(self.last_good, GARBAGE_US) && quiet(self.first_heard, GARBAGE_US) {
             Condition::CheckBaud
+        } else if self.last_good.is_none() {
+            Condition::Waiting
         } else if self.no_fix {
             Condition::NoFix
         } else {
