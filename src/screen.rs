@@ -18,6 +18,8 @@ mod theme;
 
 pub use theme::Theme;
 
+pub use crate::pipeline::health::Condition as PortState;
+
 use crate::config::Show;
 use crate::units::StreamTime;
 use canvas::Canvas;
@@ -261,23 +263,6 @@ pub struct PortHealth {
     pub rejected_share: f64,
     /// The last line that did not parse, escaped, and why.
     pub last_bad: Option<(String, String)>,
-}
-
-/// How a port is.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum PortState {
-    /// Nothing came yet.
-    Waiting,
-    /// Lines parse.
-    Good,
-    /// Bytes or lines arrive but no line parses.
-    CheckBaud,
-    /// Nothing came for three seconds.
-    Silent,
-    /// Unplugged.
-    Lost,
-    /// A GPS that talks but has no fix.
-    NoFix,
 }
 
 /// Session file and disk.

@@ -3,7 +3,6 @@
 use super::{Held, Journal, Kept, Message, PortHealth, PortState, Row, Tag, View, Window, WindowState, text};
 use crate::hold::{State, Stretch};
 use crate::pipeline::Pipeline;
-use crate::pipeline::health::Condition;
 use crate::session::Segment;
 use crate::units::{Quantity, StreamTime};
 use std::collections::BTreeSet;
@@ -175,14 +174,6 @@ fn ports(pipeline: &Pipeline, now: StreamTime) -> Vec<PortHealth> {
     ports
         .map(|(i, port)| {
             let health = pipeline.health(i);
-            let state = match health.condition(now) {
-                Condition::Waiting => PortState::Waiting,
-                Condition::Good => PortState::Good,
-                Condition::CheckBaud => PortState::CheckBaud,
-                Condition::Silent => PortState::Silent,
-                Condition::Lost => PortState::Lost,
-                Condition::NoFix => PortState::NoFix,
-            };
             let escaped = |line: &[u8]| {
                 let mut out = Vec::new();
                 crate::stream::record::escape_into(&mut out, line);
@@ -190,7 +181,7 @@ fn ports(pipeline: &Pipeline, now: StreamTime) -> Vec<PortHealth> {
             };
             PortHealth {
                 name: port.name.clone(),
-                state,
+                state: health.condition(now),
                 lines_per_s: health.lines_per_s(now),
                 rejected_share: health.rejected_share(now),
                 last_bad: health.last_bad().map(|(line, why)| (escaped(line), why.to_string())),
