@@ -5,6 +5,7 @@
 #![expect(clippy::disallowed_macros, reason = "this room talks to the person at the shell")]
 
 use crate::config::{self, Setup};
+use crate::pneumatics::{self, Gas, Tube};
 use crate::shell::feed::Feed;
 use crate::shell::outing::{self, Ending, Plan};
 use crate::shell::player::{Pace, Source};
@@ -53,6 +54,8 @@ enum Word {
     Rehold(Rehold),
     /// Coefficients, differences and verdicts of sessions
     Reduce(Reduce),
+    /// The pneumatic response of a tube and a sensor's volume: delay, bandwidth, the settling time it asks for
+    Hose(Hose),
 }
 
 #[derive(Args, Debug, Default)]
@@ -142,6 +145,25 @@ struct Reduce {
     baseline: Option<String>,
 }
 
+#[derive(Args, Debug)]
+struct Hose {
+    /// Length of the tube, m
+    #[arg(long, value_name = "M", value_parser = positive)]
+    length: f64,
+    /// Its bore, mm
+    #[arg(long, value_name = "MM", value_parser = positive)]
+    bore: f64,
+    /// Volume of sensor and fittings, cm³
+    #[arg(long, value_name = "CM3", value_parser = positive)]
+    volume: f64,
+    /// Air temperature, °C
+    #[arg(long, value_name = "C", default_value_t = 15.0, allow_negative_numbers = true)]
+    temperature: f64,
+    /// Air pressure, hPa
+    #[arg(long, value_name = "HPA", default_value_t = 1013.25, value_parser = positive)]
+    pressure: f64,
+}
+
 fn number(text: &str) -> Result<f64, String> {
     text.parse::<f64>().ok().filter(|v| v.is_finite() && *v < 1e6).ok_or_else(|| format!("`{text}` is no number"))
 }
@@ -183,6 +205,7 @@ pub fn run(words: impl IntoIterator<Item = std::ffi::OsString>) -> u8 {
         Word::Check { files } => check_files(&files),
         Word::Rehold(words) => rehold_record(words),
         Word::Reduce(words) => reduce_sessions(words),
+        Word::Hose(words) => hose(&words),
     };
     match outcome {
         Outcome::Done => 0,
@@ -353,4 +376,19 @@ fn reduce_sessions(words: Reduce) -> Outcome {
         Ok(degraded) => Outcome::Degraded(degraded),
         Err(trouble) => trouble.into(),
     }
+}
+
+/// Largest tube that the laminar, long-wave theory is meant for: length m, bore mm, volume cm³.
+const LARGEST_TUBE: (f64, f64, f64) = (50.0, 20.0, 1000.0);
+
+fn hose(words: &Hose) -> Outcome {
+    let (length, bore, volume) = LARGEST_TUBE;
+    let plausible = words.length <= length && words.bore <= bore && words.volume <= volume;
+    if !plausible || !(-60.0..=70.0).contains(&words.temperature) || !(300.0..=1200.0).contains(&words.pressure) {
+        let hint = format!("up to {length} m, {bore} mm, {volume} cm³, -60 to 70 °C, 300 to 1200 hPa");
+        return Trouble::new("no such hose: a value is outside what the theory is meant for").hint(hint).into();
+    }
+    let tube = Tube { length_m: words.length, bore_mm: words.bore, volume_cm3: words.volume };
+    print!("{}", pneumatics::describe(&tube, &Gas::air(words.temperature, words.pressure)));
+    Outcome::Done
 }

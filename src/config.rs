@@ -15,6 +15,7 @@ pub use outing::{Head, kind, outing_head, setup};
 pub use problem::{Kind, Place, Problem, Severity, Source};
 pub use rig::check as check_rig;
 
+use crate::pneumatics::Tube;
 use crate::units::{Quantity, Unit, micros};
 use serde::{Deserialize, Serialize};
 use std::collections::BTreeMap;
@@ -108,8 +109,10 @@ pub struct Channel {
     pub convert: Convert,
     /// Lowest and highest trusted figure, in `unit`; at an end or beyond, the channel is saturated.
     pub range: Option<[f64; 2]>,
-    /// Pneumatic and sensor lag, s; taken off a sample's time.
+    /// Pneumatic and sensor lag, s; taken off a sample's time. Where a tube is given, its delay.
     pub lag_s: f64,
+    /// The tube between tap and sensor, if the rig gives it instead of a lag.
+    pub tube: Option<Tube>,
     /// Time constant of the displayed value, s; never touches an average.
     pub damping_s: f64,
     /// Longest silence before the channel counts as stale, s.

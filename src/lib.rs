@@ -15,6 +15,7 @@
 //! | layer | room | turns | into |
 //! | --- | --- | --- | --- |
 //! | 0 | [`units`] | text, trade units | stream time, SI and km/h |
+//! | 0 | [`pneumatics`] | a tube and a volume | delay, bandwidth, settling |
 //! | 1 | [`config`] | rig, car and outing files | a checked [`config::Setup`] |
 //! | 2 | [`session`] | entries, plain data | checksummed lines, and back, damage told |
 //! | 3 | [`stream`] | bytes, record lines | frames, rejected lines, commands |
@@ -37,6 +38,7 @@ pub mod cli;
 pub mod config;
 pub mod hold;
 pub mod pipeline;
+pub mod pneumatics;
 pub mod reduction;
 pub mod report;
 pub mod screen;

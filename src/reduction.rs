@@ -13,6 +13,7 @@ pub mod inference;
 pub mod model;
 pub mod passes;
 pub mod probe;
+pub mod sweep;
 pub mod zeros;
 
 use crate::config::{Air, Configuration, ProbeFactor, Setup};
@@ -23,6 +24,7 @@ use cores::CoreRow;
 use force::{AxleRow, BaseRow, ForceRow, Ground};
 use passes::{LeftOut, Pass};
 use std::collections::BTreeSet;
+use sweep::{Interval, SweepRow};
 use zeros::Zeros;
 
 /// Two passes further apart in time than this make no pair: the wind will have changed, s.
@@ -100,6 +102,8 @@ pub struct Reduction {
     pub base_drag: Vec<BaseRow>,
     /// Flow of heat-exchanger cores.
     pub cores: Vec<CoreRow>,
+    /// Curves over a configuration's parameter.
+    pub sweeps: Vec<SweepRow>,
     /// Section coefficients of the contour.
     pub contour: Vec<ContourRow>,
     /// What was left out.
@@ -207,6 +211,7 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
         balance,
         base_drag,
         cores,
+        sweeps: sweeps(ground, &configurations, &taps(sessions)),
         contour,
         left_out,
         flags,
@@ -404,6 +409,44 @@ fn drift(zeros: &[Zeros<'_>], sessions: &[Session], resolve_pa: f64) -> Vec<Drif
         }
     }
     list
+}
+
+/// A sweep of every tap and target, where three settings or more of one parameter were driven.
+fn sweeps(ground: Ground<'_>, configurations: &[Configuration], taps: &[String]) -> Vec<SweepRow> {
+    let mut rows = Vec::new();
+    let Some(parameter) = configurations.iter().find_map(|c| c.parameter.as_ref()) else { return rows };
+    let setting = |letter: &str| {
+        let c = configurations.iter().find(|c| c.letter == letter)?;
+        c.parameter.as_ref().filter(|p| p.name == parameter.name).map(|p| p.value)
+    };
+    for target in ground.targets() {
+        for tap in taps {
+            let Some(model) = ground.weighted(target, &[(tap, 1.0)]) else { continue };
+            let Some((levels, quadratic, lack_of_fit_p)) = sweep::sweep(&model, setting) else { continue };
+            let range = [levels[0].0, levels[levels.len() - 1].0];
+            let extreme = quadratic.as_ref().and_then(sweep::Quadratic::vertex);
+            let extreme = extreme.filter(|(x, ..)| (range[0]..=range[1]).contains(x)).map(|(x, set, _)| (x, set));
+            rows.push(SweepRow {
+                tap: tap.clone(),
+                target_kmh: target,
+                parameter: (parameter.name.clone(), parameter.unit.clone()),
+                levels,
+                quadratic,
+                lack_of_fit_p,
+                extreme,
+            });
+        }
+    }
+    rows
+}
+
+/// The set of an extreme in words; open where the sweep does not close it.
+pub fn words_of_interval(interval: Interval, unit: &str) -> String {
+    match interval {
+        Interval::Within(a, b) => format!("{a:.1} to {b:.1} {unit}"),
+        Interval::Outside(..) | Interval::All => "not determined by this sweep".to_string(),
+        Interval::Nowhere => "nowhere in the tested range".to_string(),
+    }
 }
 
 /// What must be said about the data as a whole.

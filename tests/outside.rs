@@ -266,6 +266,7 @@ fn scaler(unit: &str, convert: Convert) -> Scaler {
         convert,
         range: None,
         lag_s: 0.0,
+        tube: None,
         damping_s: 0.0,
         stale_s: 1.0,
     })

@@ -3,6 +3,7 @@
 use super::problem::{Kind, Problem, Severity, Source};
 use super::reader::{Item, Problems, Table, nearest, shown, unique};
 use super::{Air, Car, Channel, Configuration, Outing, Parameter, Rig, Setup, Show, Watch, car, rig};
+use crate::pneumatics::{Gas, settle_of_lag_s};
 use crate::units::{PRESSURES, Quantity, SPEEDS, Unit};
 use std::collections::BTreeMap;
 use std::ops::Range;
@@ -104,6 +105,9 @@ fn read(top: &Table<'_, '_>, rig: Option<&Rig>, car: Option<&Car>) -> Option<Out
     let targets = targets(top);
     let tolerance_kmh = top.need_positive("tolerance_kmh", 100.0, "km/h");
     let settle_s = need_in(top, "settle_s", (0.0, 600.0), "s");
+    if let (Some(settle_s), Some(rig)) = (settle_s, rig) {
+        settles(top, settle_s, rig);
+    }
     let dwell_s = top.need_positive("dwell_s", 3600.0, "s");
     let slope = top.positive("slope", 1000.0, "km/h per s");
     let out_track_deg = top.number_in("out_track_deg", (0.0, 360.0), "degrees");
@@ -131,6 +135,17 @@ fn read(top: &Table<'_, '_>, rig: Option<&Rig>, car: Option<&Car>) -> Option<Out
         configurations: configurations?,
         taps: taps?,
     })
+}
+
+/// Warns where averaging would begin before a channel has followed into the window.
+fn settles(top: &Table<'_, '_>, settle_s: f64, rig: &Rig) {
+    for channel in &rig.channels {
+        let asks = channel.tube.map_or(settle_of_lag_s(channel.lag_s), |tube| tube.settle_s(&Gas::STANDARD));
+        if asks > settle_s {
+            let what = format!("`settle_s` is {settle_s}, channel `{}` asks for {asks:.2} s to be within 1 %", channel.name);
+            top.problems.warn(&top.span_of("settle_s"), what, "settle longer, or use a shorter or wider tube");
+        }
+    }
 }
 
 fn need_in(t: &Table<'_, '_>, key: &'static str, range: (f64, f64), unit: &str) -> Option<f64> {

@@ -134,6 +134,11 @@ impl<'p, 't> Table<'p, 't> {
         self.table.contains_key(key)
     }
 
+    /// Where the value of a key stands; the table's own place without it.
+    pub fn span_of(&self, key: &str) -> Range<usize> {
+        self.table.get(key).map_or(self.span.clone(), Spanned::span)
+    }
+
     /// Whoever reads this table now does not ask for all of its keys.
     pub fn all_known(&self) {
         self.names.set(true);

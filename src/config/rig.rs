@@ -3,6 +3,7 @@
 use super::problem::{Kind, Source};
 use super::reader::{Item, Problems, Table, nearest, shown, unique};
 use super::{Channel, Convert, LineFormat, NMEA_FIELDS, Port, Rig, UsbId};
+use crate::pneumatics::{Gas, Tube};
 use crate::units::{Quantity, Unit};
 
 /// Longest lag of a channel, s.
@@ -158,7 +159,13 @@ fn channel(t: &Table<'_, '_>, ports: &[&Port], broken: bool) -> Option<(Item<Str
         }
         item.value
     });
-    let lag_s = t.number_in("lag_s", (0.0, LONGEST_LAG_S), "s").unwrap_or(0.0);
+    let lag = t.number_in("lag_s", (0.0, LONGEST_LAG_S), "s");
+    let tube = t.table("tube").map(|tube_table| tube(&tube_table));
+    if let (Some(_), Some(_)) = (&tube, lag) {
+        t.problems.error(&t.span, "both `tube` and `lag_s`", "keep one: the tube's delay is the lag");
+    }
+    let tube = tube.flatten();
+    let lag_s = tube.map_or(lag.unwrap_or(0.0), |tube| tube.time_constant_s(&Gas::STANDARD).min(LONGEST_LAG_S));
     let damping_s = t.number_in("damping_s", (0.0, 60.0), "s").unwrap_or(0.8);
     let stale_s = t.positive("stale_s", 3600.0, "s").unwrap_or(quantity.map_or(5.0, default_stale_s));
     let (port, field) = from?;
@@ -171,10 +178,19 @@ fn channel(t: &Table<'_, '_>, ports: &[&Port], broken: bool) -> Option<(Item<Str
         convert: convert?,
         range,
         lag_s,
+        tube,
         damping_s,
         stale_s,
     };
     Some((name?, channel))
+}
+
+/// `tube = { length_m = 1.5, bore_mm = 2.0, volume_cm3 = 0.5 }`.
+fn tube(t: &Table<'_, '_>) -> Option<Tube> {
+    let length_m = t.need_positive("length_m", 50.0, "m");
+    let bore_mm = t.need_positive("bore_mm", 20.0, "mm");
+    let volume_cm3 = t.need_positive("volume_cm3", 1000.0, "cm³");
+    Some(Tube { length_m: length_m?, bore_mm: bore_mm?, volume_cm3: volume_cm3? })
 }
 
 /// How long a quantity may be silent where the rig does not say: a 1 Hz GPS must work, air changes slowly.

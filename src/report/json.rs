@@ -4,6 +4,7 @@ use crate::reduction::compare::Estimate;
 use crate::reduction::contour::ContourRow;
 use crate::reduction::cores::CoreRow;
 use crate::reduction::force::{AxleRow, BaseRow, ForceRow};
+use crate::reduction::sweep::{Interval, SweepRow};
 use crate::reduction::{Drift, MeanAir, Reduction, WindPair};
 use crate::session::AirSource;
 use crate::units::STANDARD_GRAVITY;
@@ -43,7 +44,7 @@ pub fn json(r: &Reduction) -> String {
         "balance": {"axles": r.balance.iter().map(axle).collect::<Vec<_>>()},
         "base_drag": r.base_drag.iter().map(base).collect::<Vec<_>>(),
         "cores": r.cores.iter().map(core).collect::<Vec<_>>(),
-        "sweeps": [],
+        "sweeps": r.sweeps.iter().map(sweep).collect::<Vec<_>>(),
         "contour": r.contour.iter().map(contour).collect::<Vec<_>>(),
         "flags": r.flags,
     });
@@ -126,4 +127,15 @@ fn contour(c: &ContourRow) -> Value {
     json!({"configuration": c.configuration, "target_kmh": c.target_kmh, "difference": c.difference,
         "section_cd": number(drag.value), "section_cd_u95": option(drag.u95), "section_cl": number(lift.value),
         "section_cl_u95": option(lift.u95), "section_cm": number(moment.value), "section_cm_u95": option(moment.u95)})
+}
+
+fn sweep(s: &SweepRow) -> Value {
+    let bounds = s.extreme.map(|(_, set)| match set {
+        Interval::Within(a, b) => json!([number(a), number(b)]),
+        Interval::Outside(..) | Interval::All | Interval::Nowhere => Value::Null,
+    });
+    let levels: Vec<Value> = s.levels.iter().map(|(x, cp)| json!({"setting": number(*x), "cp": number(*cp)})).collect();
+    json!({"tap": s.tap, "target_kmh": s.target_kmh, "parameter": s.parameter.0, "unit": s.parameter.1, "levels": levels,
+        "quadratic": s.quadratic.as_ref().map(|q| q.b.map(number)), "lack_of_fit_p": option(s.lack_of_fit_p),
+        "extreme": option(s.extreme.map(|e| e.0)), "extreme_interval95": bounds})
 }

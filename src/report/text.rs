@@ -1,7 +1,7 @@
 //! The reduction as text of at most 100 columns: the verdicts first, in words; every number with its unit and half-width.
 
 use crate::config::Show;
-use crate::reduction::Reduction;
+use crate::reduction::{Reduction, words_of_interval};
 use crate::reduction::compare::{Comparison, Estimate, Level, Verdict};
 use crate::units::{PRESSURES, STANDARD_GRAVITY, Unit};
 use std::fmt::Write;
@@ -221,6 +221,18 @@ fn meanings(out: &mut String, r: &Reduction) {
                 what(c.difference)
             ),
         );
+    }
+    if let Some(first) = r.sweeps.first() {
+        line(out, &format!("\nSweep of {} ({})", safe(&first.parameter.0), safe(&first.parameter.1)));
+    }
+    for s in &r.sweeps {
+        let settings: Vec<String> = s.levels.iter().map(|(x, cp)| format!("{x}: {cp:+.4}")).collect();
+        let curve = match (&s.quadratic, s.extreme) {
+            (None, _) => "a quadratic does not fit, see the levels".to_string(),
+            (Some(_), None) => "no extreme within the tested range".to_string(),
+            (Some(_), Some((x, set))) => format!("extreme at {x:.1}, {}", words_of_interval(set, &safe(&s.parameter.1))),
+        };
+        wrapped(out, &format!("{} {} km/h: Cp {}; {curve}", safe(&s.tap), s.target_kmh, settings.join(", ")));
     }
     if !r.contour.is_empty() {
         line(out, "\nSection of the contour, by chord; a coarse ring of taps shows a false drag");

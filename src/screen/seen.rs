@@ -1,6 +1,6 @@
 //! The view of a pipeline: every figure that the Drive screen draws, taken out of the instrument.
 
-use super::{Held, Journal, Kept, Message, PortHealth, PortState, Row, Tag, View, Window, WindowState, text};
+use super::{Held, Journal, Kept, Message, PortHealth, Row, Tag, View, Window, WindowState, text};
 use crate::hold::{State, Stretch};
 use crate::pipeline::Pipeline;
 use crate::session::Segment;
