@@ -247,13 +247,13 @@ impl Run {
 
 /// Rig, car and outing of the simulated van: the same files that `configs/` holds.
 pub fn van() -> Result<Setup, Vec<config::Problem>> {
-    let source = |path: &str, text: &str| config::Source { path: path.to_string(), text: text.to_string() };
+    let source = |path: &str, text: &str| config::Source::new(path, text);
     config::setup(
         &source("configs/van-outing.toml", include_str!("../configs/van-outing.toml")),
         &source("configs/van-rig.toml", include_str!("../configs/van-rig.toml")),
         &source("configs/van.toml", include_str!("../configs/van.toml")),
     )
-    .map(|(setup, _)| setup)
+    .map(|checked| checked.setup)
 }
 
 fn rehearse(words: &Rehearse) -> Outcome {

@@ -5,15 +5,15 @@
 //! reduces by itself years later. Reading never guesses: an unknown key is an error that names the nearest known one.
 
 mod car;
+mod cursor;
+mod files;
+mod names;
 mod outing;
 mod problem;
-mod reader;
 mod rig;
 
-pub use car::check as check_car;
-pub use outing::{Head, kind, outing_head, setup};
-pub use problem::{Kind, Place, Problem, Severity, Source};
-pub use rig::check as check_rig;
+pub use files::{Checked, Head, Kind, LARGEST, check_car, check_outing, check_rig, kind, outing_head, setup};
+pub use problem::{Place, Problem, Severity, Source};
 
 use crate::pneumatics::Tube;
 use crate::units::{Quantity, Unit, micros};
@@ -74,8 +74,9 @@ pub struct UsbId {
     pub serial: Option<String>,
 }
 
-/// The fields of an NMEA port that a channel may name: km/h, degrees, degrees, degrees, m, quality.
-pub const NMEA_FIELDS: [&str; 6] = ["speed", "track", "lat", "lon", "altitude", "fix"];
+/// The fields of an NMEA port that a channel may name, and the unit that its reader gives them in.
+pub const NMEA_FIELDS: [(&str, &str); 6] =
+    [("speed", "km/h"), ("track", "deg"), ("lat", "deg"), ("lon", "deg"), ("altitude", "m"), ("fix", "")];
 
 /// How the lines of a port read.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
@@ -270,7 +271,7 @@ pub struct Outing {
     pub title: String,
     /// What the speed window watches.
     pub watch: Watch,
-    /// Target speeds, km/h, at least one, ascending as written.
+    /// Target speeds, km/h, at least one, as written; `resolve_pa` belongs to the first.
     pub targets_kmh: Vec<f64>,
     /// Half width of the window, km/h.
     pub tolerance_kmh: f64,

@@ -1,5 +1,6 @@
 //! The one test binary: each module guards a promise that stands at its head.
 
+mod bad_configs;
 mod holds;
 mod layers;
 mod outside;

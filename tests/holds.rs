@@ -66,7 +66,7 @@ struct File {
 }
 
 fn setup(rule: &Rule) -> Setup {
-    let source = |path: &str, text: String| Source { path: path.to_string(), text };
+    let source = |path: &str, text: String| Source::new(path, text);
     let rig = format!(
         "steadytap = \"rig 1\"\n\
          [[port]]\nname = \"v\"\ndevice = \"/dev/v\"\nbaud = 9600\nformat = \"columns\"\ncolumns = [\"kmh\"]\n\
@@ -88,7 +88,7 @@ fn setup(rule: &Rule) -> Setup {
         rule.targets, rule.tolerance, rule.settle, rule.dwell
     );
     let read = config::setup(&source("outing", outing), &source("rig", rig), &source("car", car.to_string()));
-    read.expect("the small rig is good").0
+    read.expect("the small rig is good").setup
 }
 
 /// One input: when, the order among equals, and what.

@@ -1,167 +1,173 @@
-//! The car file: taps, areas, references.
+//! The car file: geometry, taps, cores, contour, probe and ride height.
+//!
+//! Root table and the rig's channels → [`Draft`]: the car if it is sound, and in any case its tap names.
 
-use super::problem::{Kind, Source};
-use super::reader::{Item, Problems, Table, nearest, shown, unique};
+use super::cursor::{FINITE, Need, POSITIVE, Table, Value};
+use super::names::{Known, choice, line, tap_name};
+use super::problem::shown;
+use super::rig::ChannelFacts;
 use super::{AxleHeight, Car, Core, Probe, ProbeFactor, ProbeModel, RideHeight, Tap};
+use crate::units::Quantity;
 
-/// How far a normal's length may be from 1 before it is worth a word.
-const NORMAL_WITHIN: f64 = 0.01;
+const FACTOR: Need = Need { ok: |x| (0.5..=2.0).contains(&x), says: "from 0.5 to 2, or \"pairs\"" };
+/// A normal whose length is further than this from 1 was probably not meant as one.
+const LENGTH_TOLERANCE: f64 = 0.01;
 
-/// Reads a car; every problem goes to `problems`.
-pub fn read(problems: &Problems<'_>) -> Option<Car> {
-    problems.read(Kind::Car, |top| {
-        let name = top.need_text("name");
-        let reference_area_m2 = top.need_positive("reference_area_m2", 100.0, "m²");
-        let wheelbase_m = top.need_positive("wheelbase_m", 30.0, "m");
-        let tables = top.tables("tap");
-        let taps: Vec<Option<(Item<String>, Tap)>> = tables.iter().map(tap).collect();
-        if tables.is_empty() {
-            problems.error(&(0..0), "the car has no [[tap]]", "add one [[tap]] or more");
-        }
-        unique(problems, "the tap", taps.iter().flatten().map(|(name, _)| name));
-        let names: Vec<&str> = taps.iter().flatten().map(|(name, _)| name.value.as_str()).collect();
-        let cores: Vec<Option<Core>> = top.tables("core").iter().map(|t| core(t, &names)).collect();
-        let contour = top.table("contour").map_or(Some(Vec::new()), |t| contour(&t, &names));
-        let probe = top.table("probe").map_or(Some(UNCORRECTED), |t| probe(&t));
-        let ride_height =
-            top.table("ride_height").map(|t| RideHeight { front: axle(&t, "front"), rear: axle(&t, "rear") });
+/// A car as far as it could be read.
+pub(super) struct Draft {
+    /// The car, if nothing is missing.
+    pub(super) car: Option<Car>,
+    /// Its taps.
+    pub(super) taps: Known<()>,
+}
+
+/// Reads the whole car.
+pub(super) fn read(root: &mut Table, channels: &Known<ChannelFacts>) -> Draft {
+    let name = root.required("name").and_then(|v| line(&v));
+    let reference_area_m2 = root.number("reference_area_m2", &POSITIVE);
+    let wheelbase_m = root.number("wheelbase_m", &POSITIVE);
+    let mut known = Known::new("tap", true);
+    let taps: Vec<_> = root.tables("tap").into_iter().map(|t| tap(t, &mut known)).collect();
+    if taps.is_empty() {
+        root.log.error(root.at, "this car has no tap", "add a [[tap]]");
+    }
+    let mut core_names = Known::new("core", true);
+    let cores: Vec<_> = root.tables("core").into_iter().map(|t| core(t, &known, &mut core_names)).collect();
+    let contour = root.section("contour").and_then(|t| t.map_or(Some(Vec::new()), |t| contour(t, &known)));
+    let probe = root.section("probe").and_then(|t| t.map_or(Some(UNTOUCHED), probe));
+    let ride_height =
+        root.section("ride_height").and_then(|t| t.map_or(Some(None), |t| ride_height(t, channels).map(Some)));
+    let car = || {
         Some(Car {
-            name: name?.value,
+            name: name?,
             reference_area_m2: reference_area_m2?,
             wheelbase_m: wheelbase_m?,
-            taps: taps.into_iter().map(|t| Some(t?.1)).collect::<Option<_>>()?,
+            taps: taps.into_iter().collect::<Option<_>>()?,
             cores: cores.into_iter().collect::<Option<_>>()?,
             contour: contour?,
             probe: probe?,
-            ride_height,
+            ride_height: ride_height?,
         })
-    })
+    };
+    Draft { car: car(), taps: known }
 }
 
-const UNCORRECTED: Probe = Probe { model: ProbeModel::Static, factor: ProbeFactor::Stated(1.0) };
-
-/// Checks a car file alone.
-pub fn check(source: &Source) -> Vec<super::Problem> {
-    let problems = Problems::of(source);
-    read(&problems);
-    problems.into_list()
+fn tap(mut table: Table, known: &mut Known<()>) -> Option<Tap> {
+    let written_name = table.required("name");
+    let name = written_name.and_then(|v| tap_name(&v));
+    let at = table.required("at").and_then(|v| v.numbers(&FINITE));
+    let normal = table.required("normal").and_then(|v| normal(&v));
+    let area_m2 = table.optional_number("area_m2", &POSITIVE);
+    let group = table.optional("group").map_or(Some(None), |v| line(&v).map(Some));
+    table.finish();
+    known.add(written_name.as_ref().zip(name.as_deref()), ());
+    Some(Tap { name: name?, at: at?, normal: normal?, area_m2: area_m2?, group: group? })
 }
 
-fn tap(t: &Table<'_, '_>) -> Option<(Item<String>, Tap)> {
-    let name = t.need_name("name");
-    for key in ["at", "normal"] {
-        t.know(key);
-    }
-    let at = need_vector(t, "at");
-    let normal = need_vector(t, "normal").and_then(|item| unit_vector(t, &item));
-    let area_m2 = t.positive("area_m2", 100.0, "m²");
-    let group = t.text("group").map(|g| g.value);
-    let tap = Tap { name: name.as_ref()?.value.clone(), at: at?.value, normal: normal?, area_m2, group };
-    Some((name?, tap))
-}
-
-fn need_vector(t: &Table<'_, '_>, key: &'static str) -> Option<Item<[f64; 3]>> {
-    if !t.has(key) {
-        t.problems.error(
-            &t.span,
-            format!("the tap has no `{key}`"),
-            format!("add `{key} = [x, y, z]`: x aft of the front axle, y right, z up"),
-        );
-    }
-    t.array::<3>(key)
-}
-
-fn unit_vector(t: &Table<'_, '_>, item: &Item<[f64; 3]>) -> Option<[f64; 3]> {
-    let length = item.value.iter().map(|x| x * x).sum::<f64>().sqrt();
-    if length < 1e-9 {
-        t.problems.error(
-            &item.span,
-            "a normal without a length points nowhere",
-            "write the direction out of the body, such as [1.0, 0.0, 0.0]",
-        );
+fn normal(value: &Value) -> Option<[f64; 3]> {
+    let [x, y, z] = value.numbers(&FINITE)?;
+    let length = x.hypot(y).hypot(z);
+    if length == 0.0 || !length.is_finite() {
+        value.refuse("`normal` has no direction", "give a vector out of the body: [1.0, 0.0, 0.0] looks aft");
         return None;
     }
-    if (length - 1.0).abs() > NORMAL_WITHIN {
-        t.problems.warn(&item.span, format!("the normal has length {length:.3}; its direction is used"), "");
+    if (length - 1.0).abs() > LENGTH_TOLERANCE {
+        let hint = "its direction is used, its length set to 1: check that no number is mistyped";
+        value.log.warn(value.at(), format!("`normal` has length {length:.3}"), hint);
     }
-    Some(item.value.map(|x| x / length))
+    Some([x, y, z].map(|part| part / length))
 }
 
-/// A tap name that the car has.
-fn known_tap(t: &Table<'_, '_>, item: Item<String>, taps: &[&str]) -> Option<String> {
-    if taps.contains(&item.value.as_str()) {
-        return Some(item.value);
+fn core(mut table: Table, taps: &Known<()>, known: &mut Known<()>) -> Option<Core> {
+    let written_name = table.required("name");
+    let name = written_name.and_then(|v| tap_name(&v));
+    let front = table.required("front");
+    let rear = table.required("rear");
+    let bench = table.required("bench").and_then(|v| bench(&v));
+    table.finish();
+    known.add(written_name.as_ref().zip(name.as_deref()), ());
+    let front_name = front.and_then(|v| tap_of(&v, taps));
+    let rear_name = rear.and_then(|v| tap_of(&v, taps));
+    if let Some(value) = rear.filter(|_| front_name.is_some() && front_name == rear_name) {
+        value.refuse("`front` and `rear` are the same tap", "a core needs a tap on each side");
     }
-    let hint = nearest(&item.value, taps.iter().copied());
-    t.problems.error(&item.span, format!("the car has no tap `{}`", shown(&item.value)), hint);
-    None
+    Some(Core { name: name?, front: front_name?, rear: rear_name?, bench: bench? })
 }
 
-fn core(t: &Table<'_, '_>, taps: &[&str]) -> Option<Core> {
-    let name = t.need_name("name");
-    let front = t.need_text("front").and_then(|item| known_tap(t, item, taps));
-    let rear = t.need_text("rear").and_then(|item| known_tap(t, item, taps));
-    let bench = t.rising_pairs("bench", 2);
-    if !t.has("bench") {
-        t.problems.error(
-            &t.span,
-            "the core has no `bench` curve",
-            "add `bench = [[face velocity m/s, pressure drop Pa], …]`",
-        );
-    }
-    let bench = bench.filter(|b| {
-        let good = b.value.iter().all(|p| p[0] > 0.0 && p[1] > 0.0) && b.value.windows(2).all(|w| w[1][1] > w[0][1]);
-        if !good {
-            t.problems.error(&b.span, "the bench curve must rise, and all its numbers be above 0", "");
-        }
-        good
-    });
-    Some(Core { name: name?.value, front: front?, rear: rear?, bench: bench?.value })
-}
-
-fn contour(t: &Table<'_, '_>, taps: &[&str]) -> Option<Vec<String>> {
-    let list = t.texts("taps").unwrap_or_default();
-    if list.len() < 3 {
-        t.problems.error(&t.span, "a contour needs three taps or more, in order round the section", "");
+fn bench(value: &Value) -> Option<Vec<[f64; 2]>> {
+    let points = value.rising_pairs(&POSITIVE)?;
+    if let Some(w) = points.windows(2).find(|w| w[1][1] <= w[0][1]) {
+        let what = format!("`bench`: the drop does not rise from {} to {} Pa", w[0][1], w[1][1]);
+        value.refuse(what, "a faster flow loses more pressure: give [face velocity m/s, pressure drop Pa]");
         return None;
     }
-    unique(t.problems, "the contour's tap", &list);
-    list.into_iter().map(|item| known_tap(t, item, taps)).collect()
+    Some(points)
 }
 
-fn probe(t: &Table<'_, '_>) -> Option<Probe> {
-    let model = match t.text("model") {
-        None => Some(ProbeModel::Static),
-        Some(item) => match item.value.as_str() {
-            "static" => Some(ProbeModel::Static),
-            "gain" => Some(ProbeModel::Gain),
-            other => {
-                t.problems.error(&item.span, format!("unknown probe model `{}`", shown(other)), "static or gain");
-                None
-            }
-        },
-    };
-    let factor = match t.text_or_number("factor") {
-        None => Some(ProbeFactor::Stated(1.0)),
-        Some(item) => match item.value {
-            Ok(k) if (0.5..=2.0).contains(&k) => Some(ProbeFactor::Stated(k)),
-            Err(word) if word == "pairs" => Some(ProbeFactor::Pairs),
-            _ => {
-                t.problems.error(
-                    &item.span,
-                    "the probe factor is neither 0.5 to 2 nor \"pairs\"",
-                    "1.0 is a probe without error",
-                );
-                None
-            }
-        },
-    };
+fn tap_of(value: &Value, taps: &Known<()>) -> Option<String> {
+    let name = value.text()?;
+    taps.find(name, value, value.at()).map(|()| name.to_string())
+}
+
+fn contour(mut table: Table, taps: &Known<()>) -> Option<Vec<String>> {
+    let written = table.required("taps");
+    table.finish();
+    let value = written?;
+    let items = value.items()?;
+    let mut seen = Known::once("tap in `contour`");
+    let names: Vec<_> = items.iter().map(|v| tap_of(v, taps).inspect(|name| seen.add(Some((v, name)), ()))).collect();
+    if items.len() < 3 {
+        value.refuse("`taps` of [contour] names fewer than three", "a closed section needs three or more, in order");
+    }
+    names.into_iter().collect()
+}
+
+const UNTOUCHED: Probe = Probe { model: ProbeModel::Static, factor: ProbeFactor::Stated(1.0) };
+
+fn probe(mut table: Table) -> Option<Probe> {
+    let models = [("static", ProbeModel::Static), ("gain", ProbeModel::Gain)];
+    let model = table.optional("model").map_or(Some(UNTOUCHED.model), |v| choice(&v, &models));
+    let factor = table.optional("factor").map_or(Some(UNTOUCHED.factor), |v| factor(&v));
+    table.finish();
     Some(Probe { model: model?, factor: factor? })
 }
 
-fn axle(t: &Table<'_, '_>, key: &'static str) -> Option<AxleHeight> {
-    let t = t.table(key)?;
-    let channel = t.need_name("channel");
-    let rate = t.need_positive("wheel_rate_n_per_mm", 1e5, "N/mm");
-    Some(AxleHeight { channel: channel?.value, wheel_rate_n_per_mm: rate? })
+fn factor(value: &Value) -> Option<ProbeFactor> {
+    match value.as_text() {
+        Some("pairs") => Some(ProbeFactor::Pairs),
+        Some(text) => {
+            value.refuse(format!("`factor` is \"{}\"", shown(text)), "give a number from 0.5 to 2, or \"pairs\"");
+            None
+        }
+        None => value.number(&FACTOR).map(ProbeFactor::Stated),
+    }
+}
+
+fn ride_height(mut table: Table, channels: &Known<ChannelFacts>) -> Option<RideHeight> {
+    let front = table.optional("front");
+    let rear = table.optional("rear");
+    if front.or(rear).is_none() {
+        table.log.error(table.at, "[ride_height] has neither `front` nor `rear`", "add one or both, or take it out");
+    }
+    table.finish();
+    let axle = |value: Option<Value>| value.map_or(Some(None), |v| axle(&v, channels).map(Some));
+    let (front, rear) = (axle(front), axle(rear));
+    Some(RideHeight { front: front?, rear: rear? })
+}
+
+fn axle(value: &Value, channels: &Known<ChannelFacts>) -> Option<AxleHeight> {
+    let mut table = value.table()?;
+    let channel = table.required("channel");
+    let wheel_rate_n_per_mm = table.number("wheel_rate_n_per_mm", &POSITIVE);
+    table.finish();
+    let channel = channel?;
+    let name = channel.text()?;
+    let facts = channels.find(name, &channel, channel.at());
+    if let Some(quantity) = facts.and_then(|f| f.quantity).filter(|q| *q != Quantity::RideHeight) {
+        let what = format!("channel `{}` is of quantity {}", shown(name), quantity.word());
+        channel.refuse(what, "name a channel of quantity ride-height");
+        return None;
+    }
+    facts?;
+    Some(AxleHeight { channel: name.to_string(), wheel_rate_n_per_mm: wheel_rate_n_per_mm? })
 }

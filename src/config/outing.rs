@@ -1,322 +1,263 @@
-//! The outing file, and the three files together.
+//! The outing file: the test itself, and what it asks of the rig and the car.
+//!
+//! Root table, the rig's channels and the car's taps → [`Outing`], if it is sound.
 
-use super::problem::{Kind, Problem, Severity, Source};
-use super::reader::{Item, Problems, Table, nearest, shown, unique};
-use super::{Air, Car, Channel, Configuration, Outing, Parameter, Rig, Setup, Show, Watch, car, rig};
-use crate::pneumatics::{Gas, settle_of_lag_s};
+use super::cursor::{FINITE, Need, POSITIVE, Table, Value};
+use super::names::{Known, line, unit_of, word};
+use super::problem::{printable, shown};
+use super::rig::ChannelFacts;
+use super::{Air, Configuration, Outing, Parameter, Show, Watch};
 use crate::units::{PRESSURES, Quantity, SPEEDS, Unit};
 use std::collections::BTreeMap;
-use std::ops::Range;
 
-/// The files that an outing names, relative to itself.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub struct Head {
-    /// The rig file.
-    pub rig: String,
-    /// The car file.
-    pub car: String,
-}
+const TARGET: Need = Need { ok: |x| (5.0..=400.0).contains(&x), says: "from 5 to 400 km/h" };
+const SETTLE: Need = Need { ok: |x| (0.0..=3600.0).contains(&x), says: "from 0 to 3600 s" };
+const DWELL: Need = Need { ok: |x| x > 0.0 && x <= 3600.0, says: "above 0 and up to 3600 s" };
+const TRACK: Need = Need { ok: |x| (0.0..=360.0).contains(&x), says: "from 0 to 360 degrees" };
+const TEMPERATURE: Need = Need { ok: |x| (-60.0..=70.0).contains(&x), says: "from -60 to 70 °C" };
+const PRESSURE: Need =
+    Need { ok: |x| (300.0..=1200.0).contains(&x), says: "from 300 to 1200 hPa, as the station has it, not sea level" };
+const HUMIDITY: Need = Need { ok: |x| (0.0..=100.0).contains(&x), says: "from 0 to 100 %" };
 
-/// Reads which rig and car an outing names.
-///
-/// # Errors
-/// The outing's problems, if it names none.
-pub fn outing_head(source: &Source) -> Result<Head, Vec<Problem>> {
-    let problems = Problems::of(source);
-    let head = problems.read(Kind::Outing, |top| {
-        let (rig, car) = (top.need_text("rig"), top.need_text("car"));
-        top.all_known();
-        Some(Head { rig: rig?.value, car: car?.value })
-    });
-    head.ok_or_else(|| problems.into_list())
-}
-
-/// What a file says it is.
-///
-/// # Errors
-/// The problems that keep it from saying.
-pub fn kind(source: &Source) -> Result<Kind, Vec<Problem>> {
-    for kind in [Kind::Rig, Kind::Car, Kind::Outing] {
-        let problems = Problems::of(source);
-        problems.read(kind, |top| {
-            top.all_known();
-            Some(())
-        });
-        if problems.into_list().is_empty() {
-            return Ok(kind);
-        }
-    }
-    let problems = Problems::of(source);
-    let parsed = problems.read(Kind::Outing, |top| {
-        top.all_known();
-        Some(())
-    });
-    let mut list = problems.into_list();
-    if parsed.is_some() {
-        for problem in &mut list {
-            problem.hint =
-                Some("the first key says what a file is: steadytap = \"rig 1\", \"car 1\" or \"outing 1\"".to_string());
-        }
-    }
-    Err(list)
-}
-
-/// Reads all three files; the warnings come with the setup.
-///
-/// # Errors
-/// Every problem of the three files, in their order.
-pub fn setup(outing: &Source, rig: &Source, car: &Source) -> Result<(Setup, Vec<Problem>), Vec<Problem>> {
-    let (rig_problems, car_problems, problems) = (Problems::of(rig), Problems::of(car), Problems::of(outing));
-    let (rig, car) = (rig::read(&rig_problems), car::read(&car_problems));
-    let outing = problems.read(Kind::Outing, |top| {
-        for key in ["rig", "car"] {
-            top.need_text(key);
-        }
-        read(top, rig.as_ref(), car.as_ref())
-    });
-    if let (Some(rig), Some(car)) = (&rig, &car) {
-        ride_heights(&car_problems, rig, car);
-    }
-    let mut list = rig_problems.into_list();
-    list.extend(car_problems.into_list());
-    list.extend(problems.into_list());
-    let broken = list.iter().any(|p| p.severity == Severity::Error);
-    match (rig, car, outing) {
-        (Some(rig), Some(car), Some(outing)) if !broken => Ok((Setup { rig, car, outing }, list)),
-        _ => Err(list),
+/// Warns where averaging would begin before a channel has followed into the window.
+fn settles(settle: Option<(Value, f64)>, channels: &Known<ChannelFacts>) {
+    let Some((value, settle_s)) = settle else { return };
+    let asks = |facts: &ChannelFacts| facts.settles_s.filter(|asks| *asks > settle_s);
+    if let Some((name, facts)) = channels.first(|facts| asks(facts).is_some()) {
+        let what =
+            format!("`settle_s` is {settle_s}, but channel `{name}` asks for {:.2} s", asks(facts).unwrap_or(0.0));
+        value.log.warn(
+            value.at(),
+            what,
+            "let it settle longer, or use a shorter or wider tube: it must follow within 1 %",
+        );
     }
 }
 
-fn ride_heights(problems: &Problems<'_>, rig: &Rig, car: &Car) {
-    let axles = car.ride_height.iter().flat_map(|r| [&r.front, &r.rear]).flatten();
-    for axle in axles {
-        let good = rig.channels.iter().any(|c| c.name == axle.channel && c.quantity == Quantity::RideHeight);
-        if !good {
-            let hint = "add the channel to the rig with quantity = \"ride-height\", or take it out of the car";
-            problems.error(&(0..0), format!("the rig has no ride-height channel `{}`", shown(&axle.channel)), hint);
-        }
-    }
+/// What the other two files know.
+pub(super) struct Fitted<'k> {
+    /// Channels of the rig.
+    pub(super) channels: &'k Known<ChannelFacts>,
+    /// Taps of the car.
+    pub(super) taps: &'k Known<()>,
 }
 
-fn read(top: &Table<'_, '_>, rig: Option<&Rig>, car: Option<&Car>) -> Option<Outing> {
-    let title = top.need_text("title");
-    let watch_word = top.text("watch");
-    let watch = rig.and_then(|rig| watch(top, watch_word, rig));
-    let targets = targets(top);
-    let tolerance_kmh = top.need_positive("tolerance_kmh", 100.0, "km/h");
-    let settle_s = need_in(top, "settle_s", (0.0, 600.0), "s");
-    if let (Some(settle_s), Some(rig)) = (settle_s, rig) {
-        settles(top, settle_s, rig);
+/// A path that an outing names, and where its value begins.
+pub(super) fn path(root: &mut Table, key: &'static str) -> Option<(String, usize)> {
+    let value = root.required(key)?;
+    let text = value.text()?;
+    if text.is_empty() || !text.chars().all(printable) {
+        value.refuse(
+            format!("`{key}` is \"{}\"", shown(text)),
+            "give a path relative to this file, without control or invisible characters",
+        );
+        return None;
     }
-    let dwell_s = top.need_positive("dwell_s", 3600.0, "s");
-    let slope = top.positive("slope", 1000.0, "km/h per s");
-    let out_track_deg = top.number_in("out_track_deg", (0.0, 360.0), "degrees");
-    let passes = top.positive("passes", 1000.0, "passes").map_or(4, |p| p.round() as u32).max(1);
-    let resolve_pa = top.need_positive("resolve_pa", 1e5, "Pa");
-    let show = top.table("show").map_or_else(|| Some(standard_show()), |t| show(&t));
-    let air_table = top.table("air");
-    let air = air_table.as_ref().map_or(Some(Air::STANDARD), air);
-    let configurations = configurations(top);
-    let taps = taps(top, rig, car);
+    Some((text.to_string(), value.at()))
+}
+
+/// Reads the whole outing.
+pub(super) fn read(root: &mut Table, fitted: &Fitted) -> Option<Outing> {
+    let title = root.required("title").and_then(|v| line(&v));
+    let paths = (path(root, "rig"), path(root, "car"));
+    let targets_kmh = root.required("targets_kmh").and_then(|v| targets(&v));
+    let tolerance_kmh = root.number("tolerance_kmh", &POSITIVE);
+    let settle = root.required("settle_s");
+    let settle_s = settle.and_then(|v| v.number(&SETTLE));
+    settles(settle.zip(settle_s), fitted.channels);
+    let watch = watch(root, fitted.channels, settle.zip(settle_s));
+    let dwell_s = root.number("dwell_s", &DWELL);
+    let slope = root.optional_number("slope", &POSITIVE);
+    let out_track_deg = out_track(root, fitted.channels);
+    let passes = root.optional("passes").map_or(Some(4), |v| v.whole(1..1001));
+    let resolve_pa = root.number("resolve_pa", &POSITIVE);
+    let show = show(root);
+    let air_written = root.section("air");
+    let air_stated = matches!(air_written, Some(Some(_)));
+    let air = air_written.and_then(|t| t.map_or(Some(Air::STANDARD), air));
+    let configurations = configurations(root);
+    let taps = taps(root, fitted);
+    let (Some(_), Some(_)) = paths else { return None };
     Some(Outing {
-        title: title?.value,
+        title: title?,
         watch: watch?,
-        targets_kmh: targets?,
+        targets_kmh: targets_kmh?,
         tolerance_kmh: tolerance_kmh?,
         settle_s: settle_s?,
         dwell_s: dwell_s?,
-        slope,
-        out_track_deg,
-        passes,
+        slope: slope?,
+        out_track_deg: out_track_deg?,
+        passes: passes?,
         resolve_pa: resolve_pa?,
         show: show?,
         air: air?,
-        air_stated: air_table.is_some(),
+        air_stated,
         configurations: configurations?,
         taps: taps?,
     })
 }
 
-/// Warns where averaging would begin before a channel has followed into the window.
-fn settles(top: &Table<'_, '_>, settle_s: f64, rig: &Rig) {
-    for channel in &rig.channels {
-        let asks = channel.tube.map_or(settle_of_lag_s(channel.lag_s), |tube| tube.settle_s(&Gas::STANDARD));
-        if asks > settle_s {
-            let what = format!("`settle_s` is {settle_s}, channel `{}` asks for {asks:.2} s to be within 1 %", channel.name);
-            top.problems.warn(&top.span_of("settle_s"), what, "settle longer, or use a shorter or wider tube");
-        }
-    }
-}
-
-fn need_in(t: &Table<'_, '_>, key: &'static str, range: (f64, f64), unit: &str) -> Option<f64> {
-    if !t.has(key) {
-        t.need_number(key);
-    }
-    t.number_in(key, range, unit)
-}
-
-fn targets(top: &Table<'_, '_>) -> Option<Vec<f64>> {
-    if !top.has("targets_kmh") {
-        top.problems.error(&top.span, "the outing has no `targets_kmh`", "add `targets_kmh = [100.0]`");
-    }
-    let item = top.numbers("targets_kmh")?;
-    let good = !item.value.is_empty() && item.value.iter().all(|v| (5.0..=400.0).contains(v));
-    let mut sorted = item.value.clone();
-    sorted.sort_by(f64::total_cmp);
-    if !good || sorted.windows(2).any(|w| w[0] == w[1]) {
-        top.problems.error(&item.span, "`targets_kmh` needs one speed or more, each once, 5 to 400 km/h", "");
+fn targets(value: &Value) -> Option<Vec<f64>> {
+    let items = value.items()?;
+    if items.is_empty() {
+        value.refuse("`targets_kmh` is empty", "give at least one speed in km/h");
         return None;
     }
-    Some(item.value)
+    let mut targets: Vec<f64> = Vec::new();
+    for (item, kmh) in items.iter().filter_map(|item| Some((item, item.number(&TARGET)?))) {
+        if targets.contains(&kmh) {
+            item.refuse(format!("target {kmh} stands twice"), "name each once");
+        }
+        targets.push(kmh);
+    }
+    Some(targets)
 }
 
-/// `speed`, `q`, or a channel's name.
-fn watch(top: &Table<'_, '_>, word: Option<Item<String>>, rig: &Rig) -> Option<Watch> {
-    let span = word.as_ref().map_or(top.span.clone(), |w| w.span.clone());
-    let word = word.map_or("speed".to_string(), |w| w.value);
-    let of = |quantity| rig.channels.iter().find(|c: &&Channel| c.quantity == quantity).map(|c| c.name.clone());
-    let error = |what: String, hint: &str| {
-        top.problems.error(&span, what, hint);
-        None
-    };
-    match (word.as_str(), rig.channels.iter().find(|c| c.name == word)) {
-        ("speed", None) | ("speed", Some(Channel { quantity: Quantity::Speed, .. })) => match of(Quantity::Speed) {
-            Some(name) => {
-                Some(Watch::Channel(if rig.channels.iter().any(|c| c.name == "speed") { word } else { name }))
-            }
-            None => error(
-                "the rig has no channel of quantity speed to watch".to_string(),
-                "add one to the rig, or watch = \"q\"",
-            ),
-        },
-        (_, Some(Channel { quantity: Quantity::DynamicPressure, name, .. })) => Some(Watch::Airspeed(name.clone())),
-        ("q", None) => match of(Quantity::DynamicPressure) {
-            Some(name) => Some(Watch::Airspeed(name)),
-            None => error(
-                "the rig has no channel of quantity dynamic-pressure to watch".to_string(),
-                "add one to the rig, or watch = \"speed\"",
-            ),
-        },
-        (_, Some(Channel { quantity: Quantity::Speed, name, .. })) => Some(Watch::Channel(name.clone())),
-        (name, Some(_)) => {
-            error(format!("channel `{name}` is neither a speed nor a dynamic pressure"), "watch a speed or q")
+fn watch(root: &mut Table, channels: &Known<ChannelFacts>, settle: Option<(Value, f64)>) -> Option<Watch> {
+    let written = root.optional("watch");
+    let text = written.map_or(Some("speed"), |v| v.text())?;
+    let at = written.map_or(root.at, |v| v.at());
+    let (name, quantity, lag_s) = match text {
+        "speed" => first_of(Quantity::Speed, root, channels, at),
+        "q" => first_of(Quantity::DynamicPressure, root, channels, at),
+        name => {
+            let value = written?;
+            let facts = channels.find(name, &value, at)?;
+            Some((name.to_string(), facts.quantity?, facts.lag_s))
         }
-        (name, None) => {
-            let hint = nearest(name, rig.channels.iter().map(|c| c.name.as_str()));
-            error(format!("the rig has no channel `{}` to watch", shown(name)), &hint)
+    }?;
+    if let (Some((value, settle_s)), Some(lag_s)) = (settle, lag_s)
+        && settle_s < lag_s
+    {
+        let what = format!("`settle_s` is {settle_s}, shorter than the lag of the watched channel `{name}`: {lag_s} s");
+        value.refuse(what, format!("let it settle for {lag_s} s or more"));
+    }
+    match quantity {
+        Quantity::Speed => Some(Watch::Channel(name)),
+        Quantity::DynamicPressure => Some(Watch::Airspeed(name)),
+        other => {
+            let hint = "watch \"speed\", \"q\", or a channel of quantity speed or dynamic-pressure";
+            root.log.error(at, format!("`watch` names `{name}`, of quantity {}", other.word()), hint);
+            None
         }
     }
 }
 
-fn standard_show() -> Show {
-    Show { speed: "km/h".to_string(), pressure: "Pa".to_string() }
+type Watched = (String, Quantity, Option<f64>);
+
+fn first_of(wanted: Quantity, root: &Table, channels: &Known<ChannelFacts>, at: usize) -> Option<Watched> {
+    let found = channels.first(|c| c.quantity == Some(wanted));
+    if found.is_none() && channels.whole && channels.first(|c| c.quantity.is_none()).is_none() {
+        let what = format!("nothing to watch: the rig has no channel of quantity {}", wanted.word());
+        root.log.error(at, what, "add one to the rig, or watch another: \"speed\", \"q\" or a channel's name");
+    }
+    found.map(|(name, facts)| (name.to_string(), wanted, facts.lag_s))
 }
 
-fn show(t: &Table<'_, '_>) -> Option<Show> {
-    let pick = |key: &'static str, units: &[Unit], standard: &str| {
-        let Some(item) = t.text(key) else { return Some(standard.to_string()) };
-        if Unit::find(units, &item.value).is_none() {
-            let names: Vec<&str> = units.iter().map(|u| u.name).filter(|n| *n != "inH2O").collect();
-            let what = format!("`{}` cannot be shown as {key}", shown(&item.value));
-            t.problems.error(&item.span, what, format!("one of: {}", names.join(", ")));
-            return None;
-        }
-        Some(item.value)
+fn out_track(root: &mut Table, channels: &Known<ChannelFacts>) -> Option<Option<f64>> {
+    let Some(value) = root.optional("out_track_deg") else { return Some(None) };
+    let readable = channels.whole && channels.first(|c| c.quantity.is_none()).is_none();
+    if readable && channels.first(|c| c.quantity == Some(Quantity::Track)).is_none() {
+        let hint = "add a channel of quantity track, or tell the direction by key";
+        value.log.warn(value.at(), "`out_track_deg` is of no use: the rig has no channel of quantity track", hint);
+    }
+    value.number(&TRACK).map(Some)
+}
+
+fn show(root: &mut Table) -> Option<Show> {
+    let Some(mut table) = root.section("show")? else {
+        return Some(Show { speed: "km/h".into(), pressure: "Pa".into() });
     };
-    let (speed, pressure) = (pick("speed", SPEEDS, "km/h"), pick("pressure", PRESSURES, "Pa"));
+    let mut unit = |key, units: &'static [Unit], absent: &'static str| {
+        table.optional(key).map_or(Some(absent), |v| unit_of(&v, units)).map(String::from)
+    };
+    let speed = unit("speed", SPEEDS, "km/h");
+    let pressure = unit("pressure", PRESSURES, "Pa");
+    table.finish();
     Some(Show { speed: speed?, pressure: pressure? })
 }
 
-fn air(t: &Table<'_, '_>) -> Option<Air> {
-    let temperature_c = need_in(t, "temperature_c", (-60.0, 70.0), "°C");
-    let pressure_hpa = need_in(t, "pressure_hpa", (300.0, 1200.0), "hPa");
-    let humidity_pct = if t.has("humidity_pct") {
-        t.number_in("humidity_pct", (0.0, 100.0), "%")
-    } else {
-        Some(Air::STANDARD.humidity_pct)
-    };
-    t.know("humidity_pct");
+fn air(mut table: Table) -> Option<Air> {
+    let temperature_c = table.number("temperature_c", &TEMPERATURE);
+    let pressure_hpa = table.number("pressure_hpa", &PRESSURE);
+    let humidity_pct = table.number("humidity_pct", &HUMIDITY);
+    table.finish();
     Some(Air { temperature_c: temperature_c?, pressure_hpa: pressure_hpa?, humidity_pct: humidity_pct? })
 }
 
-fn configurations(top: &Table<'_, '_>) -> Option<Vec<Configuration>> {
-    let tables = top.tables("configuration");
-    let list: Vec<Option<(Item<String>, Configuration)>> = tables.iter().map(configuration).collect();
-    unique(top.problems, "the configuration", list.iter().flatten().map(|(letter, _)| letter));
-    let baselines: Vec<Range<usize>> = tables
+fn configurations(root: &mut Table) -> Option<Vec<Configuration>> {
+    let mut letters = Known::new("configuration", true);
+    let mut baseline: Option<usize> = None;
+    let mut all = Vec::new();
+    for table in root.tables("configuration") {
+        let at = table.at;
+        let read = configuration(table, &mut letters);
+        let is_baseline = read.as_ref().is_some_and(|c| c.baseline);
+        if let (true, Some(first)) = (is_baseline, baseline) {
+            let what = format!("a second baseline: the first is at {}", root.log.spot(first));
+            root.log.error(at, what, "exactly one configuration is what the others are compared with");
+        } else if is_baseline {
+            baseline = Some(at);
+        }
+        all.push(read);
+    }
+    let all = all.into_iter().collect::<Option<Vec<_>>>();
+    if baseline.is_none() && all.is_some() {
+        let hint = "add `baseline = true` to the [[configuration]] that the others are compared with";
+        root.log.error(root.at, "no configuration is the baseline", hint);
+    }
+    all
+}
+
+fn configuration(mut table: Table, letters: &mut Known<()>) -> Option<Configuration> {
+    let written = table.required("letter");
+    let letter = written.and_then(|v| word(&v, "-_."));
+    let name = table.optional("name").map_or(Some(String::new()), |v| line(&v));
+    let baseline = table.optional("baseline").map_or(Some(false), |v| v.flag());
+    let parameter = table.optional("parameter").map_or(Some(None), |v| parameter(&v).map(Some));
+    table.finish();
+    letters.add(written.as_ref().zip(letter.as_deref()), ());
+    Some(Configuration { letter: letter?, name: name?, baseline: baseline?, parameter: parameter? })
+}
+
+fn parameter(value: &Value) -> Option<Parameter> {
+    let mut table = value.table()?;
+    let name = table.optional("name").map_or(Some(String::new()), |v| line(&v));
+    let unit = table.required("unit").and_then(|v| line(&v));
+    let value = table.number("value", &FINITE);
+    table.finish();
+    Some(Parameter { name: name?, unit: unit?, value: value? })
+}
+
+fn taps(root: &mut Table, fitted: &Fitted) -> Option<BTreeMap<String, String>> {
+    let table = root.section("taps")?;
+    let entries = table.map(|t| t.entries()).unwrap_or_default();
+    if entries.is_empty() {
+        let hint = "add [taps] with lines such as p1 = \"base-high\"";
+        root.log.warn(root.at, "no channel sits on a tap: there will be nothing to compare", hint);
+    }
+    let mut taken = Known::once("channel on tap");
+    let pairs: Vec<_> = entries
         .iter()
-        .zip(&list)
-        .filter(|(_, c)| c.as_ref().is_some_and(|(_, c)| c.baseline))
-        .map(|(t, _)| t.span.clone())
+        .map(|(at, value)| {
+            let channel = pressure_channel(value, *at, fitted.channels);
+            let tap = value.text().inspect(|tap| taken.add(Some((value, tap)), ()));
+            let known = tap.filter(|tap| fitted.taps.find(tap, value, value.at()).is_some());
+            channel.zip(known.map(String::from))
+        })
         .collect();
-    match (tables.first(), baselines.as_slice()) {
-        (None, _) => {
-            let hint = "add [[configuration]] with letter, name and baseline = true, and one for each change";
-            top.problems.error(&top.span, "the outing has no [[configuration]]", hint);
-        }
-        (Some(first), []) if list.iter().all(Option::is_some) => {
-            top.problems.error(&first.span, "no configuration is the baseline", "add `baseline = true` to one");
-        }
-        (_, [first, second, ..]) => {
-            let place = top.problems.line(first);
-            top.problems.error(second, "a second baseline", format!("the first one is at {place}; only one can be"));
-        }
-        _ => {}
-    }
-    list.into_iter().map(|c| Some(c?.1)).collect()
+    pairs.into_iter().collect()
 }
 
-fn configuration(t: &Table<'_, '_>) -> Option<(Item<String>, Configuration)> {
-    let letter = t.need_name("letter");
-    let name = t.text("name").map_or(String::new(), |n| n.value);
-    let baseline = t.boolean("baseline").unwrap_or(false);
-    let parameter = match t.table("parameter") {
-        None => Some(None),
-        Some(p) => {
-            let (name, unit, value) = (p.need_text("name"), p.text("unit"), p.need_number("value"));
-            name.zip(value).map(|(name, value)| {
-                Some(Parameter { name: name.value, unit: unit.map_or(String::new(), |u| u.value), value: value.value })
-            })
+fn pressure_channel(value: &Value, at: usize, channels: &Known<ChannelFacts>) -> Option<String> {
+    let facts = channels.find(value.key, value, at)?;
+    match facts.quantity {
+        Some(Quantity::Pressure) => Some(value.key.to_string()),
+        Some(other) => {
+            let what = format!("channel `{}` is of quantity {}", shown(value.key), other.word());
+            value.log.error(at, what, "only a channel of quantity pressure sits on a tap");
+            None
         }
-    };
-    let configuration = Configuration { letter: letter.as_ref()?.value.clone(), name, baseline, parameter: parameter? };
-    Some((letter?, configuration))
-}
-
-/// Channel → tap; both known, no tap twice.
-fn taps(top: &Table<'_, '_>, rig: Option<&Rig>, car: Option<&Car>) -> Option<BTreeMap<String, String>> {
-    let Some(table) = top.table("taps") else {
-        top.problems.error(&top.span, "the outing has no [taps]", "add [taps] with lines such as p1 = \"base-high\"");
-        return None;
-    };
-    let entries = table.entries();
-    unique(top.problems, "the tap", entries.iter().map(|(_, tap)| tap));
-    let mut taps = BTreeMap::new();
-    for (channel, tap) in entries {
-        if let Some(rig) = rig {
-            known_channel(top, rig, &channel);
-        }
-        if let Some(car) = car.filter(|car| !car.taps.iter().any(|t| t.name == tap.value)) {
-            let hint = nearest(&tap.value, car.taps.iter().map(|t| t.name.as_str()));
-            top.problems.error(&tap.span, format!("the car has no tap `{}`", shown(&tap.value)), hint);
-        }
-        taps.insert(channel.value, tap.value);
-    }
-    Some(taps)
-}
-
-/// Only a pressure channel of the rig can sit on a tap.
-fn known_channel(top: &Table<'_, '_>, rig: &Rig, channel: &Item<String>) {
-    match rig.channels.iter().find(|c| c.name == channel.value) {
-        None => {
-            let pressures = rig.channels.iter().filter(|c| c.quantity == Quantity::Pressure);
-            let hint = nearest(&channel.value, pressures.map(|c| c.name.as_str()));
-            top.problems.error(&channel.span, format!("the rig has no channel `{}`", shown(&channel.value)), hint);
-        }
-        Some(c) if c.quantity != Quantity::Pressure => {
-            let what = format!("channel `{}` measures {}, it cannot sit on a tap", c.name, c.quantity.word());
-            top.problems.error(&channel.span, what, "only pressure channels do");
-        }
-        Some(_) => {}
+        None => None,
     }
 }

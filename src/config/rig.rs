@@ -1,305 +1,339 @@
 //! The rig file: ports and channels.
+//!
+//! Root table → [`Draft`]: the rig if it is sound, and in any case the channel names for the other files.
 
-use super::problem::{Kind, Source};
-use super::reader::{Item, Problems, Table, nearest, shown, unique};
+use super::cursor::{FINITE, NOT_ZERO, Need, Table, Value};
+use super::names::{Known, choice, line, list, nearest, unit_names, unit_of, word};
+use super::problem::shown;
 use super::{Channel, Convert, LineFormat, NMEA_FIELDS, Port, Rig, UsbId};
-use crate::pneumatics::{Gas, Tube};
-use crate::units::{Quantity, Unit};
+use crate::pneumatics::{Gas, Tube, settle_of_lag_s};
+use crate::units::Quantity;
+use std::collections::BTreeMap;
 
-/// Longest lag of a channel, s.
-const LONGEST_LAG_S: f64 = 5.0;
+const LAG: Need = Need { ok: |x| (0.0..5.0).contains(&x), says: "0 or more and under 5 s" };
+const DAMPING: Need = Need { ok: |x| (0.0..=60.0).contains(&x), says: "from 0 to 60 s" };
+const LENGTH: Need = Need { ok: |x| x > 0.0 && x <= 50.0, says: "above 0 and up to 50 m" };
+const BORE: Need = Need { ok: |x| x > 0.0 && x <= 20.0, says: "above 0 and up to 20 mm" };
+const VOLUME: Need = Need { ok: |x| x > 0.0 && x <= 1000.0, says: "above 0 and up to 1000 cm³" };
+const STALE: Need = Need { ok: |x| x > 0.0 && x <= 3600.0, says: "above 0 and up to 3600 s" };
 
-/// Reads a rig; every problem goes to `problems`.
-pub fn read(problems: &Problems<'_>) -> Option<Rig> {
-    problems.read(Kind::Rig, |top| {
-        let port_tables = top.tables("port");
-        let ports: Vec<Option<(Item<String>, Port)>> = port_tables.iter().map(port).collect();
-        let channel_tables = top.tables("channel");
-        let known: Vec<&Port> = ports.iter().flatten().map(|(_, p)| p).collect();
-        let broken = ports.iter().any(Option::is_none);
-        let channels: Vec<Option<(Item<String>, Channel)>> =
-            channel_tables.iter().map(|t| channel(t, &known, broken)).collect();
-        for (list, what) in [(port_tables.is_empty(), "port"), (channel_tables.is_empty(), "channel")] {
-            if list {
-                problems.error(&(0..0), format!("the rig has no [[{what}]]"), format!("add one [[{what}]] or more"));
-            }
-        }
-        unique(problems, "the port", ports.iter().flatten().map(|(name, _)| name));
-        unique(problems, "the channel", channels.iter().flatten().map(|(name, _)| name));
-        claimed_twice(problems, &port_tables, &ports);
-        let ports = ports.into_iter().map(|p| Some(p?.1)).collect::<Option<_>>()?;
-        let channels = channels.into_iter().map(|c| Some(c?.1)).collect::<Option<_>>()?;
-        Some(Rig { ports, channels })
-    })
+const FORMATS: [(&str, LineFormat); 4] = [
+    ("columns", LineFormat::Columns),
+    ("pairs", LineFormat::Pairs),
+    ("json", LineFormat::Json),
+    ("nmea", LineFormat::Nmea),
+];
+
+const IDENTITY: Convert = Convert::Linear { gain: 1.0, offset: 0.0 };
+
+/// A rig as far as it could be read.
+pub(super) struct Draft {
+    /// The rig, if nothing is missing.
+    pub(super) rig: Option<Rig>,
+    /// Its channels.
+    pub(super) channels: Known<ChannelFacts>,
 }
 
-/// The name of a rig source, for `check`.
-pub fn check(source: &Source) -> Vec<super::Problem> {
-    let problems = Problems::of(source);
-    read(&problems);
-    problems.into_list()
+/// What other files need to know of a channel; `None` what could not be read.
+pub(super) struct ChannelFacts {
+    pub(super) quantity: Option<Quantity>,
+    pub(super) lag_s: Option<f64>,
+    /// Time that it needs to follow a step within 1 %, s.
+    pub(super) settles_s: Option<f64>,
 }
 
-fn port(t: &Table<'_, '_>) -> Option<(Item<String>, Port)> {
-    let name = t.need_name("name");
-    let device = t.text("device");
-    let usb_item = t.text("usb");
-    let usb = usb_item.as_ref().and_then(|item| usb_id(t, item));
-    let baud = t.need_positive("baud", 20e6, "bits/s");
-    let format = t.need_text("format").and_then(|item| format(t, &item));
-    let columns = t.texts("columns");
-    let dtr = t.boolean("dtr").unwrap_or(true);
-    if device.is_none() && usb_item.is_none() {
-        t.problems.error(
-            &t.span,
-            "the port has neither `device` nor `usb`",
-            "add `device = \"/dev/ttyACM0\"` or `usb = \"vid:pid\"`; `steadytap listen` shows what is there",
-        );
-    }
-    let columns = columns_of(t, format, columns);
-    let port = Port {
-        name: name.as_ref()?.value.clone(),
-        device: device.map(|d| d.value),
-        usb,
-        baud: baud.map(|b| b as u32)?,
-        format: format?,
-        columns: columns?,
-        dtr,
-    };
-    (port.device.is_some() || port.usb.is_some()).then_some((name?, port))
-}
-
-fn format(t: &Table<'_, '_>, item: &Item<String>) -> Option<LineFormat> {
-    let format = match item.value.as_str() {
-        "columns" => LineFormat::Columns,
-        "pairs" => LineFormat::Pairs,
-        "json" => LineFormat::Json,
-        "nmea" => LineFormat::Nmea,
-        other => {
-            let hint = nearest(other, ["columns", "pairs", "json", "nmea"]);
-            t.problems.error(&item.span, format!("unknown line format `{}`", shown(other)), hint);
-            return None;
-        }
-    };
-    Some(format)
-}
-
-fn columns_of(
-    t: &Table<'_, '_>,
+/// What the channels need to know of a port.
+struct Fields {
     format: Option<LineFormat>,
-    columns: Option<Vec<Item<String>>>,
-) -> Option<Vec<String>> {
-    match (format, columns) {
+    columns: Option<Vec<String>>,
+}
+
+/// Reads the whole rig.
+pub(super) fn read(root: &mut Table) -> Draft {
+    let mut ports_known = Known::new("port", true);
+    let mut claims = Claims::default();
+    let ports: Vec<_> = root.tables("port").into_iter().map(|t| port(t, &mut ports_known, &mut claims)).collect();
+    let mut channels_known = Known::new("channel", true);
+    let channels: Vec<_> =
+        root.tables("channel").into_iter().map(|t| channel(t, &ports_known, &mut channels_known)).collect();
+    for (count, noun) in [(ports.len(), "port"), (channels.len(), "channel")] {
+        if count == 0 {
+            root.log.error(root.at, format!("this rig has no {noun}"), format!("add a [[{noun}]]"));
+        }
+    }
+    let ports = ports.into_iter().collect::<Option<Vec<_>>>();
+    let channels = channels.into_iter().collect::<Option<Vec<_>>>();
+    let rig = ports.zip(channels).map(|(ports, channels)| Rig { ports, channels });
+    Draft { rig, channels: channels_known }
+}
+
+fn port(mut table: Table, known: &mut Known<Fields>, claims: &mut Claims) -> Option<Port> {
+    let written_name = table.required("name");
+    let name = written_name.and_then(|v| word(&v, "-_"));
+    let device = table.optional("device");
+    let usb = table.optional("usb");
+    let baud = table.required("baud").and_then(|v| v.whole(1..12_000_001));
+    let format = table.required("format").and_then(|v| choice(&v, &FORMATS));
+    let columns = columns(&mut table, format);
+    let dtr = table.optional("dtr").map_or(Some(true), |v| v.flag());
+    if device.is_none() && usb.is_none() {
+        let hint = "add device = \"/dev/ttyACM0\" or usb = \"vid:pid\"; `steadytap listen` shows what is plugged in";
+        table.log.error(table.at, "[[port]] has neither `device` nor `usb`", hint);
+    }
+    let device = device.map_or(Some(None), |v| line(&v).inspect(|path| claims.device(&v, path)).map(Some));
+    let usb = usb.map_or(Some(None), |v| usb_id(&v).inspect(|id| claims.usb(&v, id)).map(Some));
+    table.finish();
+    let named = written_name.as_ref().zip(name.as_deref());
+    known.add(named, Fields { format, columns: columns.clone() });
+    Some(Port { name: name?, device: device?, usb: usb?, baud: baud?, format: format?, columns: columns?, dtr: dtr? })
+}
+
+fn columns(table: &mut Table, format: Option<LineFormat>) -> Option<Vec<String>> {
+    let written = table.optional("columns");
+    match (format, written) {
         (Some(LineFormat::Columns), None) => {
-            let hint = "add `columns = [\"ms\", \"p1\", …]`, one name a number of the line";
-            t.problems.error(&t.span, "format columns needs `columns`", hint);
+            let hint = "add columns = [\"ms\", \"p1\", …]: the numbers of a line, in order";
+            table.log.error(table.at, "[[port]] of format \"columns\" has no `columns`", hint);
             None
         }
-        (Some(LineFormat::Columns), Some(list)) if list.is_empty() || list.len() > 256 => {
-            t.problems.error(&t.span, "`columns` needs 1 to 256 names", "");
+        (Some(LineFormat::Pairs | LineFormat::Json | LineFormat::Nmea), Some(value)) => {
+            value.refuse("`columns` is only for format \"columns\"", "take it out: these lines name their own fields");
             None
         }
-        (Some(LineFormat::Columns), Some(list)) => {
-            unique(t.problems, "the column", &list);
-            Some(list.into_iter().map(|c| c.value).collect())
-        }
-        (Some(_), Some(_)) => {
-            t.problems.error(&t.span, "only format columns has `columns`", "take `columns` out");
-            None
-        }
-        (_, None) | (None, _) => Some(Vec::new()),
+        (_, None) => Some(Vec::new()),
+        (_, Some(value)) => column_names(&value),
     }
 }
 
-/// `vid:pid[:serial]`, the first two hexadecimal.
-fn usb_id(t: &Table<'_, '_>, item: &Item<String>) -> Option<UsbId> {
-    let mut parts = item.value.splitn(3, ':');
-    let mut hex = || parts.next().filter(|p| p.len() <= 4).and_then(|p| u16::from_str_radix(p, 16).ok());
-    let id = hex().zip(hex());
-    let serial = parts.next().map(str::to_string);
-    if id.is_none() {
-        let what = format!("`{}` is no usb identity", shown(&item.value));
-        t.problems.error(&item.span, what, "write vid:pid in hexadecimal, such as 2341:0043, perhaps with :serial");
+fn column_names(value: &Value) -> Option<Vec<String>> {
+    let items = value.items()?;
+    if items.is_empty() {
+        value.refuse("`columns` is empty", "name the numbers of a line, in order");
+        return None;
     }
-    id.map(|(vid, pid)| UsbId { vid, pid, serial })
+    let mut known = Known::once("column");
+    let names: Vec<_> = items.iter().map(|v| line(v).inspect(|name| known.add(Some((v, name)), ()))).collect();
+    names.into_iter().collect()
 }
 
-/// Two ports cannot read one device.
-fn claimed_twice(problems: &Problems<'_>, tables: &[Table<'_, '_>], ports: &[Option<(Item<String>, Port)>]) {
-    for (i, later) in ports.iter().enumerate() {
-        let Some((_, later)) = later else { continue };
-        let same = |p: &Port| match (&p.usb, &later.usb) {
-            (Some(a), Some(b)) => a == b,
-            (None, None) => p.device == later.device,
-            _ => false,
+/// Devices and adapters that a port has claimed, with the offset where.
+#[derive(Default)]
+struct Claims {
+    devices: BTreeMap<String, usize>,
+    adapters: BTreeMap<(u16, u16, Option<String>), usize>,
+}
+
+impl Claims {
+    fn device(&mut self, value: &Value, path: &str) {
+        let first = *self.devices.entry(path.to_string()).or_insert(value.at());
+        if first != value.at() {
+            claimed(value, first, "give each port its own device");
+        }
+    }
+
+    /// One without a serial number may be any of its kind.
+    fn usb(&mut self, value: &Value, id: &UsbId) {
+        let any = (id.vid, id.pid, None);
+        let own = (id.vid, id.pid, id.serial.clone());
+        let alike = |(key, _): &(&(u16, u16, Option<String>), _)| (key.0, key.1) == (id.vid, id.pid);
+        let first = match id.serial {
+            Some(_) => self.adapters.get(&any).or_else(|| self.adapters.get(&own)),
+            None => self.adapters.range(&any..).next().filter(alike).map(|(_, at)| at),
         };
-        let earlier = ports[..i].iter().position(|p| p.as_ref().is_some_and(|(_, p)| same(p)));
-        if let Some(first) = earlier {
-            let place = problems.line(&tables[first].span);
-            let what = "two ports claim one device".to_string();
-            problems.error(&tables[i].span, what, format!("the first one is at {place}; give each its own"));
+        if let Some(first) = first {
+            claimed(value, *first, "tell alike adapters apart by serial number: usb = \"vid:pid:serial\"");
+        }
+        self.adapters.entry(own).or_insert(value.at());
+    }
+}
+
+fn claimed(value: &Value, first: usize, hint: &str) {
+    let text = shown(value.as_text().unwrap_or_default());
+    value.refuse(format!("`{text}` is claimed by two ports: the first at {}", value.log.spot(first)), hint);
+}
+
+fn usb_id(value: &Value) -> Option<UsbId> {
+    let text = value.text()?;
+    let hex = |part: &str| {
+        let digits = part.chars().all(|c| c.is_ascii_hexdigit()) && (1..=4).contains(&part.len());
+        digits.then(|| u16::from_str_radix(part, 16).ok()).flatten()
+    };
+    let mut parts = text.splitn(3, ':');
+    let vid = parts.next().and_then(hex);
+    let pid = parts.next().and_then(hex);
+    let serial = parts.next().map(String::from);
+    let sound = serial.as_ref().is_none_or(|s| !s.is_empty() && s.chars().all(super::problem::printable));
+    match (vid, pid) {
+        (Some(vid), Some(pid)) if sound => Some(UsbId { vid, pid, serial }),
+        _ => {
+            let hint = "write \"vid:pid\" or \"vid:pid:serial\", vid and pid in hexadecimal: for example \"1209:0001\"";
+            value.refuse(format!("`usb` is \"{}\"", shown(text)), hint);
+            None
         }
     }
 }
 
-fn channel(t: &Table<'_, '_>, ports: &[&Port], broken: bool) -> Option<(Item<String>, Channel)> {
-    let name = t.need_name("name");
-    let from = t.need_text("from").and_then(|item| from(t, &item, ports, broken));
-    let quantity = t.need_text("quantity").and_then(|item| quantity(t, &item));
-    let unit = unit(t, quantity);
-    let convert = t.table("convert").map_or(Some(Convert::Linear { gain: 1.0, offset: 0.0 }), |c| convert(&c));
-    let range = t.array::<2>("range").map(|item| {
-        if item.value[0] >= item.value[1] {
-            let [low, high] = item.value;
-            t.problems.error(
-                &item.span,
-                format!("impossible range: {low} is not below {high}"),
-                "write [lowest, highest]",
-            );
-        }
-        item.value
-    });
-    let lag = t.number_in("lag_s", (0.0, LONGEST_LAG_S), "s");
-    let tube = t.table("tube").map(|tube_table| tube(&tube_table));
-    if let (Some(_), Some(_)) = (&tube, lag) {
-        t.problems.error(&t.span, "both `tube` and `lag_s`", "keep one: the tube's delay is the lag");
-    }
-    let tube = tube.flatten();
-    let lag_s = tube.map_or(lag.unwrap_or(0.0), |tube| tube.time_constant_s(&Gas::STANDARD).min(LONGEST_LAG_S));
-    let damping_s = t.number_in("damping_s", (0.0, 60.0), "s").unwrap_or(0.8);
-    let stale_s = t.positive("stale_s", 3600.0, "s").unwrap_or(quantity.map_or(5.0, default_stale_s));
-    let (port, field) = from?;
-    let channel = Channel {
-        name: name.as_ref()?.value.clone(),
-        port,
-        field,
+fn channel(mut table: Table, ports: &Known<Fields>, known: &mut Known<ChannelFacts>) -> Option<Channel> {
+    let written_name = table.required("name");
+    let name = written_name.and_then(|v| word(&v, "-_."));
+    let from = table.required("from").and_then(|v| origin(&v, ports));
+    let quantity = table.required("quantity").and_then(|v| choice(&v, &Quantity::ALL.map(|q| (q.word(), q))));
+    let unit = unit(&mut table, quantity, from.as_ref());
+    let convert = table.optional("convert").map_or(Some(IDENTITY), |v| convert(&v));
+    let range = table.optional("range").map_or(Some(None), |v| range(&v).map(Some));
+    let tube = tube(&mut table);
+    let lag_s = match tube {
+        Some(Some(tube)) => Some(tube.time_constant_s(&Gas::STANDARD)),
+        Some(None) => table.number_or("lag_s", &LAG, 0.0),
+        None => None,
+    };
+    let damping_s = table.number_or("damping_s", &DAMPING, 0.8);
+    let stale_s = table.number_or("stale_s", &STALE, quantity.map_or(5.0, stale_default_s));
+    table.finish();
+    known.add(written_name.as_ref().zip(name.as_deref()), facts(quantity, lag_s, tube.flatten()));
+    let from = from?;
+    Some(Channel {
+        name: name?,
+        port: from.port,
+        field: from.field,
         quantity: quantity?,
         unit: unit?,
         convert: convert?,
-        range,
-        lag_s,
-        tube,
-        damping_s,
-        stale_s,
-    };
-    Some((name?, channel))
+        range: range?,
+        lag_s: lag_s?,
+        tube: tube?,
+        damping_s: damping_s?,
+        stale_s: stale_s?,
+    })
 }
 
-/// `tube = { length_m = 1.5, bore_mm = 2.0, volume_cm3 = 0.5 }`.
-fn tube(t: &Table<'_, '_>) -> Option<Tube> {
-    let length_m = t.need_positive("length_m", 50.0, "m");
-    let bore_mm = t.need_positive("bore_mm", 20.0, "mm");
-    let volume_cm3 = t.need_positive("volume_cm3", 1000.0, "cm³");
-    Some(Tube { length_m: length_m?, bore_mm: bore_mm?, volume_cm3: volume_cm3? })
+/// What the outing needs to know of a channel.
+fn facts(quantity: Option<Quantity>, lag_s: Option<f64>, tube: Option<Tube>) -> ChannelFacts {
+    let settles_s = tube.map(|tube| tube.settle_s(&Gas::STANDARD)).or(lag_s.map(settle_of_lag_s));
+    ChannelFacts { quantity, lag_s, settles_s }
 }
 
-/// How long a quantity may be silent where the rig does not say: a 1 Hz GPS must work, air changes slowly.
-fn default_stale_s(quantity: Quantity) -> f64 {
+/// The tube between tap and sensor, instead of a lag.
+fn tube(table: &mut Table) -> Option<Option<Tube>> {
+    let Some(value) = table.optional("tube") else { return Some(None) };
+    if table.optional("lag_s").is_some() {
+        value.refuse("both `tube` and `lag_s`", "keep one: the tube's delay is the lag");
+        return None;
+    }
+    let mut parts = value.table()?;
+    let length_m = parts.number("length_m", &LENGTH);
+    let bore_mm = parts.number("bore_mm", &BORE);
+    let volume_cm3 = parts.number("volume_cm3", &VOLUME);
+    parts.finish();
+    Some(Some(Tube { length_m: length_m?, bore_mm: bore_mm?, volume_cm3: volume_cm3? }))
+}
+
+fn stale_default_s(quantity: Quantity) -> f64 {
     match quantity {
         Quantity::Pressure | Quantity::DynamicPressure | Quantity::RideHeight => 0.5,
+        // A 1 Hz receiver may miss one sentence.
         Quantity::Speed | Quantity::Track => 2.5,
         Quantity::Temperature | Quantity::Barometer | Quantity::Humidity => 60.0,
         Quantity::Other => 5.0,
     }
 }
 
-/// `port.field`, both known.
-fn from(t: &Table<'_, '_>, item: &Item<String>, ports: &[&Port], broken: bool) -> Option<(String, String)> {
-    let error = |what: String, hint: String| t.problems.error(&item.span, what, hint);
-    let Some((port_name, field)) = item.value.split_once('.') else {
-        error(format!("`{}` is no port.field", shown(&item.value)), "write from = \"gauge.p1\"".to_string());
+/// Where a channel comes from.
+struct Origin {
+    port: String,
+    field: String,
+    nmea: bool,
+}
+
+fn origin(value: &Value, ports: &Known<Fields>) -> Option<Origin> {
+    let text = line(value)?;
+    let Some((port, field)) = text.split_once('.').filter(|(port, field)| !port.is_empty() && !field.is_empty()) else {
+        value.refuse(format!("`from` is \"{}\"", shown(&text)), "write \"port.field\": for example \"gauge.p1\"");
         return None;
     };
-    let Some(port) = ports.iter().find(|p| p.name == port_name) else {
-        if !broken {
-            let hint = nearest(port_name, ports.iter().map(|p| p.name.as_str()));
-            error(format!("the rig has no port `{}`", shown(port_name)), hint);
+    let fields = ports.find(port, value, value.at())?;
+    let nmea = fields.format == Some(LineFormat::Nmea);
+    let names: Vec<&str> = match (&fields.columns, fields.format) {
+        (Some(columns), Some(LineFormat::Columns)) => columns.iter().map(String::as_str).collect(),
+        (_, Some(LineFormat::Nmea)) => NMEA_FIELDS.iter().map(|(name, _)| *name).collect(),
+        (_, Some(LineFormat::Pairs | LineFormat::Json)) => vec![field],
+        // The columns themselves are at fault: nothing to hold the field against.
+        _ => return None,
+    };
+    if !names.contains(&field) {
+        let guess = nearest(field, names.iter().copied()).map(|k| format!("did you mean `{k}`? ")).unwrap_or_default();
+        let what = format!("port `{port}` has no field `{}`", shown(field));
+        value.refuse(what, format!("{guess}its fields: {}", list(names.into_iter())));
+        return None;
+    }
+    Some(Origin { port: port.into(), field: field.into(), nmea })
+}
+
+fn unit(table: &mut Table, quantity: Option<Quantity>, from: Option<&Origin>) -> Option<String> {
+    let written = table.optional("unit");
+    let quantity = quantity?;
+    if quantity == Quantity::Other {
+        return written.map_or(Some(String::new()), |v| line(&v));
+    }
+    let Some(value) = written else {
+        let hint = format!("add `unit = …`, one of: {}", unit_names(quantity.units()));
+        table.log.error(table.at, format!("[[channel]] of quantity {} has no `unit`", quantity.word()), hint);
+        return None;
+    };
+    let unit = unit_of(&value, quantity.units())?;
+    let given = from.filter(|from| from.nmea).and_then(|from| NMEA_FIELDS.iter().find(|(name, _)| *name == from.field));
+    match given {
+        Some((name, given)) if *given != unit => {
+            let what = format!("`unit` is \"{unit}\", but `{name}` of an nmea port comes in \"{given}\"");
+            value.refuse(what, format!("the reader has converted it already: unit = \"{given}\""));
+            None
         }
-        return None;
-    };
-    let (fields, what): (Vec<&str>, _) = match port.format {
-        LineFormat::Columns => (port.columns.iter().map(String::as_str).collect(), "column"),
-        LineFormat::Nmea => (NMEA_FIELDS.to_vec(), "field"),
-        LineFormat::Pairs | LineFormat::Json => return Some((port_name.to_string(), field.to_string())),
-    };
-    if !fields.contains(&field) {
-        error(format!("port `{port_name}` has no {what} `{}`", shown(field)), nearest(field, fields));
-        return None;
+        _ => Some(unit.to_string()),
     }
-    Some((port_name.to_string(), field.to_string()))
 }
 
-fn quantity(t: &Table<'_, '_>, item: &Item<String>) -> Option<Quantity> {
-    let found = Quantity::ALL.into_iter().find(|q| q.word() == item.value);
-    if found.is_none() {
-        let hint = nearest(&item.value, Quantity::ALL.map(Quantity::word));
-        t.problems.error(&item.span, format!("unknown quantity `{}`", shown(&item.value)), hint);
-    }
-    found
-}
-
-/// The unit of a channel: one of its quantity's; only `other` may go without.
-fn unit(t: &Table<'_, '_>, quantity: Option<Quantity>) -> Option<String> {
-    let item = match quantity {
-        Some(Quantity::Other) | None => t.text("unit"),
-        Some(_) => Some(t.need_text("unit")?),
-    };
-    let (Some(item), Some(quantity)) = (item, quantity) else { return Some(String::new()) };
-    let units = quantity.units();
-    let names: Vec<&str> = units.iter().map(|u| u.name).filter(|n| *n != "inH2O").collect();
-    if item.value == "inH2O" && quantity.inside() == "Pa" {
-        let what = "an inch of water has three values: which one?";
-        t.problems.error(
-            &item.span,
-            what,
-            "say inH2O-4C (249.082 Pa), inH2O-60F (248.84 Pa), or convert to Pa by 249.0889 for the conventional one",
-        );
-        return None;
-    }
-    if !units.is_empty() && Unit::find(units, &item.value).is_none() {
-        let what = format!("`{}` is no unit of {}", shown(&item.value), quantity.word());
-        t.problems.error(&item.span, what, format!("one of: {}", names.join(", ")));
-        return None;
-    }
-    Some(item.value)
-}
-
-fn convert(t: &Table<'_, '_>) -> Option<Convert> {
-    let points = t.rising_pairs("points", 2);
-    let ratiometric = t.table("ratiometric").map(|r| ratiometric(&r));
-    let gain = t.number("gain");
-    let offset = t.number("offset");
-    let kinds = [points.is_some(), ratiometric.is_some(), gain.is_some() || offset.is_some()];
-    if kinds.iter().filter(|k| **k).count() > 1 {
-        t.problems.error(&t.span, "more than one conversion", "keep one of gain and offset, points, ratiometric");
-        return None;
-    }
-    if let Some(gain) = gain.as_ref().filter(|g| g.value == 0.0) {
-        t.problems.error(&gain.span, "a gain of 0 makes every reading the same", "");
-        return None;
-    }
-    match (points, ratiometric) {
-        (Some(points), _) => Some(Convert::Points(points.value)),
-        (None, Some(ratiometric)) => ratiometric,
-        (None, None) => {
-            Some(Convert::Linear { gain: gain.map_or(1.0, |g| g.value), offset: offset.map_or(0.0, |o| o.value) })
+fn convert(value: &Value) -> Option<Convert> {
+    let mut table = value.table()?;
+    let gain = table.optional("gain");
+    let offset = table.optional("offset");
+    let points = table.optional("points");
+    let ratiometric = table.optional("ratiometric");
+    table.finish();
+    let linear = gain.or(offset).is_some();
+    match (linear, points, ratiometric) {
+        (true, None, None) => {
+            let gain = gain.map_or(Some(1.0), |v| v.number(&NOT_ZERO));
+            let offset = offset.map_or(Some(0.0), |v| v.number(&FINITE));
+            Some(Convert::Linear { gain: gain?, offset: offset? })
         }
-    }
-}
-
-fn ratiometric(t: &Table<'_, '_>) -> Option<Convert> {
-    let supply = t.need_positive("supply", 1e9, "raw units");
-    let zero = t.need_number("zero").map(|z| z.value);
-    let full = t.need_number("full").map(|f| f.value);
-    let span = t.need_number("span").filter(|s| {
-        if s.value == 0.0 {
-            t.problems.error(
-                &s.span,
-                "a span of 0 cannot be divided by",
-                "the span is the change of output over `full`, as a share of the supply",
+        (false, Some(points), None) => points.rising_pairs(&FINITE).map(Convert::Points),
+        (false, None, Some(ratiometric)) => ratio(&ratiometric),
+        _ => {
+            let what = if linear { "`convert` mixes two ways" } else { "`convert` says no way, or two" };
+            value.refuse(
+                what,
+                "give one: { gain, offset }, { points } or { ratiometric }; leave it out for figures as they come",
             );
+            None
         }
-        s.value != 0.0
-    });
-    Some(Convert::Ratiometric { supply: supply?, zero: zero?, span: span?.value, full: full? })
+    }
+}
+
+fn ratio(value: &Value) -> Option<Convert> {
+    let mut table = value.table()?;
+    let supply = table.number("supply", &NOT_ZERO);
+    let zero = table.number("zero", &FINITE);
+    let span = table.number("span", &NOT_ZERO);
+    let full = table.number("full", &NOT_ZERO);
+    table.finish();
+    Some(Convert::Ratiometric { supply: supply?, zero: zero?, span: span?, full: full? })
+}
+
+fn range(value: &Value) -> Option<[f64; 2]> {
+    let [lo, hi] = value.numbers(&FINITE)?;
+    if lo >= hi {
+        value.refuse(format!("`range` runs from {lo} to {hi}"), "give the lowest trusted figure, then the highest");
+        return None;
+    }
+    Some([lo, hi])
 }

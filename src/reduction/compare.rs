@@ -346,6 +346,11 @@ impl<'a> Model<'a> {
         DVector::from_fn(self.design.ncols(), |i, _| f64::from(u8::from(i == j)))
     }
 
+    /// Every configuration's level, without saying how sure it is.
+    pub fn level_values(&self) -> Vec<(&'a str, f64)> {
+        self.present.iter().enumerate().map(|(j, letter)| (*letter, self.fit.estimates[j])).collect()
+    }
+
     /// Every configuration's level.
     pub fn levels(&self, zeros: &[Zeros<'_>]) -> Vec<Outcome<'a>> {
         let each = self.present.iter().enumerate().map(|(j, letter)| Outcome {

@@ -134,7 +134,11 @@ impl Quadratic {
         let [_, b1, b2] = self.b;
         let gradient = [-1.0 / (2.0 * b2), b1 / (2.0 * b2 * b2)];
         let v = |i: usize, j: usize| self.covariance[(i, j)];
-        (gradient[0] * gradient[0] * v(1, 1) + 2.0 * gradient[0] * gradient[1] * v(1, 2) + gradient[1] * gradient[1] * v(2, 2)).max(0.0).sqrt()
+        (gradient[0] * gradient[0] * v(1, 1)
+            + 2.0 * gradient[0] * gradient[1] * v(1, 2)
+            + gradient[1] * gradient[1] * v(2, 2))
+        .max(0.0)
+        .sqrt()
     }
 }
 
@@ -261,12 +265,15 @@ pub struct SweepRow {
 }
 
 /// Sweeps one model's levels over settings given by configuration; none below three settings.
-pub fn sweep(model: &Model<'_>, setting: impl Fn(&str) -> Option<f64>) -> Option<(Vec<(f64, f64)>, Option<Quadratic>, Option<f64>)> {
+pub fn sweep(
+    model: &Model<'_>,
+    setting: impl Fn(&str) -> Option<f64>,
+) -> Option<(Vec<(f64, f64)>, Option<Quadratic>, Option<f64>)> {
     let (fit, design, observations) = model.parts();
     let xs: Vec<Option<f64>> = observations.iter().map(|o| setting(&o.pass.configuration)).collect();
     let mut levels: Vec<(f64, f64)> = Vec::new();
-    for outcome in model.levels(&[]).iter().filter(|o| o.passes[0] > 0) {
-        levels.extend(setting(outcome.configuration).map(|x| (x, outcome.estimate.value)));
+    for (letter, value) in model.level_values() {
+        levels.extend(setting(letter).map(|x| (x, value)));
     }
     levels.sort_by(|a, b| a.0.total_cmp(&b.0));
     let mut settings: Vec<f64> = levels.iter().map(|l| l.0).collect();
@@ -275,7 +282,7 @@ pub fn sweep(model: &Model<'_>, setting: impl Fn(&str) -> Option<f64>) -> Option
         return (settings.len() >= 3).then_some((levels, None, None));
     }
     // The configurations' columns give way to 1, x, x²; the nuisance columns stay.
-    let configurations = model.levels(&[]).len();
+    let configurations = model.level_values().len();
     let nuisance = design.ncols() - configurations;
     let curve = DMatrix::from_fn(design.nrows(), 3 + nuisance, |i, j| match j {
         0..=2 => xs[i].unwrap_or(0.0).powi(j as i32),
@@ -283,7 +290,8 @@ pub fn sweep(model: &Model<'_>, setting: impl Fn(&str) -> Option<f64>) -> Option
     });
     let y = DVector::from_iterator(observations.len(), observations.iter().map(|o| o.y));
     let Some(quadratic) = model::fit(&curve, &y) else { return Some((levels, None, None)) };
-    let test = lack_of_fit((quadratic.residuals.norm_squared(), quadratic.dof), (fit.residuals.norm_squared(), fit.dof));
+    let test =
+        lack_of_fit((quadratic.residuals.norm_squared(), quadratic.dof), (fit.residuals.norm_squared(), fit.dof));
     let p = test.map(|(_, p)| p);
     let fits = p.is_none_or(|p| p > ALPHA);
     Some((levels, if fits { Quadratic::of(&quadratic) } else { None }, p))

@@ -1,8 +1,8 @@
 //! The reduction as text of at most 100 columns: the verdicts first, in words; every number with its unit and half-width.
 
 use crate::config::Show;
-use crate::reduction::{Reduction, words_of_interval};
 use crate::reduction::compare::{Comparison, Estimate, Level, Verdict};
+use crate::reduction::{Reduction, words_of_interval};
 use crate::units::{PRESSURES, STANDARD_GRAVITY, Unit};
 use std::fmt::Write;
 
@@ -230,7 +230,9 @@ fn meanings(out: &mut String, r: &Reduction) {
         let curve = match (&s.quadratic, s.extreme) {
             (None, _) => "a quadratic does not fit, see the levels".to_string(),
             (Some(_), None) => "no extreme within the tested range".to_string(),
-            (Some(_), Some((x, set))) => format!("extreme at {x:.1}, {}", words_of_interval(set, &safe(&s.parameter.1))),
+            (Some(_), Some((x, set))) => {
+                format!("extreme at {x:.1}, {}", words_of_interval(set, &safe(&s.parameter.1)))
+            }
         };
         wrapped(out, &format!("{} {} km/h: Cp {}; {curve}", safe(&s.tap), s.target_kmh, settings.join(", ")));
     }

@@ -54,10 +54,11 @@ fn toml(path: &Path) -> Found {
         Err(trouble) => return Found { errors: vec![trouble], ..Found::default() },
     };
     let (word, problems) = match config::kind(&source) {
-        Ok(Kind::Rig) => ("rig", config::check_rig(&source)),
-        Ok(Kind::Car) => ("car", config::check_car(&source)),
-        Ok(Kind::Outing) => return outing(path),
-        Err(problems) => ("", problems),
+        Some(Kind::Rig) => ("rig", config::check_rig(&source)),
+        Some(Kind::Car) => ("car", config::check_car(&source)),
+        Some(Kind::Outing) => return outing(path),
+        // It says what is wrong with the line that should say what the file is.
+        None => ("", config::check_outing(&source)),
     };
     sorted(word, &problems)
 }

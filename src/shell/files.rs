@@ -62,7 +62,7 @@ pub fn source(path: &Path) -> Result<Source, Trouble> {
             .at(format!("{}:{line}", path.display()))
             .hint("save it as UTF-8, or give the right file")
     })?;
-    Ok(Source { path: path.display().to_string(), text })
+    Ok(Source::new(path.display().to_string(), text))
 }
 
 /// Outing, rig and car, read from the outing file and the two files that it names; and what should be looked at.
@@ -76,8 +76,8 @@ pub fn setup_and_warnings(outing: &Path) -> Result<(Setup, Vec<Trouble>), Vec<Tr
     let (rig, car) = (source(&beside(&head.rig)), source(&beside(&head.car)));
     match (rig, car) {
         (Ok(rig), Ok(car)) => {
-            let (setup, warnings) = config::setup(&source_of_outing, &rig, &car).map_err(|p| troubles(&p))?;
-            Ok((setup, troubles(&warnings)))
+            let checked = config::setup(&source_of_outing, &rig, &car).map_err(|p| troubles(&p))?;
+            Ok((checked.setup, troubles(&checked.warnings)))
         }
         (rig, car) => Err([rig.err(), car.err()].into_iter().flatten().collect()),
     }
@@ -92,7 +92,7 @@ pub fn troubles(problems: &[config::Problem]) -> Vec<Trouble> {
 pub fn trouble(problem: &config::Problem) -> Trouble {
     let place = &problem.place;
     let at = format!("{}:{}:{}", place.file, place.line, place.column);
-    Trouble { what: problem.what.clone(), place: Some(at), hint: problem.hint.clone() }
+    Trouble { what: problem.what.clone(), place: Some(at), hint: Some(problem.hint.clone()) }
 }
 
 /// A session file.

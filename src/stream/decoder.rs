@@ -90,7 +90,7 @@ impl Decoder {
     pub fn new(rig: &Rig, port: &Port) -> Self {
         let fields: Vec<String> = match port.format {
             LineFormat::Columns => port.columns.clone(),
-            LineFormat::Nmea => NMEA_FIELDS.map(str::to_string).to_vec(),
+            LineFormat::Nmea => NMEA_FIELDS.map(|(name, _)| name.to_string()).to_vec(),
             LineFormat::Pairs | LineFormat::Json => {
                 let mut used: Vec<_> =
                     rig.channels.iter().filter(|c| c.port == port.name).map(|c| c.field.clone()).collect();
