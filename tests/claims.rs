@@ -4,6 +4,8 @@ mod bad_configs;
 mod holds;
 mod layers;
 mod outside;
+mod reduction_coverage;
+mod reduction_outings;
 mod samples_and_readme;
 mod screens;
 mod simulate_van;

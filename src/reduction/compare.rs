@@ -1,7 +1,7 @@
 //! Configurations against the baseline: one linear model a tap and target over all passes, contrasts, verdicts.
 //!
 //! Cp of pass i = level of its configuration + heading/2·(±1) + session + drift·(t − t̄) + scatter, by ordinary least squares. Heading
-//! enters where every configuration was driven both ways; drift where the baseline was driven in separate blocks; session where there are
+//! enters where a configuration was driven both ways; drift where the baseline was driven in separate blocks; session where there are
 //! several. The error of the zeros is common to passes and is added outside the scatter.
 
 use super::inference::{ALPHA, POWER, effective_dof, holm, passes_for, t_quantile, t_two_sided_p};
@@ -14,6 +14,10 @@ use std::collections::{BTreeMap, BTreeSet};
 
 /// Degrees of freedom that a term must leave.
 const DOF_TO_LEAVE: usize = 2;
+/// Degrees of freedom that a squared drift must leave to be told from scatter.
+const DOF_TO_BEND: usize = 8;
+/// Family error rate at which a drift is said to bend.
+const P_BENT: f64 = 0.01;
 
 /// A value with its 95 % half-width; none when nothing says how sure it is.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -101,6 +105,8 @@ pub enum Weakness {
     OneWay(String),
     /// The baseline was driven in one block: drift cannot be told from a change.
     BaselineOnce,
+    /// The drift bends: what a straight one leaves over shows as a change.
+    Bent,
     /// No degrees of freedom: no intervals.
     NoScatter,
 }
@@ -112,6 +118,8 @@ pub struct Compared {
     pub levels: Vec<Level>,
     /// Differences from the baseline.
     pub comparisons: Vec<Comparison>,
+    /// p of "the drift is straight" by tap, where it could be tested.
+    straightness: Vec<f64>,
     /// What is weak about the design.
     pub weaknesses: BTreeSet<Weakness>,
 }
@@ -171,6 +179,9 @@ pub fn compare(passes: &[&Pass], zeros: &[Zeros<'_>], taps: &[String], question:
             model.compare(tap, zeros, &mut all);
         }
     }
+    if holm(&all.straightness).iter().any(|p| *p <= P_BENT) {
+        all.weaknesses.insert(Weakness::Bent);
+    }
     judge(&mut all.comparisons, question.resolve_cp);
     all
 }
@@ -214,6 +225,8 @@ pub struct Model<'a> {
     present: Vec<&'a str>,
     design: DMatrix<f64>,
     weaknesses: BTreeSet<Weakness>,
+    /// Square of the time, for each session with a drift.
+    squares: Vec<Vec<f64>>,
     fit: Fit,
 }
 
@@ -262,30 +275,28 @@ impl Columns<'_, '_> {
         }
     }
 
-    /// Where every configuration was driven both ways; else the ones that were not, if others were.
+    /// Enters where some configuration was driven both ways; those not driven every way are named.
     fn add_heading(&mut self, present: &[&str]) -> Vec<Weakness> {
-        let driven = |letter: &str, way: Direction| {
-            self.observations.iter().any(|o| o.pass.configuration == letter && o.pass.direction == way)
+        let ways = |letter: &str| -> BTreeSet<Direction> {
+            self.observations.iter().filter(|o| o.pass.configuration == letter).map(|o| o.pass.direction).collect()
         };
-        let both: Vec<bool> = present.iter().map(|c| driven(c, Direction::Out) && driven(c, Direction::Back)).collect();
-        if both.iter().all(|b| *b) {
-            let half = |o: &Observation<'_>| match o.pass.direction {
-                Direction::Out => 0.5,
-                Direction::Back => -0.5,
-                Direction::Other => 0.0,
-            };
-            let column: Vec<f64> = self.observations.iter().map(half).collect();
+        let all: BTreeSet<Direction> = self.observations.iter().map(|o| o.pass.direction).collect();
+        let partly = present.iter().filter(|c| ways(c) != all).map(|c| Weakness::OneWay((*c).to_string())).collect();
+        let half = |o: &Observation<'_>| match o.pass.direction {
+            Direction::Out => 0.5,
+            Direction::Back => -0.5,
+            Direction::Other => 0.0,
+        };
+        let column: Vec<f64> = self.observations.iter().map(half).collect();
+        if column.iter().any(|x| *x != column[0]) {
             self.add(&column);
-            return Vec::new();
         }
-        let mixed = both.iter().any(|b| *b);
-        let one_way = present.iter().zip(&both).filter(|(_, both)| mixed && !**both);
-        one_way.map(|(c, _)| Weakness::OneWay((*c).to_string())).collect()
+        partly
     }
 
-    /// A drift for each session in which the baseline was driven both before and after something else; says whether any could be told.
-    fn add_drift(&mut self, baseline: &str) -> bool {
-        let mut told = false;
+    /// A drift for each session in which the baseline was driven both before and after something else; the squares of those told.
+    fn add_drift(&mut self, baseline: &str) -> Vec<Vec<f64>> {
+        let mut squares = Vec::new();
         for session in self.sessions() {
             let within: Vec<&Pass> =
                 self.observations.iter().map(|o| o.pass).filter(|p| p.session == session).collect();
@@ -297,9 +308,11 @@ impl Columns<'_, '_> {
             let mean = within.iter().map(|p| p.t_s).sum::<f64>() / within.len() as f64;
             let of = |o: &Observation<'_>| if o.pass.session == session { (o.pass.t_s - mean) / 3600.0 } else { 0.0 };
             let column: Vec<f64> = self.observations.iter().map(of).collect();
-            told |= self.add(&column);
+            if self.add(&column) {
+                squares.push(column.iter().map(|t| t * t).collect());
+            }
         }
-        told
+        squares
     }
 }
 
@@ -313,7 +326,8 @@ impl<'a> Model<'a> {
         let mut columns = Columns { observations: &observations, design };
         columns.add_sessions();
         let mut weaknesses: BTreeSet<Weakness> = columns.add_heading(&present).into_iter().collect();
-        if !columns.add_drift(question.baseline) && present.len() > 1 {
+        let squares = columns.add_drift(question.baseline);
+        if squares.is_empty() && present.len() > 1 {
             weaknesses.insert(Weakness::BaselineOnce);
         }
         let design = columns.design;
@@ -322,7 +336,7 @@ impl<'a> Model<'a> {
         if fit.dof == 0 {
             weaknesses.insert(Weakness::NoScatter);
         }
-        let mut model = Self { observations, question, present, design, weaknesses, fit };
+        let mut model = Self { observations, question, present, design, weaknesses, squares, fit };
         let single: Vec<&str> = model.present.iter().copied().filter(|c| model.count(c) == 1).collect();
         model.weaknesses.extend(single.into_iter().map(|c| Weakness::OnePass(c.to_string())));
         Some(model)
@@ -373,6 +387,28 @@ impl<'a> Model<'a> {
         each.collect()
     }
 
+    /// Smallest p of "the drift is straight", over sessions.
+    ///
+    /// *Method* t test of the coefficient of the squared time; `None` where that leaves fewer than [`DOF_TO_BEND`] degrees of freedom. It names
+    /// the trouble and mends nothing: adding the square wherever it tests significant made the 95 % intervals cover 91–93 % of differences.
+    fn straightness(&self) -> Option<f64> {
+        let columns = self.design.ncols();
+        let y = DVector::from_iterator(self.observations.len(), self.observations.iter().map(|o| o.y));
+        let p = |square: &Vec<f64>| {
+            if self.observations.len() < columns + 1 + DOF_TO_BEND {
+                return None;
+            }
+            let mut wider = self.design.clone().insert_column(columns, 0.0);
+            wider.set_column(columns, &DVector::from_column_slice(square));
+            let mut last = DVector::zeros(columns + 1);
+            last[columns] = 1.0;
+            let fit = model::fit(&wider, &y)?;
+            let u = fit.variance_of(&last).map(f64::sqrt).filter(|u| *u > 0.0)?;
+            t_two_sided_p(fit.value(&last) / u, fit.dof as f64)
+        };
+        self.squares.iter().filter_map(p).min_by(f64::total_cmp)
+    }
+
     fn compare(self, tap: &str, zeros: &[Zeros<'_>], all: &mut Compared) {
         let target_kmh = self.observations[0].pass.target_kmh;
         all.levels.extend(self.levels(zeros).into_iter().map(|o| Level {
@@ -383,6 +419,7 @@ impl<'a> Model<'a> {
             cp: o.estimate,
         }));
         all.comparisons.extend(self.differences(zeros).into_iter().map(|o| self.comparison(tap, &o)));
+        all.straightness.extend(self.straightness());
         all.weaknesses.extend(self.weaknesses);
     }
 
