@@ -14,6 +14,7 @@ pub mod model;
 pub mod passes;
 pub mod probe;
 pub mod sweep;
+pub mod wind;
 pub mod zeros;
 
 use crate::config::{Air, Configuration, ProbeFactor, Setup};

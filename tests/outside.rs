@@ -8,9 +8,11 @@ use serde_json::{Value, json};
 use std::collections::BTreeMap;
 use steadytap::config::{Air, Channel, Convert, ProbeModel};
 use steadytap::hold::statistics::{Accumulator, Place, lag_one_autocorrelation};
+use steadytap::pneumatics::{Gas, Tube, settle_of_lag_s, with_leak};
 use steadytap::reduction::inference::{effective_dof, holm, passes_for, power, t_quantile, t_two_sided_p};
 use steadytap::reduction::probe::{corrected_cp, dynamic_pressure, mach_of, pair, speed_of, total_over_static};
-use steadytap::reduction::{air, model, zeros::Zeros};
+use steadytap::reduction::wind::{self, Leg};
+use steadytap::reduction::{air, contour, cores, force, model, sweep, zeros::Zeros};
 use steadytap::session::{ChannelStatistics, Entry, Session, Zero};
 use steadytap::signal::Scaler;
 use steadytap::stream::nmea::{self, Sentence};
@@ -38,7 +40,11 @@ fn got(id: &str, i: &Value) -> Value {
         "seg" => of_segment(id, i),
         "tst" => of_tests(id, i),
         "lin" => of_model(i),
-        "wnd" => of_wind(i),
+        "wnd" => of_wind(id, i),
+        "frc" => of_force(id, i),
+        "bas" => of_base(id, i),
+        "swp" => of_sweep(id, i),
+        "tub" => of_tube(id, i),
         "cal" => of_calibration(id, i),
         "nmea" => of_nmea(id, i),
         other => panic!("nothing answers {other}"),
@@ -250,10 +256,289 @@ fn of_model(i: &Value) -> Value {
     all
 }
 
-fn of_wind(i: &Value) -> Value {
-    let found = pair([number(i, "Vg1"), number(i, "Vg2")], [number(i, "Va1"), number(i, "Va2")])
-        .expect("airspeeds are positive");
-    json!({"k": found.k, "headwind_on_run1": found.head_wind})
+fn of_wind(id: &str, i: &Value) -> Value {
+    let two = |a: &str, b: &str| [number(i, a), number(i, b)];
+    match id {
+        "wnd-pair-crosswind" => {
+            // Two runs with the resultant as airspeed; the pair's k against the true one.
+            let (v, w, k) = (number(i, "V"), number(i, "headwind"), number(i, "k_true"));
+            let air = |c: f64| [(v + w).hypot(c) / k, (v - w).hypot(c) / k];
+            let error = |c: &f64| pair([v, v], air(*c)).expect("airspeeds are positive").k / k - 1.0;
+            json!({"k_error_rel": numbers(i, "crosswind").iter().map(error).collect::<Vec<_>>()})
+        }
+        "wnd-fit-degenerate" => {
+            let legs = [0.0, 180.0, 0.0, 180.0].map(|t| Leg { ground_m_s: 27.8, track_deg: t, air_m_s: 27.0 });
+            json!({"solvable": wind::fit(&legs).is_ok()})
+        }
+        _ if id.starts_with("wnd-fit") => {
+            let legs = numbers(i, "Vg").into_iter().zip(numbers(i, "track_deg")).zip(numbers(i, "Va_indicated"));
+            let legs: Vec<Leg> = legs.map(|((g, t), a)| Leg { ground_m_s: g, track_deg: t, air_m_s: a }).collect();
+            let fit = wind::fit(&legs).expect("the headings span the plane");
+            let mut all = json!({"k": fit.k, "wind_north_to": fit.towards[0], "wind_east_to": fit.towards[1]});
+            if id.contains("noisy") {
+                let covariance = fit.covariance.expect("degrees of freedom");
+                all["rss"] = json!(fit.rss);
+                all["dof"] = json!(fit.dof);
+                all["se"] = json!([0, 1, 2].map(|j| covariance[(j, j)].sqrt()));
+                all["cov"] = json!([0, 1, 2].map(|r| [0, 1, 2].map(|c| covariance[(r, c)])));
+            } else {
+                all["wind_speed"] = json!(fit.speed_m_s());
+                all["wind_from_deg"] = json!(fit.from_deg());
+            }
+            all
+        }
+        "wnd-gs-multitap" => {
+            let p: Vec<[f64; 2]> = numbers(i, "p1").into_iter().zip(numbers(i, "p2")).map(|(a, b)| [a, b]).collect();
+            let found = wind::ground_speed_pair(two("V1", "V2"), number(i, "rho"), &p).expect("the taps tell a wind");
+            json!({"headwind": found.head_wind_m_s, "cp": found.cp, "rss": found.rss, "se_headwind": found.se_m_s})
+        }
+        _ if id.starts_with("wnd-gs") => {
+            let found = wind::ground_speed_pair(two("V1", "V2"), number(i, "rho"), &[two("p1", "p2")]).expect("a wind");
+            json!({"headwind_on_run1": found.head_wind_m_s, "cp": found.cp[0]})
+        }
+        "wnd-bias" => {
+            // The mean of q over the pair against q at ground speed: what dividing by ground speed overstates.
+            let v = number(i, "V");
+            let q = |v: f64| dynamic_pressure(1.2, v * 3.6);
+            let cell = |c: &f64, w: &f64| (q((v + w).hypot(*c)) + q((v - w).hypot(*c))) / 2.0 / q(v) - 1.0;
+            let row = |c: &f64| numbers(i, "headwind").iter().map(|w| cell(c, w)).collect::<Vec<_>>();
+            json!({"cp_naive_error_rel": numbers(i, "crosswind").iter().map(row).collect::<Vec<_>>()})
+        }
+        "wnd-ab-false" => {
+            let (v, a, b) = (number(i, "V"), number(i, "headwind_A"), number(i, "headwind_B"));
+            let q = |v: f64| dynamic_pressure(1.2, v * 3.6);
+            let both = |w: f64| q(v + w) + q(v - w);
+            json!({"false_change_single_direction": q(v + b) / q(v + a) - 1.0, "false_change_out_and_back": both(b) / both(a) - 1.0})
+        }
+        _ => {
+            let found = pair(two("Vg1", "Vg2"), two("Va1", "Va2")).expect("airspeeds are positive");
+            json!({"k": found.k, "headwind_on_run1": found.head_wind})
+        }
+    }
+}
+
+fn of_force(id: &str, i: &Value) -> Value {
+    let g = steadytap::units::STANDARD_GRAVITY;
+    match id {
+        "frc-trade" => {
+            let p = numbers(i, "zone_pressures_Pa");
+            let area = number(i, "zone2_kgf") * g / -p[1];
+            let kgf: Vec<f64> = p.iter().map(|p| -force::patch(*p, area, [0.0, 0.0, -1.0])[2] / g).collect();
+            let total: f64 = kgf.iter().sum();
+            let at_200 = total * dynamic_pressure(1.2, 200.0) / dynamic_pressure(1.2, 100.0);
+            json!({"area_m2": area, "zone_kgf": kgf, "total_kgf": total, "total_kgf_at_200": at_200})
+        }
+        "frc-patches" => {
+            let patches = i["patches"].as_array().expect("patches");
+            let three = |v: &Value| -> [f64; 3] { serde_json::from_value(v.clone()).expect("three numbers") };
+            let about = three(&i["moment_reference"]);
+            let (mut f, mut m) = ([0.0; 3], [0.0; 3]);
+            for p in patches {
+                let one = force::patch(p[0].as_f64().unwrap(), p[1].as_f64().unwrap(), three(&p[2]));
+                let turn = force::moment(three(&p[3]), about, one);
+                (0..3).for_each(|k| (f[k], m[k]) = (f[k] + one[k], m[k] + turn[k]));
+            }
+            json!({"F_N": f, "M_Nm": m, "F_kgf": f.map(|f| f / g)})
+        }
+        "frc-axle" => {
+            let loads = i["loads"].as_array().expect("loads");
+            let (mut front, mut rear) = (0.0, 0.0);
+            for load in loads {
+                let at = [number(load, "x_behind_front_axle_m"), 0.0, 0.0];
+                let [f, r] = force::axles([0.0, 0.0, number(load, "Fz_N")], at, number(i, "wheelbase_m"));
+                (front, rear) = (front + f, rear + r);
+            }
+            json!({"total_Fz_N": front + rear, "rear_N": rear, "front_N": front, "front_share": front / (front + rear)})
+        }
+        "frc-axle-drag" => {
+            let (fz, l, rear) = (number(i, "Fz_N"), number(i, "wheelbase_m"), number(i, "rear_from_vertical_N"));
+            let at = [rear * l / fz, 0.0, number(i, "height_m")];
+            let [f, r] = force::axles([number(i, "drag_N"), 0.0, fz], at, l);
+            json!({"rear_N": r, "front_N": f, "transfer_N": rear - r})
+        }
+        "frc-const" => {
+            let points: Vec<[f64; 2]> = serde_json::from_value(i["polygon_ccw"].clone()).expect("points");
+            let about: [f64; 2] = serde_json::from_value(i["moment_point"].clone()).expect("a point");
+            let s = contour::section(&points, &vec![number(i, "cp"); points.len()], about, 1.0);
+            json!({"cx": s.cx, "cy": s.cz, "cm": s.cm})
+        }
+        _ if id.starts_with("frc-cyl") => {
+            let gamma = number(i, "Gamma_over_RU");
+            let sections = numbers(i, "N").into_iter().map(|n| {
+                let angle = |j: usize| 2.0 * std::f64::consts::PI * j as f64 / n;
+                let points: Vec<[f64; 2]> = (0..n as usize).map(|j| [angle(j).cos(), angle(j).sin()]).collect();
+                let cp = |p: &[f64; 2]| 1.0 - (2.0 * p[1] + gamma / (2.0 * std::f64::consts::PI)).powi(2);
+                let cps: Vec<f64> = points.iter().map(cp).collect();
+                contour::section(&points, &cps, [0.0, 0.0], 2.0)
+            });
+            let all: Vec<_> = sections.collect();
+            json!({"cl_polygon": all.iter().map(|s| s.cz).collect::<Vec<_>>(), "cd_polygon": all.iter().map(|s| s.cx).collect::<Vec<_>>(),
+                "cm_polygon": all.iter().map(|s| s.cm).collect::<Vec<_>>()})
+        }
+        _ => {
+            // F goes with q at one density.
+            let q = |key: &str| dynamic_pressure(1.2, number(i, key));
+            json!({"F2": number(i, "F") * q("V2_kmh") / q("V1_kmh")})
+        }
+    }
+}
+
+fn of_base(id: &str, i: &Value) -> Value {
+    match id {
+        "bas-base" => {
+            let (area, reference) = (numbers(i, "tap_area_m2"), number(i, "A_ref_m2"));
+            let whole: f64 = area.iter().sum();
+            let sum =
+                |cp: &[f64]| area.iter().zip(cp).map(|(a, cp)| force::patch(*cp, *a, [1.0, 0.0, 0.0])[0]).sum::<f64>();
+            let (a, b) = (sum(&numbers(i, "cp_A")), sum(&numbers(i, "cp_B")));
+            let parts: Vec<f64> =
+                area.iter().zip(numbers(i, "u_of_each_difference")).map(|(a, u)| a * u / reference).collect();
+            let [independent, common] = force::independent_and_common(&parts);
+            json!({"A_base_m2": whole, "mean_cp_A": -a / whole, "mean_cp_B": -b / whole, "cd_base_A": a / reference,
+                "delta_cd": (b - a) / reference, "u_delta_cd_independent": independent, "u_delta_cd_fully_correlated": common})
+        }
+        "bas-simple" => {
+            let f = force::patch(number(i, "delta_mean_cp_base"), number(i, "A_base_m2"), [1.0, 0.0, 0.0])[0];
+            json!({"delta_cd": f / number(i, "A_ref_m2")})
+        }
+        "bas-power" => {
+            let q = dynamic_pressure(number(i, "rho"), number(i, "V_kmh"));
+            let drag = number(i, "delta_cd") * number(i, "A_ref_m2") * q;
+            json!({"delta_drag_N": drag, "delta_power_W": drag * number(i, "V_kmh") / 3.6})
+        }
+        "bas-core-fit" => {
+            let points: Vec<[f64; 2]> =
+                numbers(i, "v_m_s").into_iter().zip(numbers(i, "dp_Pa")).map(|(v, p)| [v, p]).collect();
+            let (plain, relative) = (cores::fit(&points, false).unwrap(), cores::fit(&points, true).unwrap());
+            json!({"a": plain.a, "b": plain.b, "a_relative_weighting": relative.a, "b_relative_weighting": relative.b})
+        }
+        "bas-core-inv" => {
+            let curve = cores::Curve { a: number(i, "a"), b: number(i, "b") };
+            json!({"v_m_s": numbers(i, "dp_Pa").into_iter().map(|p| curve.velocity(p)).collect::<Vec<_>>()})
+        }
+        "bas-core-ratio" => {
+            let curve = cores::Curve { a: number(i, "a"), b: number(i, "b") };
+            let v = |key: &str| curve.velocity(number(i, key)).unwrap();
+            json!({"flow_ratio": v("dp_new_Pa") / v("dp_baseline_Pa")})
+        }
+        _ => {
+            let bench = cores::Curve { a: number(i, "a_bench"), b: number(i, "b_bench") };
+            let curve =
+                bench.in_air(number(i, "mu") / number(i, "mu_bench"), number(i, "rho") / number(i, "rho_bench"));
+            json!({"a": curve.a, "b": curve.b, "v_m_s": curve.velocity(number(i, "dp_Pa"))})
+        }
+    }
+}
+
+/// The quadratic of `swp-quad`, on which three other checks rest.
+fn quadratic() -> (sweep::Quadratic, model::Fit, Vec<f64>, Vec<f64>) {
+    let x: Vec<f64> = [0.0, 5.0, 10.0, 15.0, 20.0, 25.0].into_iter().flat_map(|x| [x, x]).collect();
+    let y = vec![-0.212, -0.219, -0.262, -0.255, -0.291, -0.298, -0.318, -0.325, -0.334, -0.329, -0.338, -0.345];
+    let design = DMatrix::from_fn(x.len(), 3, |i, j| x[i].powi(j as i32));
+    let fit = model::fit(&design, &DVector::from_vec(y.clone())).expect("a full-rank design");
+    (sweep::Quadratic::of(&fit).expect("degrees of freedom"), fit, x, y)
+}
+
+fn of_sweep(id: &str, i: &Value) -> Value {
+    let (curve, fit, x, y) = quadratic();
+    let within = |set| match set {
+        sweep::Interval::Within(a, b) => ("interval", [a, b]),
+        sweep::Interval::Outside(a, b) => ("outside", [a, b]),
+        other => panic!("{other:?}"),
+    };
+    match id {
+        "swp-quad" => {
+            let levels = DMatrix::from_fn(x.len(), 6, |r, c| f64::from(u8::from(r / 2 == c)));
+            let free = model::fit(&levels, &DVector::from_vec(y)).expect("two passes a level");
+            let test =
+                sweep::lack_of_fit((fit.residuals.norm_squared(), fit.dof), (free.residuals.norm_squared(), free.dof));
+            let (f, p) = test.expect("there are replicates");
+            json!({"b": curve.b, "se": ([0, 1, 2].map(|j| curve.covariance[(j, j)].sqrt())), "dof": fit.dof, "s": fit.variance.map(f64::sqrt),
+                "lack_of_fit_F": f, "lack_of_fit_p": p, "ss_pure_error": free.residuals.norm_squared()})
+        }
+        "swp-cross" => {
+            let x = curve.crossing(number(i, "target"), [0.0, 25.0]).expect("it crosses");
+            let ([low, high], open) = curve.crossing_interval(number(i, "target"), [0.0, 25.0]).expect("it crosses");
+            assert_eq!(open, [false, false]);
+            json!({"x_cross": x, "slope": curve.slope(x), "se_fit_at_cross": curve.se(x), "se_x_delta": curve.crossing_se(x), "ci95_inversion": [low, high]})
+        }
+        "swp-cross-flat" => {
+            let x = curve.crossing(number(i, "target"), [0.0, 25.0]).expect("it crosses");
+            let ([low, _], [_, open]) = curve.crossing_interval(number(i, "target"), [0.0, 25.0]).expect("it crosses");
+            json!({"x_cross": x, "ci95_low": low, "band_still_contains_target_at_x25": open})
+        }
+        "swp-vertex" => {
+            let (x, set, g) = curve.vertex().expect("it is curved");
+            let (kind, bounds) = within(set);
+            json!({"x_vertex": x, "se_delta": curve.vertex_se(), "fieller_kind": kind, "ci95_fieller": bounds, "g": g})
+        }
+        _ if id.starts_with("swp-line") => {
+            let x = numbers(i, "x");
+            let design = DMatrix::from_fn(x.len(), 2, |r, c| x[r].powi(c as i32));
+            let fit = model::fit(&design, &DVector::from_vec(numbers(i, "y"))).expect("a full-rank design");
+            let s2 = fit.variance.expect("degrees of freedom");
+            let (b0, b1) = (fit.estimates[0], fit.estimates[1]);
+            let v = |r, c| fit.unscaled[(r, c)] * s2;
+            // x = (target − b₀)/b₁.
+            let t = t_quantile(0.975, fit.dof as f64).unwrap();
+            let (set, g) = sweep::fieller(number(i, "target") - b0, b1, (v(0, 0), v(1, 1), -v(0, 1)), t);
+            let (kind, mut bounds) = within(set);
+            bounds.sort_by(f64::total_cmp);
+            json!({"b0": b0, "b1": b1, "x_cross": (number(i, "target") - b0) / b1, "g": g, "kind": kind, "fieller_bounds": bounds})
+        }
+        "swp-pchip-cross" => {
+            let curve = sweep::Pchip::new(&numbers(i, "x"), &numbers(i, "y_means")).unwrap();
+            json!({"x_cross": curve.crossings(number(i, "target"))[0]})
+        }
+        _ => {
+            let curve = sweep::Pchip::new(&numbers(i, "x"), &numbers(i, "y")).unwrap();
+            let at = numbers(i, "x_eval").into_iter().map(|x| curve.at(x));
+            json!({"node_slopes": curve.slopes, "y_eval": at.collect::<Vec<_>>(), "crossings": curve.crossings(number(i, "target"))})
+        }
+    }
+}
+
+fn of_tube(id: &str, i: &Value) -> Value {
+    if id == "tub-leak" {
+        let p = with_leak(number(i, "p"), number(i, "R_tube_Pa_s_m3"), number(i, "R_leak_Pa_s_m3"));
+        return json!({"p_indicated": p});
+    }
+    if id == "tub-mean" {
+        let tube = Tube { length_m: 2.0, bore_mm: 1.0, volume_cm3: 0.5 };
+        return json!({"H": (tube.response(1e-9, &Gas::STANDARD).norm() * 1e9).round() / 1e9});
+    }
+    let tube = Tube {
+        length_m: number(i, "length_m"),
+        bore_mm: number(i, "bore_m") * 1e3,
+        volume_cm3: number(i, "volume_m3") * 1e6,
+    };
+    if id == "tub-lumped" {
+        let isothermal = Gas { polytropic: 1.0, ..Gas::STANDARD };
+        let tau = |gas: &Gas| tube.time_constant_s(gas);
+        return json!({"tau_isentropic_s": tau(&Gas::STANDARD), "tau_isothermal_s": tau(&isothermal),
+            "t_settle_1pct_s": settle_of_lag_s(tau(&Gas::STANDARD))});
+    }
+    let gas = Gas { polytropic: number(i, "k_polytropic"), ..Gas::STANDARD };
+    let (peak_hz, peak) = tube.resonance(&gas).unwrap_or((0.01, tube.response(0.01, &gas).norm()));
+    if id.starts_with("tub-fig") {
+        return json!({"peak_H": peak, "f_peak_Hz": peak_hz, "H_at_100Hz": tube.response(100.0, &gas).norm(),
+            "report_peak_H": peak, "report_f_peak_Hz": peak_hz});
+    }
+    let gain = numbers(i, "f_Hz").into_iter().map(|hz| tube.response(hz, &gas).norm()).collect::<Vec<_>>();
+    let phase = numbers(i, "f_Hz").into_iter().map(|hz| unwrapped_phase_deg(&tube, hz, &gas)).collect::<Vec<_>>();
+    json!({"H_abs": gain, "phase_deg": phase, "tau_lumped_s": tube.time_constant_s(&gas), "low_frequency_delay_s": -phase[0] / 360.0 / 0.5,
+        "f_1pct_amplitude_Hz": tube.bandwidth_hz(0.01, &gas), "f_10pct_amplitude_Hz": tube.bandwidth_hz(0.1, &gas),
+        "peak_H": peak, "f_peak_Hz": peak_hz})
+}
+
+/// Phase followed up from 0 Hz, degrees.
+fn unwrapped_phase_deg(tube: &Tube, hz: f64, gas: &Gas) -> f64 {
+    let mut phase = 0.0;
+    for step in 1..=2000 {
+        let next = tube.response(hz * f64::from(step) / 2000.0, gas).arg().to_degrees();
+        phase = next + 360.0 * ((phase - next) / 360.0_f64).round();
+    }
+    phase
 }
 
 fn scaler(unit: &str, convert: Convert) -> Scaler {
