@@ -4,6 +4,7 @@
 //! target (`model`, `compare`) → verdicts at 5 % over the family (`inference`). Plain data out; `report` gives it a shape.
 
 pub mod air;
+pub mod airspeed;
 pub mod compare;
 pub mod constancy;
 pub mod contour;
@@ -17,8 +18,9 @@ pub mod sweep;
 pub mod wind;
 pub mod zeros;
 
-use crate::config::{Air, Configuration, ProbeFactor, Setup};
-use crate::session::{AirSource, Direction, Entry, Session};
+use crate::config::{Air, Configuration};
+use crate::session::{AirSource, Entry, Session};
+use airspeed::{Factor, WindPair};
 use compare::{Comparison, Level, Question, Weakness};
 use contour::ContourRow;
 use cores::CoreRow;
@@ -27,9 +29,6 @@ use passes::{LeftOut, Pass};
 use std::collections::BTreeSet;
 use sweep::{Interval, SweepRow};
 use zeros::Zeros;
-
-/// Two passes further apart in time than this make no pair: the wind will have changed, s.
-const PAIR_WITHIN_S: f64 = 1200.0;
 
 /// What a reduction is asked for.
 #[derive(Clone, Debug, Default, PartialEq)]
@@ -84,7 +83,7 @@ pub struct Reduction {
     /// Mean air of all passes; none without a pass.
     pub air: Option<MeanAir>,
     /// True over indicated airspeed that was applied.
-    pub probe_factor: f64,
+    pub probe_factor: Factor,
     /// Passes in time order.
     pub passes: Vec<Pass>,
     /// Level of every tap, configuration and target.
@@ -124,19 +123,6 @@ pub struct MeanAir {
     pub source: AirSource,
 }
 
-/// Wind along the road by one out-and-back pair.
-#[derive(Clone, Debug, PartialEq)]
-pub struct WindPair {
-    /// Target, km/h.
-    pub target_kmh: f64,
-    /// Middle of the pair, s.
-    pub t_s: f64,
-    /// True over indicated airspeed.
-    pub k: f64,
-    /// Head wind on the way out, km/h.
-    pub head_wind_out_kmh: f64,
-}
-
 /// Drift of a channel between two zeros.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Drift {
@@ -173,13 +159,15 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
     let at_kmh = options.at_kmh.unwrap_or(setup.outing.targets_kmh[0]);
     let resolve_pa = setup.outing.resolve_pa;
     let resolve_cp = resolve_pa / probe::dynamic_pressure(air::ISA_DENSITY, setup.outing.targets_kmh[0]);
-    let wind = wind(&passes);
-    let mut flags = Vec::new();
-    let probe_factor = probe_factor(setup, &wind, &passes, &mut flags);
-    correct(&mut passes, setup, probe_factor);
+    let wind = airspeed::pairs(&passes);
+    let mut flags = airspeed::wind_without_a_probe(&mut passes);
+    let (probe_factor, words) = airspeed::factor(&setup.car.probe, &wind, &passes);
+    flags.extend(words);
+    airspeed::correct(&mut passes, &setup.car.probe, &probe_factor);
     let letters: Vec<String> = configurations.iter().map(|c| c.letter.clone()).collect();
     let question = Question { configurations: &letters, baseline: &baseline, resolve_cp };
-    let (levels, comparisons) = compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
+    let (mut levels, comparisons) = compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
+    airspeed::widen(&mut levels, &setup.car.probe, &probe_factor);
     let drift = drift(&zeros, sessions, resolve_pa);
     let at_q_pa = probe::dynamic_pressure(air::ISA_DENSITY, at_kmh);
     let ground = Ground { car: &setup.car, passes: &passes, zeros: &zeros, question };
@@ -279,69 +267,6 @@ fn mean_air(sessions: &[Session]) -> Option<MeanAir> {
         humidity_pct: mean(|a| a.humidity_pct),
     };
     Some(MeanAir { air, density: air::density(&air), source })
-}
-
-/// Consecutive opposite passes of one target make a pair.
-fn wind(passes: &[Pass]) -> Vec<WindPair> {
-    let mut pairs = Vec::new();
-    for pass in passes {
-        for other in passes.iter().filter(|o| o.session == pass.session && o.target_kmh == pass.target_kmh) {
-            let opposite = pass.direction == Direction::Out && other.direction == Direction::Back;
-            let apart = other.t_s - pass.t_s;
-            let nearest = apart > 0.0
-                && !passes.iter().any(|o| {
-                    o.session == pass.session
-                        && o.target_kmh == pass.target_kmh
-                        && o.t_s > pass.t_s
-                        && o.t_s < other.t_s
-                });
-            if opposite && nearest && apart <= PAIR_WITHIN_S {
-                pairs.extend(pair_of(pass, other));
-            }
-        }
-    }
-    pairs
-}
-
-fn pair_of(out: &Pass, back: &Pass) -> Option<WindPair> {
-    let air = |p: &Pass| p.q.as_ref().filter(|q| q.measured.is_some()).map(|q| probe::speed_of(p.density, q.pa));
-    let ground = [out.speed_kmh?, back.speed_kmh?];
-    let pair = probe::pair(ground, [air(out)?, air(back)?])?;
-    Some(WindPair {
-        target_kmh: out.target_kmh,
-        t_s: f64::midpoint(out.t_s, back.t_s),
-        k: pair.k,
-        head_wind_out_kmh: pair.head_wind,
-    })
-}
-
-/// One factor for the day: a factor for each configuration would put its own error into every difference.
-fn probe_factor(setup: &Setup, wind: &[WindPair], passes: &[Pass], flags: &mut Vec<String>) -> f64 {
-    if !passes.iter().any(|p| p.q.as_ref().is_some_and(|q| q.measured.is_some())) {
-        return 1.0;
-    }
-    let ks: Vec<f64> = wind.iter().map(|w| w.k).filter(|k| (0.5..2.0).contains(k)).collect();
-    match setup.car.probe.factor {
-        ProbeFactor::Stated(k) => k,
-        ProbeFactor::Pairs if ks.is_empty() => {
-            flags.push("probe factor: no out-and-back pair, 1 is used; drive one".to_string());
-            1.0
-        }
-        ProbeFactor::Pairs => ks.iter().sum::<f64>() / ks.len() as f64,
-    }
-}
-
-fn correct(passes: &mut [Pass], setup: &Setup, k: f64) {
-    let model = setup.car.probe.model;
-    for pass in passes.iter_mut().filter(|p| p.q.as_ref().is_some_and(|q| q.measured.is_some())) {
-        for tap in pass.taps.values_mut() {
-            tap.cp = tap.cp.map(|cp| probe::corrected_cp(cp, k, model));
-        }
-        // From here on q is the free stream's.
-        if let Some(q) = &mut pass.q {
-            q.pa *= k * k;
-        }
-    }
 }
 
 fn compared(
@@ -469,12 +394,6 @@ fn cautions(r: &Reduction, sessions: &[Session], zeros: &[Zeros<'_>]) -> Vec<Str
             1 => words.push(format!("{which}one zero only: drift is not known; zero again at the end")),
             _ => {}
         }
-    }
-    if r.passes.iter().any(|p| p.q.as_ref().is_some_and(|q| q.measured.is_none())) {
-        words.push(
-            "q from ground speed and density (no dynamic-pressure channel): wind is in every Cp, a fallback"
-                .to_string(),
-        );
     }
     if r.passes.iter().any(|p| p.q.is_none()) {
         words.push("passes without q: neither dynamic pressure nor speed was measured; no Cp there".to_string());

@@ -1,13 +1,14 @@
 //! The reduction as JSON, schema `steadytap.reduction/1`. Never a non-finite number; what is not known is null, with the reason in `flags`.
 
+use crate::reduction::airspeed::WindPair;
 use crate::reduction::compare::Estimate;
 use crate::reduction::contour::ContourRow;
 use crate::reduction::cores::CoreRow;
 use crate::reduction::force::{AxleRow, BaseRow, ForceRow};
 use crate::reduction::sweep::{Interval, SweepRow};
-use crate::reduction::{Drift, MeanAir, Reduction, WindPair};
+use crate::reduction::{Drift, MeanAir, Reduction};
 use crate::session::AirSource;
-use crate::units::STANDARD_GRAVITY;
+use crate::units::{KMH_PER_M_S, STANDARD_GRAVITY};
 use serde_json::{Value, json};
 
 /// The whole reduction as one JSON object and a line end.
@@ -38,7 +39,7 @@ pub fn json(r: &Reduction) -> String {
         "air": r.air.as_ref().map(air),
         "taps": taps,
         "comparisons": comparisons,
-        "wind": r.wind.iter().map(wind).collect::<Vec<_>>(),
+        "wind": winds(r),
         "drift": r.drift.iter().map(drift).collect::<Vec<_>>(),
         "forces": r.forces.iter().map(force).collect::<Vec<_>>(),
         "balance": {"axles": r.balance.iter().map(axle).collect::<Vec<_>>()},
@@ -78,6 +79,15 @@ pub(super) fn source(source: AirSource) -> &'static str {
         AirSource::Stated => "stated",
         AirSource::Measured => "measured",
     }
+}
+
+/// Every pair, and the vector where many headings tell it.
+fn winds(r: &Reduction) -> Vec<Value> {
+    let mut all: Vec<Value> = r.wind.iter().map(wind).collect();
+    all.extend(r.probe_factor.wind.as_ref().map(|w| {
+        json!({"target_kmh": null, "k": number(w.k), "wind_kmh": number(w.speed_m_s() * KMH_PER_M_S), "from_deg": number(w.from_deg())})
+    }));
+    all
 }
 
 fn wind(w: &WindPair) -> Value {

@@ -272,16 +272,17 @@ fn surroundings(out: &mut String, r: &Reduction) {
         );
     }
     if !r.wind.is_empty() {
-        let n = r.wind.len() as f64;
-        let wind = r.wind.iter().map(|w| w.head_wind_out_kmh).sum::<f64>() / n;
-        let k = r.wind.iter().map(|w| w.k).sum::<f64>() / n;
-        line(
-            out,
-            &format!(
-                "  head wind on the way out {wind:+.1} km/h, probe factor {k:.4} by {n} pairs; {:.4} was applied",
-                r.probe_factor
-            ),
-        );
+        let n = r.wind.len();
+        let wind = r.wind.iter().map(|w| w.head_wind_out_kmh).sum::<f64>() / n as f64;
+        line(out, &format!("  head wind on the way out {wind:+.1} km/h, mean of {n} out-and-back pairs"));
+    }
+    if let Some(wind) = &r.probe_factor.wind {
+        let (speed, from) = (wind.speed_m_s() * crate::units::KMH_PER_M_S, wind.from_deg());
+        line(out, &format!("  wind {speed:.1} km/h from {from:.0}°, by all headings"));
+    }
+    let half = r.probe_factor.u95.map_or("?".to_string(), |u| format!("{u:.4}"));
+    if r.passes.iter().any(|p| p.q.as_ref().is_some_and(|q| q.measured.is_some())) {
+        wrapped(out, &format!("probe factor {:.4} ± {half}, {}", r.probe_factor.k, r.probe_factor.source.words()));
     }
     let mut channels: Vec<&str> = r.drift.iter().map(|d| d.channel.as_str()).collect();
     channels.dedup();
