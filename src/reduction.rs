@@ -335,6 +335,10 @@ fn words_of(weakness: &Weakness) -> String {
             "the baseline was driven in one block, drift cannot be told from a change; drive it again at the end"
                 .to_string()
         }
+        Weakness::Bent => {
+            "the drift bends (warming up?), and what is not straight of it may show as a change; alternate faster"
+                .to_string()
+        }
         Weakness::NoScatter => "too few passes for any interval; drive more".to_string(),
     }
 }

@@ -1,7 +1,7 @@
 //! Configurations against the baseline: one linear model a tap and target over all passes, contrasts, verdicts.
 //!
 //! Cp of pass i = level of its configuration + heading/2·(±1) + session + drift·(t − t̄) + scatter, by ordinary least squares. Heading
-//! enters where every configuration was driven both ways; drift where the baseline was driven in separate blocks; session where there are
+//! enters where a configuration was driven both ways; drift where the baseline was driven in separate blocks; session where there are
 //! several. The error of the zeros is common to passes and is added outside the scatter.
 
 use super::inference::{ALPHA, POWER, effective_dof, holm, passes_for, t_quantile, t_two_sided_p};
@@ -14,6 +14,10 @@ use std::collections::{BTreeMap, BTreeSet};
 
 /// Degrees of freedom that a term must leave.
 const DOF_TO_LEAVE: usize = 2;
+/// Degrees of freedom that a squared drift must leave to be told from scatter.
+const DOF_TO_BEND: usize = 8;
+/// Family error rate at which a drift is said to bend.
+const P_BENT: f64 = 0.01;
 
 /// A value with its 95 % half-width; none when nothing says how sure it is.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -101,6 +105,8 @@ pub enum Weakness {
     OneWay(String),
     /// The baseline was driven in one block: drift cannot be told from a change.
     BaselineOnce,
+    /// The drift bends: what a straight one leaves over shows as a change.
+    Bent,
     /// No degrees of freedom: no intervals.
     NoScatter,
 }
@@ -112,6 +118,8 @@ pub struct Compared {
     pub levels: Vec<Level>,
     /// Differences from the baseline.
     pub comparisons: Vec<Comparison>,
+    /// p of "the drift is straight" by tap, where it could be tested.
+    straightness: Vec<f64>,
     /// What is weak about the design.
     pub weaknesses: BTreeSet<Weakness>,
 }
@@ -136,6 +144,9 @@ pub fn compare(passes: &[&Pass], zeros: &[Zeros<'_>], taps: &[String], question:
         if !seen.is_empty() {
             Model::new(&seen, tap, question).compare(zeros, &mut all);
         }
+    }
+    if holm(&all.straightness).iter().any(|p| *p <= P_BENT) {
+        all.weaknesses.insert(Weakness::Bent);
     }
     judge(&mut all.comparisons, question.resolve_cp);
     all
@@ -181,6 +192,8 @@ struct Model<'a> {
     present: Vec<&'a str>,
     design: DMatrix<f64>,
     weaknesses: BTreeSet<Weakness>,
+    /// Square of the time, for each session with a drift.
+    squares: Vec<Vec<f64>>,
 }
 
 impl<'a> Model<'a> {
@@ -194,7 +207,7 @@ impl<'a> Model<'a> {
         let levels = DMatrix::from_fn(passes.len(), present.len(), |i, j| {
             f64::from(u8::from(passes[i].configuration == present[j]))
         });
-        let mut model = Self { passes, tap, question, present, design: levels, weaknesses: BTreeSet::new() };
+        let mut model = Self { passes, tap, question, present, design: levels, weaknesses: BTreeSet::new(), squares: Vec::new() };
         model.add_sessions();
         model.add_heading();
         model.add_drift();
@@ -228,31 +241,32 @@ impl<'a> Model<'a> {
         }
     }
 
+    /// Heading enters where some configuration was driven both ways; one that was not driven every way is named.
     fn add_heading(&mut self) {
-        let driven =
-            |letter: &str, way: Direction| self.passes.iter().any(|p| p.configuration == letter && p.direction == way);
-        let both: Vec<bool> =
-            self.present.iter().map(|c| driven(c, Direction::Out) && driven(c, Direction::Back)).collect();
-        if both.iter().all(|b| *b) {
-            let column: Vec<f64> = self
-                .passes
-                .iter()
-                .map(|p| match p.direction {
-                    Direction::Out => 0.5,
-                    Direction::Back => -0.5,
-                    Direction::Other => 0.0,
-                })
-                .collect();
+        let ways = |letter: &str| -> BTreeSet<Direction> {
+            self.passes.iter().filter(|p| p.configuration == letter).map(|p| p.direction).collect()
+        };
+        let all: BTreeSet<Direction> = self.passes.iter().map(|p| p.direction).collect();
+        let partly = self.present.iter().filter(|c| ways(c) != all);
+        self.weaknesses.extend(partly.map(|c| Weakness::OneWay((*c).to_string())));
+        let column: Vec<f64> = self
+            .passes
+            .iter()
+            .map(|p| match p.direction {
+                Direction::Out => 0.5,
+                Direction::Back => -0.5,
+                Direction::Other => 0.0,
+            })
+            .collect();
+        let mean = column.iter().sum::<f64>() / column.len() as f64;
+        if column.iter().any(|x| *x != mean) {
             self.add(&column);
-        } else if both.iter().any(|b| *b) {
-            let one_way = self.present.iter().zip(&both).filter(|(_, both)| !**both);
-            self.weaknesses.extend(one_way.map(|(c, _)| Weakness::OneWay((*c).to_string())));
         }
     }
 
     /// A drift for each session in which the baseline was driven both before and after something else.
     fn add_drift(&mut self) {
-        let mut told = false;
+        let (mut told, mut squares) = (false, Vec::new());
         for session in self.sessions() {
             let within: Vec<&&Pass> = self.passes.iter().filter(|p| p.session == session).collect();
             let base = |p: &&&Pass| p.configuration == self.question.baseline;
@@ -264,16 +278,43 @@ impl<'a> Model<'a> {
             let mean = within.iter().map(|p| p.t_s).sum::<f64>() / within.len() as f64;
             let column: Vec<f64> =
                 self.passes.iter().map(|p| if p.session == session { (p.t_s - mean) / 3600.0 } else { 0.0 }).collect();
-            told |= self.add(&column);
+            if self.add(&column) {
+                told = true;
+                squares.push(column.iter().map(|t| t * t).collect::<Vec<f64>>());
+            }
         }
+        self.squares = squares;
         if !told && self.present.len() > 1 {
             self.weaknesses.insert(Weakness::BaselineOnce);
         }
     }
 
+    /// Smallest p of "the drift is straight", over sessions.
+    ///
+    /// *Method* t test of the coefficient of the squared time; `None` where that leaves fewer than [`DOF_TO_BEND`] degrees of freedom. It names
+    /// the trouble and mends nothing: adding the square wherever it tests significant made the 95 % intervals cover 91–93 % of differences.
+    fn straightness(&self, y: &DVector<f64>) -> Option<f64> {
+        let columns = self.design.ncols();
+        let p = |square: &Vec<f64>| {
+            if self.passes.len() < columns + 1 + DOF_TO_BEND {
+                return None;
+            }
+            let mut wider = self.design.clone().insert_column(columns, 0.0);
+            wider.set_column(columns, &DVector::from_column_slice(square));
+            let mut last = DVector::zeros(columns + 1);
+            last[columns] = 1.0;
+            let fit = model::fit(&wider, y)?;
+            let u = fit.variance_of(&last).map(f64::sqrt).filter(|u| *u > 0.0)?;
+            t_two_sided_p(fit.value(&last) / u, fit.dof as f64)
+        };
+        self.squares.iter().filter_map(p).min_by(f64::total_cmp)
+    }
+
     fn compare(mut self, zeros: &[Zeros<'_>], all: &mut Compared) {
-        let y: Vec<f64> = self.passes.iter().filter_map(|p| p.taps[self.tap].cp).collect();
-        let Some(fit) = model::fit(&self.design, &DVector::from_vec(y)) else { return };
+        let y: DVector<f64> =
+            DVector::from_vec(self.passes.iter().filter_map(|p| p.taps[self.tap].cp).collect());
+        all.straightness.extend(self.straightness(&y));
+        let Some(fit) = model::fit(&self.design, &y) else { return };
         if fit.dof == 0 {
             self.weaknesses.insert(Weakness::NoScatter);
         }
