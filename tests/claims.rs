@@ -1,6 +1,7 @@
 //! The one test binary: each module guards a promise that stands at its head.
 
 mod reduction_coverage;
+mod reduction_inference;
 mod reduction_outings;
 mod screens;
 mod simulate_van;

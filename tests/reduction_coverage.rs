@@ -43,8 +43,20 @@ fn day(design: Design, change: Change, course: Course, n: usize) -> Day {
     let x = resolve_cp();
     let of_tap = |i: usize| match change {
         Change::None => 0.0,
-        Change::OneTap(by) => if i == 2 { by * x } else { 0.0 },
-        Change::AllTaps(by) => if i % 2 == 0 { by * x } else { -by * x },
+        Change::OneTap(by) => {
+            if i == 2 {
+                by * x
+            } else {
+                0.0
+            }
+        }
+        Change::AllTaps(by) => {
+            if i % 2 == 0 {
+                by * x
+            } else {
+                -by * x
+            }
+        }
     };
     let scatter = pick(&[0.0005, 0.002, 0.005], 6);
     let own = pick(&[0.0005, 0.001, 0.003, 0.005, 0.007], 18);
@@ -207,7 +219,11 @@ fn no_change_is_rarely_said_of_a_change_worth_knowing() {
 #[test]
 fn intervals_cover_where_zeros_are_the_largest_error() {
     let days: Vec<Day> = (0..300)
-        .map(|n| Day { scatter: [0.0002, 0.0002], noise_pa: 6.0, ..day(Design::Aba, Change::None, Course::Straight, n) })
+        .map(|n| Day {
+            scatter: [0.0002, 0.0002],
+            noise_pa: 6.0,
+            ..day(Design::Aba, Change::None, Course::Straight, n)
+        })
         .collect();
     let tally = study(&days);
     tally.print("zeros noisy");
@@ -222,7 +238,7 @@ fn a_configuration_driven_one_way_is_compared_with_the_same_way() {
         day.plan.retain(|step| *step != Step::Pass(1, Direction::Back));
         Day { heading: 0.02, ..day }
     };
-    let days: Vec<Day> = (0..300).map(one_way).collect();
+    let days: Vec<Day> = (0..600).map(one_way).collect();
     let tally = study(&days);
     tally.print("B one way");
     assert!((93.0..=97.0).contains(&tally.coverage()), "{}", tally.coverage());

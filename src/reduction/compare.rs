@@ -207,7 +207,8 @@ impl<'a> Model<'a> {
         let levels = DMatrix::from_fn(passes.len(), present.len(), |i, j| {
             f64::from(u8::from(passes[i].configuration == present[j]))
         });
-        let mut model = Self { passes, tap, question, present, design: levels, weaknesses: BTreeSet::new(), squares: Vec::new() };
+        let mut model =
+            Self { passes, tap, question, present, design: levels, weaknesses: BTreeSet::new(), squares: Vec::new() };
         model.add_sessions();
         model.add_heading();
         model.add_drift();
@@ -311,8 +312,7 @@ impl<'a> Model<'a> {
     }
 
     fn compare(mut self, zeros: &[Zeros<'_>], all: &mut Compared) {
-        let y: DVector<f64> =
-            DVector::from_vec(self.passes.iter().filter_map(|p| p.taps[self.tap].cp).collect());
+        let y: DVector<f64> = DVector::from_vec(self.passes.iter().filter_map(|p| p.taps[self.tap].cp).collect());
         all.straightness.extend(self.straightness(&y));
         let Some(fit) = model::fit(&self.design, &y) else { return };
         if fit.dof == 0 {
