@@ -8,13 +8,18 @@ pub mod compare;
 pub mod inference;
 pub mod model;
 pub mod passes;
+pub mod plan;
+pub mod plumbing;
 pub mod probe;
+pub mod scatter;
 pub mod zeros;
 
 use crate::config::{Air, Configuration, ProbeFactor, Setup};
 use crate::session::{AirSource, Direction, Entry, Session};
 use compare::{Comparison, Level, Question, Weakness};
 use passes::{LeftOut, Pass};
+use plan::NextPass;
+use scatter::Outlier;
 use std::collections::BTreeSet;
 use zeros::Zeros;
 
@@ -87,6 +92,8 @@ pub struct Reduction {
     pub drift: Vec<Drift>,
     /// What was left out.
     pub left_out: Vec<LeftOut>,
+    /// What to drive next; none when all is decided.
+    pub next: Option<NextPass>,
     /// Cautions, in words.
     pub flags: Vec<String>,
 }
@@ -157,7 +164,7 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
     correct(&mut passes, setup, probe_factor);
     let letters: Vec<String> = configurations.iter().map(|c| c.letter.clone()).collect();
     let question = Question { configurations: &letters, baseline: &baseline, resolve_cp };
-    let (levels, comparisons) = compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
+    let Verdicts { levels, comparisons, outliers } = compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
     let drift = drift(&zeros, sessions, resolve_pa);
     let mut reduction = Reduction {
         title: setup.outing.title.clone(),
@@ -176,10 +183,16 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
         wind,
         drift,
         left_out,
+        next: None,
         flags,
     };
+    reduction.next = plan::next_pass(&reduction);
     let cautions = cautions(&reduction, sessions, &zeros);
     reduction.flags.splice(0..0, cautions);
+    let scatter = scatter::cautions(&reduction, &outliers);
+    reduction.flags.extend(scatter);
+    let faults = plumbing::faults(&reduction, sessions);
+    reduction.flags.extend(faults.iter().map(ToString::to_string));
     Ok(reduction)
 }
 
@@ -300,16 +313,24 @@ fn correct(passes: &mut [Pass], setup: &Setup, k: f64) {
     }
 }
 
+/// What the comparisons of all targets say.
+#[derive(Default)]
+struct Verdicts {
+    levels: Vec<Level>,
+    comparisons: Vec<Comparison>,
+    outliers: Vec<Outlier>,
+}
+
 fn compared(
     passes: &[Pass],
     zeros: &[Zeros<'_>],
     taps: &[String],
     (question, flags): (Question<'_>, &mut Vec<String>),
-) -> (Vec<Level>, Vec<Comparison>) {
+) -> Verdicts {
     let mut targets: Vec<f64> = passes.iter().map(|p| p.target_kmh).collect();
     targets.sort_by(f64::total_cmp);
     targets.dedup();
-    let (mut levels, mut comparisons) = (Vec::new(), Vec::new());
+    let mut all = Verdicts::default();
     let mut weaknesses: BTreeSet<(Weakness, String)> = BTreeSet::new();
     for target in targets {
         let of_target: Vec<&Pass> = passes.iter().filter(|p| p.target_kmh == target).collect();
@@ -317,12 +338,13 @@ fn compared(
         // By configuration, then tap: a configuration's verdicts stand together.
         let place = |letter: &str| question.configurations.iter().position(|c| c == letter);
         compared.comparisons.sort_by_key(|c| place(&c.configuration));
-        levels.append(&mut compared.levels);
-        comparisons.append(&mut compared.comparisons);
+        all.levels.append(&mut compared.levels);
+        all.comparisons.append(&mut compared.comparisons);
+        all.outliers.append(&mut compared.outliers);
         weaknesses.extend(compared.weaknesses.into_iter().map(|w| (w, format!("{target} km/h"))));
     }
     flags.extend(weaknesses.iter().map(|(weakness, at)| format!("{at}: {}", words_of(weakness))));
-    (levels, comparisons)
+    all
 }
 
 fn words_of(weakness: &Weakness) -> String {

@@ -3,5 +3,6 @@
 mod reduction_coverage;
 mod reduction_inference;
 mod reduction_outings;
+mod reduction_plumbing;
 mod screens;
 mod simulate_van;

@@ -4,9 +4,10 @@
 //! enters where a configuration was driven both ways; drift where the baseline was driven in separate blocks; session where there are
 //! several. The error of the zeros is common to passes and is added outside the scatter.
 
-use super::inference::{ALPHA, POWER, effective_dof, holm, passes_for, t_quantile, t_two_sided_p};
+use super::inference::{self, ALPHA, Between, POWER, effective_dof, holm, passes_for, t_quantile, t_two_sided_p};
 use super::model::{self, Fit};
 use super::passes::Pass;
+use super::scatter::Outlier;
 use super::zeros::Zeros;
 use crate::session::Direction;
 use nalgebra::{DMatrix, DVector};
@@ -67,6 +68,8 @@ pub struct Level {
     pub passes: usize,
     /// Cp by the indicated q.
     pub cp: Estimate,
+    /// How its passes scatter beyond their own standard errors, drift and heading taken off; a diagnosis.
+    pub between: Option<Between>,
 }
 
 /// Difference of one configuration from the baseline.
@@ -120,6 +123,8 @@ pub struct Compared {
     pub comparisons: Vec<Comparison>,
     /// p of "the drift is straight" by tap, where it could be tested.
     straightness: Vec<f64>,
+    /// Pass of each tap that is farthest from the others.
+    pub outliers: Vec<Outlier>,
     /// What is weak about the design.
     pub weaknesses: BTreeSet<Weakness>,
 }
@@ -181,6 +186,20 @@ fn more_passes(c: &Comparison, resolve_cp: f64, family: usize) -> Option<u32> {
     let needed = [change, no_change].into_iter().flatten().min()?;
     let driven = u32::try_from(c.passes[0].min(c.passes[1])).unwrap_or(u32::MAX);
     Some(needed.saturating_sub(driven).max(1))
+}
+
+/// Half-width of the 95 % interval of a configuration's difference over the scatter between passes: what the design alone decides.
+///
+/// *Input* passes that have the tap. *Output* `None` without the configuration, the baseline or degrees of freedom.
+pub(super) fn interval_over_scatter(passes: &[&Pass], tap: &str, question: Question<'_>, letter: &str) -> Option<f64> {
+    let model = Model::new(passes, tap, question);
+    let fit = model::fit(&model.design, &DVector::zeros(passes.len()))?;
+    let place = |letter: &str| model.present.iter().position(|c| *c == letter);
+    let mut contrast = DVector::zeros(model.design.ncols());
+    contrast[place(letter)?] += 1.0;
+    contrast[place(question.baseline)?] -= 1.0;
+    let scale = (contrast.transpose() * &fit.unscaled * &contrast)[(0, 0)];
+    Some(scale.sqrt() * t_quantile(1.0 - ALPHA / 2.0, fit.dof as f64)?)
 }
 
 /// One tap's observations and design.
@@ -330,6 +349,7 @@ impl<'a> Model<'a> {
                 target_kmh: self.passes[0].target_kmh,
                 passes: count(letter),
                 cp: self.estimate(&fit, &contrast, zeros),
+                between: self.between(&fit, letter),
             });
         }
         if let Some(base) = self.present.iter().position(|c| *c == self.question.baseline) {
@@ -340,8 +360,37 @@ impl<'a> Model<'a> {
                 all.comparisons.push(self.comparison(&fit, &contrast, zeros, (self.present[j], passes)));
             }
         }
+        all.outliers.extend(self.outlier(&fit, &y));
         all.weaknesses.extend(self.weaknesses);
         all.weaknesses.extend(single);
+    }
+
+    fn between(&self, fit: &Fit, letter: &str) -> Option<Between> {
+        let of = || (0..self.passes.len()).filter(|i| self.passes[*i].configuration == letter);
+        let errors: Option<Vec<f64>> = of().map(|i| self.passes[i].taps[self.tap].cp_se).collect();
+        inference::between(&of().map(|i| fit.residuals[i]).collect::<Vec<f64>>(), &errors?)
+    }
+
+    /// The pass farthest from the others, by its studentised residual, and every difference with and without it.
+    fn outlier(&self, fit: &Fit, y: &DVector<f64>) -> Option<Outlier> {
+        let sd = fit.variance.map(f64::sqrt).filter(|sd| *sd > 0.0)?;
+        let hat = &self.design * &fit.weights;
+        let studentised = |i: usize| fit.residuals[i].abs() / (sd * (1.0 - hat[(i, i)]).max(f64::EPSILON).sqrt());
+        // A pass that alone carries an estimate has no residual to judge it by.
+        let judged = (0..self.passes.len()).filter(|i| hat[(*i, *i)] < 1.0 - 1e-9);
+        let worst = judged.max_by(|a, b| studentised(*a).total_cmp(&studentised(*b)))?;
+        let p = inference::outlier_p(studentised(worst), fit.dof as f64, self.passes.len())?;
+        let without = model::fit(&self.design.clone().remove_row(worst), &y.clone().remove_row(worst))?;
+        let base = self.present.iter().position(|c| *c == self.question.baseline);
+        let others = (0..self.present.len()).filter(|j| Some(*j) != base);
+        let differences = others.filter_map(|j| {
+            let base = base?;
+            let difference = |fit: &Fit| fit.estimates[j] - fit.estimates[base];
+            Some((self.present[j].to_string(), difference(fit), difference(&without)))
+        });
+        let pass = self.passes[worst];
+        let pass = (pass.session, pass.segments.clone());
+        Some(Outlier { tap: self.tap.to_string(), pass, p, differences: differences.collect() })
     }
 
     fn comparison(
