@@ -13,7 +13,10 @@ pub mod force;
 pub mod inference;
 pub mod model;
 pub mod passes;
+pub mod plan;
+pub mod plumbing;
 pub mod probe;
+pub mod scatter;
 pub mod sweep;
 pub mod wind;
 pub mod zeros;
@@ -26,6 +29,8 @@ use contour::ContourRow;
 use cores::CoreRow;
 use force::{AxleRow, BaseRow, ForceRow, Ground};
 use passes::{LeftOut, Pass};
+use plan::NextPass;
+use scatter::Outlier;
 use std::collections::BTreeSet;
 use sweep::{Interval, SweepRow};
 use zeros::Zeros;
@@ -108,6 +113,8 @@ pub struct Reduction {
     pub contour: Vec<ContourRow>,
     /// What was left out.
     pub left_out: Vec<LeftOut>,
+    /// What to drive next; none when all is decided.
+    pub next: Option<NextPass>,
     /// Cautions, in words.
     pub flags: Vec<String>,
 }
@@ -166,7 +173,8 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
     airspeed::correct(&mut passes, &setup.car.probe, &probe_factor);
     let letters: Vec<String> = configurations.iter().map(|c| c.letter.clone()).collect();
     let question = Question { configurations: &letters, baseline: &baseline, resolve_cp };
-    let (mut levels, comparisons) = compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
+    let Verdicts { mut levels, comparisons, outliers } =
+        compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
     airspeed::widen(&mut levels, &setup.car.probe, &probe_factor);
     let drift = drift(&zeros, sessions, resolve_pa);
     let at_q_pa = probe::dynamic_pressure(air::ISA_DENSITY, at_kmh);
@@ -203,10 +211,16 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
         sweeps: sweeps(ground, &configurations, &taps(sessions)),
         contour,
         left_out,
+        next: None,
         flags,
     };
+    reduction.next = plan::next_pass(&reduction);
     let cautions = cautions(&reduction, sessions, &zeros);
     reduction.flags.splice(0..0, cautions);
+    let scatter = scatter::cautions(&reduction, &outliers);
+    reduction.flags.extend(scatter);
+    let faults = plumbing::faults(&reduction, sessions);
+    reduction.flags.extend(faults.iter().map(ToString::to_string));
     reduction.flags.extend(force::without_area(&setup.car, &reduction));
     Ok(reduction)
 }
@@ -269,16 +283,24 @@ fn mean_air(sessions: &[Session]) -> Option<MeanAir> {
     Some(MeanAir { air, density: air::density(&air), source })
 }
 
+/// What the comparisons of all targets say.
+#[derive(Default)]
+struct Verdicts {
+    levels: Vec<Level>,
+    comparisons: Vec<Comparison>,
+    outliers: Vec<Outlier>,
+}
+
 fn compared(
     passes: &[Pass],
     zeros: &[Zeros<'_>],
     taps: &[String],
     (question, flags): (Question<'_>, &mut Vec<String>),
-) -> (Vec<Level>, Vec<Comparison>) {
+) -> Verdicts {
     let mut targets: Vec<f64> = passes.iter().map(|p| p.target_kmh).collect();
     targets.sort_by(f64::total_cmp);
     targets.dedup();
-    let (mut levels, mut comparisons) = (Vec::new(), Vec::new());
+    let mut all = Verdicts::default();
     let mut weaknesses: BTreeSet<(Weakness, String)> = BTreeSet::new();
     for target in targets {
         let of_target: Vec<&Pass> = passes.iter().filter(|p| p.target_kmh == target).collect();
@@ -286,12 +308,13 @@ fn compared(
         // By configuration, then tap: a configuration's verdicts stand together.
         let place = |letter: &str| question.configurations.iter().position(|c| c == letter);
         compared.comparisons.sort_by_key(|c| place(&c.configuration));
-        levels.append(&mut compared.levels);
-        comparisons.append(&mut compared.comparisons);
+        all.levels.append(&mut compared.levels);
+        all.comparisons.append(&mut compared.comparisons);
+        all.outliers.append(&mut compared.outliers);
         weaknesses.extend(compared.weaknesses.into_iter().map(|w| (w, format!("{target} km/h"))));
     }
     flags.extend(weaknesses.iter().map(|(weakness, at)| format!("{at}: {}", words_of(weakness))));
-    (levels, comparisons)
+    all
 }
 
 fn words_of(weakness: &Weakness) -> String {

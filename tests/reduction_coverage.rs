@@ -238,7 +238,7 @@ fn a_configuration_driven_one_way_is_compared_with_the_same_way() {
         day.plan.retain(|step| *step != Step::Pass(1, Direction::Back));
         Day { heading: 0.02, ..day }
     };
-    let days: Vec<Day> = (0..300).map(one_way).collect();
+    let days: Vec<Day> = (0..600).map(one_way).collect();
     let tally = study(&days);
     tally.print("B one way");
     assert!((93.0..=97.0).contains(&tally.coverage()), "{}", tally.coverage());

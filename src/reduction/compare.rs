@@ -4,9 +4,10 @@
 //! enters where a configuration was driven both ways; drift where the baseline was driven in separate blocks; session where there are
 //! several. The error of the zeros is common to passes and is added outside the scatter.
 
-use super::inference::{ALPHA, POWER, effective_dof, holm, passes_for, t_quantile, t_two_sided_p};
+use super::inference::{self, ALPHA, Between, POWER, effective_dof, holm, passes_for, t_quantile, t_two_sided_p};
 use super::model::{self, Fit};
 use super::passes::Pass;
+use super::scatter::Outlier;
 use super::zeros::{Correction, Zeros};
 use crate::session::Direction;
 use nalgebra::{DMatrix, DVector};
@@ -65,8 +66,10 @@ pub struct Level {
     pub target_kmh: f64,
     /// Passes.
     pub passes: usize,
-    /// Cp by the indicated q.
+    /// Cp.
     pub cp: Estimate,
+    /// How its passes scatter beyond their own standard errors, drift and heading taken off; a diagnosis.
+    pub between: Option<Between>,
 }
 
 /// Difference of one configuration from the baseline.
@@ -120,6 +123,8 @@ pub struct Compared {
     pub comparisons: Vec<Comparison>,
     /// p of "the drift is straight" by tap, where it could be tested.
     straightness: Vec<f64>,
+    /// Pass of each tap that is farthest from the others.
+    pub outliers: Vec<Outlier>,
     /// What is weak about the design.
     pub weaknesses: BTreeSet<Weakness>,
 }
@@ -215,6 +220,17 @@ fn more_passes(c: &Comparison, resolve_cp: f64, family: usize) -> Option<u32> {
     let needed = [change, no_change].into_iter().flatten().min()?;
     let driven = u32::try_from(c.passes[0].min(c.passes[1])).unwrap_or(u32::MAX);
     Some(needed.saturating_sub(driven).max(1))
+}
+
+/// Half-width of the 95 % interval of a configuration's difference over the scatter between passes: what the design alone decides.
+///
+/// *Output* `None` without the configuration, the baseline or degrees of freedom.
+pub(super) fn interval_over_scatter(passes: &[&Pass], question: Question<'_>, letter: &str) -> Option<f64> {
+    let model = Model::new(passes.iter().filter_map(|p| Observation::plain(p, 0.0)).collect(), question)?;
+    let place = |letter: &str| model.present.iter().position(|c| *c == letter);
+    let contrast = model.level_contrast(place(letter)?) - model.level_contrast(place(question.baseline)?);
+    let scale = (contrast.transpose() * &model.fit.unscaled * &contrast)[(0, 0)];
+    Some(scale.sqrt() * t_quantile(1.0 - ALPHA / 2.0, model.fit.dof as f64)?)
 }
 
 /// Observations of one quantity over all passes, and the model fitted to them.
@@ -416,11 +432,43 @@ impl<'a> Model<'a> {
             configuration: o.configuration.to_string(),
             target_kmh,
             passes: o.passes[0],
+            between: self.between(tap, o.configuration),
             cp: o.estimate,
         }));
         all.comparisons.extend(self.differences(zeros).into_iter().map(|o| self.comparison(tap, &o)));
         all.straightness.extend(self.straightness());
+        all.outliers.extend(self.outlier(tap));
         all.weaknesses.extend(self.weaknesses);
+    }
+
+    fn between(&self, tap: &str, letter: &str) -> Option<Between> {
+        let of = || self.observations.iter().enumerate().filter(|(_, o)| o.pass.configuration == letter);
+        let errors: Vec<f64> = of().map(|(_, o)| o.pass.taps.get(tap)?.cp_se).collect::<Option<_>>()?;
+        inference::between(&of().map(|(i, _)| self.fit.residuals[i]).collect::<Vec<f64>>(), &errors)
+    }
+
+    /// The pass farthest from the others, by its studentised residual, and every difference with and without it.
+    fn outlier(&self, tap: &str) -> Option<Outlier> {
+        let fit = &self.fit;
+        let sd = fit.variance.map(f64::sqrt).filter(|sd| *sd > 0.0)?;
+        let hat = &self.design * &fit.weights;
+        let studentised = |i: usize| fit.residuals[i].abs() / (sd * (1.0 - hat[(i, i)]).max(f64::EPSILON).sqrt());
+        // A pass that alone carries an estimate has no residual to judge it by.
+        let judged = (0..self.observations.len()).filter(|i| hat[(*i, *i)] < 1.0 - 1e-9);
+        let worst = judged.max_by(|a, b| studentised(*a).total_cmp(&studentised(*b)))?;
+        let p = inference::outlier_p(studentised(worst), fit.dof as f64, self.observations.len())?;
+        let y = DVector::from_iterator(self.observations.len(), self.observations.iter().map(|o| o.y));
+        let without = model::fit(&self.design.clone().remove_row(worst), &y.remove_row(worst))?;
+        let base = self.present.iter().position(|c| *c == self.question.baseline);
+        let others = (0..self.present.len()).filter(|j| Some(*j) != base);
+        let differences = others.filter_map(|j| {
+            let base = base?;
+            let difference = |fit: &Fit| fit.estimates[j] - fit.estimates[base];
+            Some((self.present[j].to_string(), difference(fit), difference(&without)))
+        });
+        let pass = self.observations[worst].pass;
+        let pass = (pass.session, pass.segments.clone());
+        Some(Outlier { tap: tap.to_string(), pass, p, differences: differences.collect() })
     }
 
     fn comparison(&self, tap: &str, outcome: &Outcome<'_>) -> Comparison {

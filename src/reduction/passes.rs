@@ -4,6 +4,7 @@
 
 use super::air;
 use super::probe::dynamic_pressure;
+use super::scatter::Within;
 use super::zeros::{Correction, Zeros};
 use crate::config::Channel;
 use crate::hold::statistics::standard_error;
@@ -67,6 +68,8 @@ pub struct TapMean {
     pub cp: Option<f64>,
     /// Standard error of that within the pass; a floor of the scatter between passes.
     pub cp_se: Option<f64>,
+    /// How its bins move about that.
+    pub within: Option<Within>,
 }
 
 /// A segment, or a channel of one, that was left out.
@@ -163,10 +166,12 @@ fn pass(index: usize, session: &Session, zeros: &Zeros<'_>, group: &[&Segment]) 
         let zero = zeros.at(channel, middle);
         let pa = raw - zero.as_ref().map_or(0.0, |z| z.pa);
         let cp = q.as_ref().filter(|q| q.pa >= LEAST_Q_PA).map(|q| pa / q.pa).filter(|cp| cp.is_finite());
-        let cp_se = cp
-            .zip(q.as_ref())
-            .and_then(|(cp, q)| residual_se(group, channel, q_channel.as_deref(), cp).map(|se| se / q.pa));
-        Some((tap.clone(), TapMean { channel: channel.clone(), pa, zero, cp, cp_se }))
+        let residuals = cp.and_then(|cp| residuals(group, channel, q_channel.as_deref(), cp));
+        let q_pa = q.as_ref().map(|q| q.pa);
+        let cp_se =
+            residuals.as_ref().zip(q_pa).and_then(|(r, q)| Some(standard_error(r)? / q)).filter(|x| x.is_finite());
+        let within = residuals.map(|r| Within::of(&r, first.bin_s));
+        Some((tap.clone(), TapMean { channel: channel.clone(), pa, zero, cp, cp_se, within }))
     };
     Some(Pass {
         session: index,
@@ -206,8 +211,8 @@ fn ground_q(group: &[&Segment], channel: &str, density: f64) -> Option<DynamicPr
     Some(DynamicPressure { pa, measured: None })
 }
 
-/// Standard error of the mean of p − Cp q within a pass, Pa: gusts cancel in it (ratio estimator, Cochran, Sampling Techniques, chapter 6).
-fn residual_se(group: &[&Segment], channel: &str, q: Option<&str>, cp: f64) -> Option<f64> {
+/// p − Cp q in every bin of a pass, Pa: gusts cancel in it (ratio estimator, Cochran, Sampling Techniques, chapter 6).
+fn residuals(group: &[&Segment], channel: &str, q: Option<&str>, cp: f64) -> Option<Vec<f64>> {
     let mut residuals = Vec::new();
     for segment in group {
         let p = &segment.channels.get(channel)?.bins;
@@ -219,5 +224,5 @@ fn residual_se(group: &[&Segment], channel: &str, q: Option<&str>, cp: f64) -> O
             }
         }
     }
-    standard_error(&residuals)
+    Some(residuals)
 }

@@ -82,6 +82,10 @@ fn verdicts(out: &mut String, r: &Reduction, unit: Unit) {
         out.push('\n');
         wrapped(out, &words);
     }
+    if let Some(next) = &r.next {
+        out.push('\n');
+        wrapped(out, &next.words(r.at_q_pa));
+    }
 }
 
 /// The first target: the speed at which `resolve_pa` is meant.
