@@ -61,7 +61,7 @@ pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
     degraded.iter().for_each(|what| eprintln!("{what}"));
     let first_started = opened.before.as_ref().map_or(started, |s| s.header.started.clone());
     let recorder = match plan.record {
-        true => Some(Recorder::beside(&path, first_started.as_deref().unwrap_or("unknown"))?),
+        true => Some(Recorder::beside(&path, first_started.as_deref())?),
         false => None,
     };
     let shift_us = opened.before.as_ref().map_or(0, |s| shift(s, matches!(feed, Feed::Ports(_))));
