@@ -1,5 +1,6 @@
 //! The one test binary: each module guards a promise that stands at its head.
 
+mod command_line;
 mod same_bytes_same_session;
 mod screens;
 mod simulate_van;

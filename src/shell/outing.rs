@@ -4,7 +4,7 @@ use super::engine::{Arrival, Engine, Outcome};
 use super::feed::{Feed, Running, Sender};
 use super::journal::Journal;
 use super::recorder::Recorder;
-use super::{Trouble, clock, files, live, rehold};
+use super::{Trouble, clock, files, live, rehold, terminal};
 use crate::config::Setup;
 use crate::pipeline::{Event, What};
 use crate::session::{Entry, Session};
@@ -45,6 +45,9 @@ pub enum Ending {
 /// # Errors
 /// [`Trouble`] when it cannot begin, or the stream cannot be read on.
 pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
+    if !plan.unattended {
+        terminal::require()?;
+    }
     let started = match &feed {
         Feed::Record(source, _) => source.started(),
         Feed::Ports(_) | Feed::Van(..) => Some(clock::rfc3339(clock::utc_now())),
