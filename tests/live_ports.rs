@@ -4,7 +4,7 @@
 
 use crate::same_bytes_same_session::{program, read, segments, van, van_outing};
 use portable_pty::{CommandBuilder, PtySize, native_pty_system};
-use serialport::{SerialPort, TTYPort};
+use std::fs::File;
 use std::io::{BufRead, BufReader, Read, Write};
 use std::path::{Path, PathBuf};
 use std::process::{Child, Command as Process, Stdio};
@@ -86,15 +86,17 @@ p1 = "base-high"
 /// How long anything may take before a test gives up on it.
 const PATIENCE: Duration = Duration::from_secs(10);
 
-/// A cable's far end; `link` is where the near end is found.
-fn plug(link: &Path) -> TTYPort {
-    let (master, slave) = TTYPort::pair().unwrap();
-    let device = slave.name().unwrap();
-    drop(slave);
+/// A cable's far end; `link` is where the near end is found. No child inherits it, so that dropping it pulls the cable.
+fn plug(link: &Path) -> File {
+    use rustix::pty::{OpenptFlags, grantpt, openpt, ptsname, unlockpt};
+    let master = openpt(OpenptFlags::RDWR | OpenptFlags::NOCTTY | OpenptFlags::CLOEXEC).unwrap();
+    grantpt(&master).unwrap();
+    unlockpt(&master).unwrap();
+    let device = ptsname(&master, Vec::new()).unwrap().into_string().unwrap();
     let beside = link.with_extension("new");
     std::os::unix::fs::symlink(device, &beside).unwrap();
     std::fs::rename(&beside, link).unwrap();
-    master
+    File::from(master)
 }
 
 fn signal(kind: &str, pid: u32) {
@@ -135,8 +137,8 @@ fn gather(from: impl Read + Send + 'static) -> (Lines, std::thread::JoinHandle<(
 /// The bench: two cables and the files.
 struct Bench {
     dir: tempfile::TempDir,
-    gauge: Option<TTYPort>,
-    gps: Option<TTYPort>,
+    gauge: Option<File>,
+    gps: Option<File>,
     tick: u64,
     started: Instant,
 }
@@ -205,8 +207,8 @@ impl Drive {
             .spawn()
             .unwrap();
         let (lines, reader) = gather(child.stdout.take().unwrap());
-        // The session is made when both ports are open.
-        wait_for("the session", || bench.path(session).exists().then_some(()));
+        // The record is made last, when both ports are open.
+        wait_for("the record", || bench.path(session).with_extension("record").exists().then_some(()));
         bench.started = Instant::now() - Duration::from_millis(5 * bench.tick);
         Self { child, lines, reader }
     }
@@ -279,7 +281,6 @@ fn a_cable_pulled_in_mid_line_is_lost_and_found_and_no_segment_crosses_it() {
     let line = bench.gauge_line();
     bench.gauge.as_mut().unwrap().write_all(&line.as_bytes()[..line.len() / 2]).unwrap();
     // Let it be read before it is torn out: a pair forgets what was not read.
-    bench.gauge.as_mut().unwrap().flush().unwrap();
     std::thread::sleep(Duration::from_millis(30));
     bench.gauge = None;
     bench.feed_until("lost", || drive.said(" lost gauge") == 1);
@@ -539,7 +540,9 @@ fn given_back(sent: &str, screen: &vt100::Screen) {
     assert!(!screen.alternate_screen() && !screen.hide_cursor() && !screen.bracketed_paste());
 }
 
-const STATES: [&str; 5] = ["OFF SLOW", "OFF FAST", "SETTLING", "STEADY", "HELD"];
+/// What stands at the left of the large state word, whichever it is.
+const STATES: [&str; 5] = ["\n▼ ", "\n▲ ", "\n░ ", "\n▒ ", "\n▓ "];
+const HELD: [&str; 1] = ["\n▓ "];
 
 #[test]
 fn a_rehearsal_is_seen_within_a_second_obeys_its_keys_and_gives_the_terminal_back() {
@@ -547,7 +550,7 @@ fn a_rehearsal_is_seen_within_a_second_obeys_its_keys_and_gives_the_terminal_bac
     let mut terminal = Terminal::start(&["rehearse", "--fast", "20"], &[]);
     terminal.wait_to_see(&STATES);
     assert!(began.elapsed() < Duration::from_secs(1), "{:?}", began.elapsed());
-    terminal.wait_to_see(&["HELD"]);
+    terminal.wait_to_see(&HELD);
     terminal.press(" ");
     terminal.wait_to_see(&["kept ", "the next full dwell will be kept"]);
     terminal.press("?");
@@ -599,7 +602,7 @@ fn colours(sent: &str) -> Vec<String> {
 fn no_color_gives_no_colour() {
     for (environment, coloured) in [(&[][..], true), (&[("NO_COLOR", "1")][..], false)] {
         let terminal = Terminal::start(&["rehearse", "--fast", "50"], environment);
-        terminal.wait_to_see(&["HELD"]);
+        terminal.wait_to_see(&HELD);
         signal("-TERM", terminal.child.process_id().unwrap());
         let (_, sent, _, _home) = terminal.end();
         assert_eq!(!colours(&sent).is_empty(), coloured, "{:?}", colours(&sent).first());
