@@ -179,6 +179,7 @@ fn not_negative(text: &str) -> Result<f64, String> {
 /// How the program ends.
 enum Outcome {
     Done,
+    Misused(Trouble),
     Degraded(Vec<String>),
     Problems(Vec<Trouble>),
 }
@@ -209,6 +210,10 @@ pub fn run(words: impl IntoIterator<Item = std::ffi::OsString>) -> u8 {
     };
     match outcome {
         Outcome::Done => 0,
+        Outcome::Misused(trouble) => {
+            eprintln!("{trouble}");
+            2
+        }
         Outcome::Degraded(what) => {
             what.iter().for_each(|what| eprintln!("degraded: {what}"));
             3
@@ -302,31 +307,34 @@ fn ports(setup: &Setup) -> Result<Feed, Vec<Trouble>> {
 
 fn listen(device: Option<&str>) -> Outcome {
     match listen::listen(device) {
-        Ok(text) => {
-            print!("{text}");
-            Outcome::Done
-        }
+        Ok(text) => printed(&text),
         Err(trouble) => trouble.into(),
     }
 }
 
+/// Text on standard output; a reader that has gone away is no problem.
+fn printed(text: &str) -> Outcome {
+    files::write(Path::new("-"), text.as_bytes()).map_or_else(Outcome::from, |()| Outcome::Done)
+}
+
 fn check_files(paths: &[PathBuf]) -> Outcome {
-    let mut problems = Vec::new();
+    let (mut good, mut problems) = (String::new(), Vec::new());
     for path in paths {
         let found = check::check(path);
         found.warnings.iter().for_each(|w| eprintln!("{}", w.to_string().replacen("error:", "warning:", 1)));
         if found.errors.is_empty() {
-            println!("{}: good {}", path.display(), found.summary);
+            good.push_str(&format!("{}: good {}\n", path.display(), found.summary));
         }
         problems.extend(found.errors);
     }
-    if problems.is_empty() { Outcome::Done } else { Outcome::Problems(problems) }
+    let printed = printed(&good);
+    if problems.is_empty() { printed } else { Outcome::Problems(problems) }
 }
 
 fn rehold_record(words: Rehold) -> Outcome {
     if words.csv.is_none() && words.session.is_none() {
-        eprintln!("error: nothing to write\n\nhint: say --csv FILE, --csv - or --session FILE");
-        return Outcome::Problems(Vec::new());
+        let hint = "say --csv FILE, --csv - or --session FILE";
+        return Outcome::Misused(Trouble::new("nothing to write").hint(hint));
     }
     let mut setup = match files::setup_and_warnings(&words.outing) {
         Ok((setup, _)) => setup,

@@ -1,14 +1,17 @@
 //! The one test binary: each module guards a promise that stands at its head.
 
 mod bad_configs;
+mod command_line;
 mod holds;
 mod layers;
+mod live_ports;
 mod outside;
 mod reduction_coverage;
 mod reduction_inference;
 mod reduction_outings;
 mod reduction_plumbing;
+mod same_bytes_same_session;
 mod samples_and_readme;
 mod screens;
 mod simulate_van;
-mod torn_session;
+mod torn_session_recovers;

@@ -38,7 +38,7 @@ fn drive(scenario: Scenario) -> (Vec<u8>, Vec<u8>) {
     let directory = tempfile::tempdir().expect("a temporary directory");
     let path = directory.path().join("van.session");
     let opened = SessionFile::open(&path, &header(&setup, Some(STARTED.to_string()))).expect("a new session");
-    let recorder = Recorder::beside(&path, STARTED).expect("a new record");
+    let recorder = Recorder::beside(&path, Some(STARTED)).expect("a new record");
     let mut engine = Engine::new(&setup, opened.journal, None, false).recording(Some(recorder));
     let port = |name: &str| setup.rig.ports.iter().position(|p| p.name == name).expect("a port of the rig");
     let mut outcomes = Vec::new();
@@ -54,11 +54,6 @@ fn drive(scenario: Scenario) -> (Vec<u8>, Vec<u8>) {
     drop(engine);
     let read = |path: &Path| std::fs::read(path).expect("a file that was just written");
     (read(&path.with_extension("record")), read(&path))
-}
-
-/// The session of the short outing.
-pub fn driven_session() -> Vec<u8> {
-    drive(short()).1
 }
 
 fn short() -> Scenario {

@@ -37,7 +37,7 @@ fn head(path: &Path) -> Result<Vec<u8>, Trouble> {
     let failed = |e| files::cannot_read(path, &e);
     let file = std::fs::File::open(path).map_err(failed)?;
     if file.metadata().map_err(failed)?.is_dir() {
-        return Err(Trouble::new("this is a directory, not a file").at(path.display()));
+        return Err(Trouble::new("this is a directory, not a file").at(path.display()).hint("name a file in it"));
     }
     let mut head = Vec::new();
     file.take(4096).read_to_end(&mut head).map_err(failed)?;

@@ -25,7 +25,7 @@ pub fn cannot_read(path: &Path, error: &io::Error) -> Trouble {
         io::ErrorKind::PermissionDenied => {
             Trouble::new("no right to read the file").hint("change its permissions, or copy it")
         }
-        _ => Trouble::new(format!("the file cannot be read: {error}")),
+        _ => Trouble::new(format!("the file cannot be read: {error}")).hint("give the right file"),
     };
     trouble.at(path.display())
 }
@@ -38,7 +38,7 @@ pub fn read(path: &Path, largest: u64) -> Result<Vec<u8>, Trouble> {
     let failed = |e| cannot_read(path, &e);
     let file = File::open(path).map_err(failed)?;
     if file.metadata().map_err(failed)?.is_dir() {
-        return Err(Trouble::new("this is a directory, not a file").at(path.display()));
+        return Err(Trouble::new("this is a directory, not a file").at(path.display()).hint("name a file in it"));
     }
     let mut bytes = Vec::new();
     file.take(largest + 1).read_to_end(&mut bytes).map_err(failed)?;
@@ -109,6 +109,20 @@ pub fn session(path: &Path) -> Result<Session, Trouble> {
             .at(format!("{}:1", path.display()))
             .hint("a session begins with {\"kind\":\"session\",\"schema\":\"steadytap.session/1\"")
     })
+}
+
+/// Refuses an output that is one of the inputs: it would be lost.
+///
+/// # Errors
+/// [`Trouble`] when it is.
+pub fn spares(output: Option<&Path>, inputs: &[PathBuf]) -> Result<(), Trouble> {
+    let Some(real) = output.and_then(|o| o.canonicalize().ok()) else { return Ok(()) };
+    match inputs.iter().find(|input| input.canonicalize().is_ok_and(|i| i == real)) {
+        Some(input) => Err(Trouble::new("the output would overwrite what it is made of")
+            .at(input.display())
+            .hint("give the output another name; nothing was overwritten")),
+        None => Ok(()),
+    }
 }
 
 /// Writes a whole file, or nothing: under another name first, then in one step. `-` is standard output.

@@ -57,11 +57,12 @@ impl Journal {
             return Self::begin(path, file, header, new);
         }
         let contents = codec::read(&bytes);
+        // Only what is our session may be repaired: anything else is left as it lies.
+        resumable(path, &contents, header)?;
         let repaired = repair(path, &file, &mut bytes, &contents)?;
-        let before = resumable(path, contents, header)?;
         let synced = bytes.len();
         let journal = Self { path: path.to_path_buf(), file: Some(file), content: bytes, synced, trouble: None };
-        Ok(Opened { journal, before: Some(before), repaired })
+        Ok(Opened { journal, before: contents.session(), repaired })
     }
 
     fn begin(path: &Path, file: File, header: &Header, new: bool) -> Result<Opened, Trouble> {
@@ -69,7 +70,12 @@ impl Journal {
             Self { path: path.to_path_buf(), file: Some(file), content: Vec::new(), synced: 0, trouble: None };
         let header = Entry::Session(Box::new(header.clone()));
         let written = journal.try_append(codec::encode(&header).as_bytes());
-        written.and_then(|()| if new { sync_directory(path) } else { Ok(()) }).map_err(|e| cannot_make(path, &e))?;
+        written.and_then(|()| if new { sync_directory(path) } else { Ok(()) }).map_err(|e| {
+            if new {
+                let _ = std::fs::remove_file(path);
+            }
+            cannot_make(path, &e)
+        })?;
         Ok(Opened { journal, before: None, repaired: None })
     }
 
@@ -192,21 +198,20 @@ fn repair(path: &Path, file: &File, bytes: &mut Vec<u8>, contents: &Contents) ->
     Ok(Some(torn))
 }
 
-/// The session to go on with, if it rests on the same setup.
-fn resumable(path: &Path, contents: Contents, header: &Header) -> Result<Session, Trouble> {
+/// Whether these are the contents of a session that rests on the same setup.
+fn resumable(path: &Path, contents: &Contents, header: &Header) -> Result<(), Trouble> {
     let hint = "give another name with --session to begin a new one";
-    let no_header = || {
-        Trouble::new("this is no session file, or its first line is damaged")
+    let Some(found) = &contents.header else {
+        return Err(Trouble::new("this is no session file, or its first line is damaged")
             .at(format!("{}:1", path.display()))
-            .hint(hint)
+            .hint(hint));
     };
-    let session = contents.session().ok_or_else(no_header)?;
-    if session.header.setup != header.setup {
+    if found.setup != header.setup {
         return Err(Trouble::new("this session was begun with another rig, car or outing")
             .at(path.display())
             .hint(hint));
     }
-    Ok(session)
+    Ok(())
 }
 
 #[cfg(unix)]

@@ -31,9 +31,8 @@ const PATIENCE: Duration = Duration::from_secs(1);
 /// Runs the screen until somebody leaves.
 ///
 /// # Errors
-/// [`Trouble`] when there is no terminal, or one of the threads broke (everything kept is on the disk then).
+/// [`Trouble`] when the terminal cannot be used, or one of the threads broke (everything kept is on the disk then).
 pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trouble> {
-    terminal::require()?;
     super::outing::stop_on_signals(running.sender.clone());
     let desk = Desk::new(engine, running.clock, plan);
     let (publish, views) = watch::channel(desk.view());

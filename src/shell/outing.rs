@@ -5,7 +5,7 @@ use super::feed::{Feed, Running, Sender};
 use super::journal::Journal;
 use super::recorder::Recorder;
 use super::watch::Watch;
-use super::{Trouble, clock, files, live, rehold};
+use super::{Trouble, clock, files, live, rehold, terminal};
 use crate::config::Setup;
 use crate::pipeline::{Event, What};
 use crate::session::{Entry, Session};
@@ -46,6 +46,9 @@ pub enum Ending {
 /// # Errors
 /// [`Trouble`] when it cannot begin, or the stream cannot be read on.
 pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
+    if !plan.unattended {
+        terminal::require()?;
+    }
     let started = match &feed {
         Feed::Record(source, _) => source.started(),
         Feed::Ports(_) | Feed::Van(..) => Some(clock::rfc3339(clock::utc_now())),
@@ -62,7 +65,7 @@ pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
     degraded.iter().for_each(|what| eprintln!("{what}"));
     let first_started = opened.before.as_ref().map_or(started, |s| s.header.started.clone());
     let recorder = match plan.record {
-        true => Some(Recorder::beside(&path, first_started.as_deref().unwrap_or("unknown"))?),
+        true => Some(Recorder::beside(&path, first_started.as_deref())?),
         false => None,
     };
     let shift_us = opened.before.as_ref().map_or(0, |s| shift(s, matches!(feed, Feed::Ports(_))));

@@ -73,14 +73,34 @@ impl Source {
             let file = File::open(path).map_err(failed)?;
             let metadata = file.metadata().map_err(failed)?;
             if metadata.is_dir() {
-                return Err(Trouble::new("this is a directory, not a record").at(name));
+                return Err(Trouble::new("this is a directory, not a record").at(name).hint("name a file in it"));
             }
             (Box::new(file), metadata.is_file().then_some(metadata.len()))
         };
         let reader = Reader::new(rig.map(|r| r.ports.as_slice()));
         let mut source = Self { name, input, block: vec![0; BLOCK], reader, bytes: 0, ahead: 0, size };
         source.ahead = source.read()?;
+        source.look_ahead()?;
         Ok(source)
+    }
+
+    /// What was read ahead must be of a record before anything is made of it; a pipe may bring its lines later.
+    fn look_ahead(&self) -> Result<(), Trouble> {
+        let mut reader = Reader::new(None);
+        reader.push(&self.block[..self.ahead], &mut |_| ());
+        let whole = self.size == Some(self.ahead as u64);
+        if whole {
+            reader.finish();
+        }
+        self.readable(&reader.tally)?;
+        let enough = whole || (self.ahead == BLOCK && reader.tally.damaged > 0);
+        if enough { self.proven(&reader.tally, self.ahead as u64) } else { Ok(()) }
+    }
+
+    fn readable(&self, tally: &Tally) -> Result<(), Trouble> {
+        let Some(version) = tally.version.as_ref().filter(|v| *v != "1") else { return Ok(()) };
+        let what = format!("this is a record of version {version}; this program reads version 1");
+        Err(Trouble::new(what).at(format!("{}:1", self.name)).hint("use a newer steadytap"))
     }
 
     /// UTC of stream time 0, if the record begins with it.
@@ -113,23 +133,22 @@ impl Source {
         };
         if n == 0 {
             self.reader.finish();
-            return self.proven().map(|()| false);
+            return self.proven(&self.reader.tally, self.bytes).map(|()| false);
         }
         self.bytes += n as u64;
         self.reader.push(&self.block[..n], each);
         let tally = &self.reader.tally;
-        if let Some(version) = tally.version.as_ref().filter(|v| *v != "1") {
-            let what = format!("this is a record of version {version}; this program reads version 1");
-            return Err(Trouble::new(what).at(format!("{}:1", self.name)).hint("use a newer steadytap"));
+        self.readable(tally)?;
+        if tally.good == 0 && self.bytes > PROOF {
+            self.proven(tally, self.bytes)?;
         }
-        if tally.good == 0 && self.bytes > PROOF { self.proven().map(|()| true) } else { Ok(true) }
+        Ok(true)
     }
 
-    /// It is a record at all: one good line, or a header and nothing else.
-    fn proven(&self) -> Result<(), Trouble> {
-        let tally = &self.reader.tally;
+    /// It is a record at all: it has one good line.
+    fn proven(&self, tally: &Tally, bytes: u64) -> Result<(), Trouble> {
         let hint = "a record line reads `12.345678 gauge 1.0,2.0`: seconds with six decimals, port, line";
-        if self.bytes == 0 || (tally.good == 0 && tally.damaged == 0) {
+        if bytes == 0 || (tally.good == 0 && tally.damaged == 0) {
             return Err(Trouble::new("the record is empty").at(&self.name).hint(hint));
         }
         if tally.good == 0 {

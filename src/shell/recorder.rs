@@ -27,7 +27,7 @@ impl Recorder {
     ///
     /// # Errors
     /// [`Trouble`] when it cannot be made.
-    pub fn beside(session: &Path, started: &str) -> Result<Self, Trouble> {
+    pub fn beside(session: &Path, started: Option<&str>) -> Result<Self, Trouble> {
         for n in 1..10_000 {
             let path = session.with_extension(if n == 1 { "record".to_string() } else { format!("{n}.record") });
             match OpenOptions::new().append(true).create_new(true).open(&path) {

@@ -36,6 +36,8 @@ pub fn text(sessions: &[Session], show: &Show) -> Result<String, ReductionError>
 /// # Errors
 /// [`Trouble`] when a session cannot be read, they do not belong together, or an output cannot be written.
 pub fn reduce(task: &Task) -> Result<Vec<String>, Trouble> {
+    files::spares(task.csv.as_deref(), &task.sessions)?;
+    files::spares(task.json.as_deref(), &task.sessions)?;
     let mut degraded = Vec::new();
     let mut sessions = Vec::new();
     for path in &task.sessions {

@@ -57,6 +57,7 @@ pub fn rehold(setup: &Setup, task: &Task) -> Result<Found, Trouble> {
         let hint = "give another name; nothing was overwritten";
         return Err(Trouble::new("the session exists already").at(path.display()).hint(hint));
     }
+    files::spares(task.csv.as_deref(), std::slice::from_ref(&task.record))?;
     let mut source = Source::open(&task.record, Some(&setup.rig))?;
     let mut run = Run {
         setup,
@@ -134,7 +135,10 @@ impl Run<'_> {
         }
         if let (Some(path), Some(table)) = (&task.csv, self.table) {
             let bytes = table.into_inner().expect("writing to memory cannot fail");
-            files::write(Path::new(path), &bytes)?;
+            files::write(Path::new(path), &bytes).inspect_err(|_| {
+                // Written a moment ago, by us: of two outputs that belong together, none or both.
+                task.session.iter().for_each(|session| drop(std::fs::remove_file(session)));
+            })?;
         }
         Ok(self.found)
     }

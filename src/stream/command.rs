@@ -114,7 +114,7 @@ impl Command {
 }
 
 fn clip(text: &str) -> String {
-    text.chars().take(LONGEST_TEXT).collect()
+    text.chars().take(LONGEST_TEXT).collect::<String>().trim_end().to_string()
 }
 
 fn finite(text: &str) -> Option<f64> {

@@ -135,9 +135,12 @@ fn hex(digit: u8) -> Option<u8> {
     char::from(digit).to_digit(16).and_then(|d| u8::try_from(d).ok())
 }
 
-/// Appends the header lines.
-pub fn write_header(out: &mut Vec<u8>, started: &str) {
-    writeln!(out, "{FIRST_LINE}\n# started {started}").expect("writing to memory cannot fail");
+/// Appends the header lines; without a known instant there is no second one.
+pub fn write_header(out: &mut Vec<u8>, started: Option<&str>) {
+    writeln!(out, "{FIRST_LINE}").expect("writing to memory cannot fail");
+    if let Some(started) = started {
+        writeln!(out, "# started {started}").expect("writing to memory cannot fail");
+    }
 }
 
 /// Appends the record line of a port's line.
