@@ -364,6 +364,9 @@ fn told(found: &rehold::Found, record: &Path) -> Outcome {
         record.display(),
         found.damaged
     );
+    if found.unknown_command > 0 {
+        eprintln!("{} commands of the record are not understood and were passed over", found.unknown_command);
+    }
     let lost = rejected + found.damaged;
     if lost * 100 > good + lost {
         return Outcome::Degraded(vec![format!("{lost} of {} lines did not parse", good + lost)]);

@@ -105,7 +105,7 @@ fn a_mistake_in_a_file_is_told_with_line_column_and_remedy_by_every_command() {
         ("van-outing.toml", "dwell_s = 6.0 ", "dwell_s = -6.0 ", "-6.0", "dwell_s"),
         ("van-rig.toml", "unit = \"hPa\"", "unit = \"kW\"", "\"kW\"", "hPa"),
         ("van-rig.toml", "range = [-100.0, 1000.0]", "range = [1000.0, -100.0]", "[1000.0, -100.0]", "range"),
-        ("van-rig.toml", "name = \"altitude\"", "name = \"track\"", "", "`track` stands here again"),
+        ("van-rig.toml", "name = \"altitude\"", "name = \"track\"", "", "a second channel `track`"),
         ("van-rig.toml", "steadytap = \"rig 1\"", "steadytap = \"rig 2\"", "\"rig 2\"", "rig 1"),
         ("van.toml", "area_m2 = 1.2\n", "area_m2 = -1.2\n", "-1.2", "area"),
         ("van.toml", "wheelbase_m = 3.2", "wheelbase_m = 3,2", "", ""),
@@ -443,6 +443,22 @@ fn a_record_with_more_than_one_line_in_a_hundred_lost_is_status_three() {
 }
 
 #[test]
+fn a_command_of_a_record_that_is_not_understood_is_told() {
+    let desk = Desk::driven();
+    let text = std::fs::read_to_string(desk.path("van.record")).unwrap();
+    desk.write("odd.record", (text + "900.000000 @tkae\n900.000000 @void one\n").as_bytes());
+    let said = "2 commands of the record are not understood";
+    let answer = desk.run("rehold odd.record van-outing.toml --csv -");
+    assert!(answer.err.contains(said), "{}", answer.err);
+    let answer =
+        desk.run("drive van-outing.toml --stream odd.record --unattended --fast max --no-record --session y.session");
+    assert!(answer.err.contains(said), "{}", answer.err);
+    let answer = desk.run("check odd.record");
+    assert_eq!(answer.status, Some(1), "{}", answer.err);
+    assert!(answer.err.contains("unknown command `tkae`") && answer.err.contains("`void` needs"), "{}", answer.err);
+}
+
+#[test]
 fn a_session_with_a_torn_tail_is_repaired_with_status_three() {
     let desk = Desk::driven();
     let whole = std::fs::read(desk.path("van.session")).unwrap();
@@ -453,4 +469,17 @@ fn a_session_with_a_torn_tail_is_repaired_with_status_three() {
     let all = codec::read(&std::fs::read(desk.path("van.session")).unwrap());
     assert_eq!(all.damage, []);
     assert!(desk.contents().contains_key("van.2.record"), "the second run has a record of its own");
+}
+
+#[cfg(unix)]
+#[test]
+fn a_link_given_as_output_stays_a_link() {
+    // What is no plain file, a device above all, is written to and never replaced.
+    let home = tempfile::tempdir().unwrap();
+    let (file, link) = (home.path().join("table.csv"), home.path().join("link.csv"));
+    std::fs::write(&file, "a longer old table").unwrap();
+    std::os::unix::fs::symlink(&file, &link).unwrap();
+    steadytap::shell::files::write(&link, b"table").unwrap();
+    assert!(std::fs::symlink_metadata(&link).unwrap().is_symlink());
+    assert_eq!(std::fs::read(&file).unwrap(), b"table");
 }

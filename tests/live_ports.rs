@@ -489,6 +489,9 @@ impl Terminal {
             command.env(name, value);
         }
         command.env("XDG_DATA_HOME", home.path().join("data"));
+        // The cautions of the first start were seen.
+        std::fs::create_dir_all(home.path().join("data/steadytap")).unwrap();
+        std::fs::write(home.path().join("data/steadytap/cautions-seen"), "").unwrap();
         environment.iter().for_each(|(name, value)| command.env(name, value));
         let child = pair.slave.spawn_command(command).unwrap();
         drop(pair.slave);

@@ -285,3 +285,68 @@ fn a_record_without_a_head_still_gives_the_driven_session_again() {
     rehold_to(&setup, &dir.path().join("c.record"), &again, true);
     same_file(&session, &again);
 }
+
+/// A small generator, so that a failure comes again.
+struct Dice(u64);
+
+impl Dice {
+    fn below(&mut self, n: usize) -> usize {
+        self.0 = self.0.wrapping_mul(6_364_136_223_846_793_005).wrapping_add(1_442_695_040_888_963_407);
+        (self.0 >> 33) as usize % n
+    }
+}
+
+#[test]
+fn whatever_stands_in_a_record_it_is_re_held_without_a_crash_and_the_same_way_twice() {
+    let (setup, dir) = (van(), tempfile::tempdir().unwrap());
+    let first: Vec<Moment> = short().iter().take_while(|m| m.at() < seconds(60.0)).cloned().collect();
+    drive(&setup, &dir.path().join("a.session"), arrivals(&setup, &with(&first, &all_keys()), usize::MAX));
+    let good = std::fs::read(dir.path().join("a.record")).unwrap();
+    let mut dice = Dice(7);
+    let tokens: [&[u8]; 14] = [
+        b"8999999999.000000 ",
+        b"9000000000.000000 ",
+        b"-1.000000 ",
+        b"0.000001 ",
+        b" @take\n",
+        b" @span begin\n",
+        b" @target 999.9\n",
+        b" @void 4294967295\n",
+        b"!gauge lost\n",
+        b",1e308,-1e308",
+        b"\\xZZ\\",
+        b"\n\n",
+        b"nan",
+        b"\xFF\x00",
+    ];
+    for round in 0..60 {
+        let mut bytes = good.clone();
+        for _ in 0..=dice.below(30) {
+            let place = dice.below(bytes.len());
+            match dice.below(4) {
+                0 => bytes[place] ^= 1 << dice.below(8),
+                1 => {
+                    let token = tokens[dice.below(tokens.len())];
+                    bytes.splice(place..place, token.iter().copied());
+                }
+                2 => drop(bytes.drain(place..(place + dice.below(400)).min(bytes.len()))),
+                // At the beginning of a line, where a token is a head.
+                _ => {
+                    let start = bytes[..place].iter().rposition(|c| *c == b'\n').map_or(0, |i| i + 1);
+                    let token = tokens[dice.below(5)];
+                    bytes.splice(start..start, token.iter().copied());
+                }
+            }
+        }
+        let record = dir.path().join("odd.record");
+        std::fs::write(&record, &bytes).unwrap();
+        let sessions = [1, 2].map(|n| dir.path().join(format!("{round}-{n}.session")));
+        let as_driven = round % 2 == 0;
+        for session in &sessions {
+            rehold_to(&setup, &record, session, as_driven);
+        }
+        read(&sessions[0]);
+        same_file(&sessions[0], &sessions[1]);
+        sessions.iter().for_each(|session| std::fs::remove_file(session).unwrap());
+    }
+}

@@ -97,6 +97,13 @@ impl Engine {
         }
     }
 
+    /// Its ports were opened while they talked: what comes before their first line end is half a line.
+    #[must_use]
+    pub fn in_mid_line(mut self) -> Self {
+        self.splitters.iter_mut().for_each(Splitter::skip_to_line_end);
+        self
+    }
+
     /// Moves every stamp by so much.
     #[must_use]
     pub fn shifted(self, shift_us: i64) -> Self {

@@ -139,6 +139,12 @@ pub fn write(path: &Path, bytes: &[u8]) -> Result<(), Trouble> {
             _ => Ok(()),
         };
     }
+    // A device or a pipe is written to, never replaced; so is what a link points to.
+    if std::fs::symlink_metadata(path).is_ok_and(|m| !m.is_file()) {
+        return OpenOptions::new().write(true).truncate(true).open(path).and_then(|mut f| f.write_all(bytes)).map_err(
+            |e| Trouble::new(format!("it cannot be written to: {e}")).at(path.display()).hint("give another place"),
+        );
+    }
     let mut partial = path.as_os_str().to_owned();
     partial.push(format!(".{}.partial", std::process::id()));
     let partial = PathBuf::from(partial);

@@ -68,10 +68,15 @@ pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
         true => Some(Recorder::beside(&path, first_started.as_deref())?),
         false => None,
     };
-    let shift_us = opened.before.as_ref().map_or(0, |s| shift(s, matches!(feed, Feed::Ports(_))));
+    let ports = matches!(feed, Feed::Ports(_));
+    let shift_us = opened.before.as_ref().map_or(0, |s| shift(s, ports));
     // A live stream is watched even where nobody looks.
-    let seen = !plan.unattended || matches!(feed, Feed::Ports(_));
-    let engine = Engine::new(setup, opened.journal, opened.before.as_ref(), seen).shifted(shift_us).recording(recorder);
+    let seen = !plan.unattended || ports;
+    let mut engine =
+        Engine::new(setup, opened.journal, opened.before.as_ref(), seen).shifted(shift_us).recording(recorder);
+    if ports {
+        engine = engine.in_mid_line();
+    }
     let mut running = feed.start(&setup.rig);
     let played = running.played.take();
     let engine = if plan.unattended { unattended(engine, running, plan) } else { live::run(engine, running, plan)? };
@@ -81,6 +86,9 @@ pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
             degraded.push(format!("{} of {} lines of the record were damaged", tally.damaged, tally.lines));
         } else if tally.damaged > 0 {
             eprintln!("{} damaged lines of the record were passed over", tally.damaged);
+        }
+        if tally.unknown_command > 0 {
+            eprintln!("{} commands of the record are not understood and were passed over", tally.unknown_command);
         }
         if tally.unknown_port > 0 {
             eprintln!("{} lines of ports that the rig does not name were passed over", tally.unknown_port);

@@ -180,8 +180,15 @@ impl Source {
         let mut clock: Option<StreamClock> = None;
         let mut going = true;
         while going {
+            let mut unknown = 0;
             let more = self.next(&mut |told| {
-                let Some((at, arrival)) = arrival(&told).filter(|_| going) else { return };
+                if !going {
+                    return;
+                }
+                let Some((at, arrival)) = arrival(&told) else {
+                    unknown += 1;
+                    return;
+                };
                 if let Pace::Times(n) = pace {
                     let clock = clock.get_or_insert_with(|| StreamClock::start(at, Some(n)));
                     if let Some(wait) = clock.until(at) {
@@ -190,6 +197,7 @@ impl Source {
                 }
                 going = send(arrival);
             })?;
+            self.reader.tally.unknown_command += unknown;
             going &= more;
         }
         Ok(())

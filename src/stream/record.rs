@@ -213,6 +213,8 @@ pub struct Tally {
     pub good: u64,
     /// Of these: lines and events of ports that the rig does not name, passed over.
     pub unknown_port: u64,
+    /// Of these: commands that whoever reads the record does not understand, counted by him.
+    pub unknown_command: u64,
     /// Lines passed over as damage.
     pub damaged: u64,
     /// The first of these, from 1, and what was wrong.
