@@ -32,7 +32,7 @@ use passes::{LeftOut, Pass};
 use plan::NextPass;
 use scatter::Outlier;
 use std::collections::BTreeSet;
-use sweep::{Interval, SweepRow};
+use sweep::{Interval, SweepRow, Swept};
 use zeros::Zeros;
 
 /// What a reduction is asked for.
@@ -375,7 +375,7 @@ fn sweeps(ground: Ground<'_>, configurations: &[Configuration], taps: &[String])
     for target in ground.targets() {
         for tap in taps {
             let Some(model) = ground.weighted(target, &[(tap, 1.0)]) else { continue };
-            let Some((levels, quadratic, lack_of_fit_p)) = sweep::sweep(&model, setting) else { continue };
+            let Some(Swept { levels, quadratic, lack_of_fit_p }) = sweep::sweep(&model, setting) else { continue };
             let range = [levels[0].0, levels[levels.len() - 1].0];
             let extreme = quadratic.as_ref().and_then(sweep::Quadratic::vertex);
             let extreme = extreme.filter(|(x, ..)| (range[0]..=range[1]).contains(x)).map(|(x, set, _)| (x, set));

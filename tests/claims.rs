@@ -1,5 +1,11 @@
 //! The one test binary: each module guards a promise that stands at its head.
 
+#![expect(
+    clippy::disallowed_methods,
+    clippy::disallowed_macros,
+    reason = "tests wait for ports and show their figures"
+)]
+
 mod bad_configs;
 mod command_line;
 mod holds;

@@ -51,7 +51,7 @@ fn day(design: Design, change: Change, course: Course, n: usize) -> Day {
             }
         }
         Change::AllTaps(by) => {
-            if i % 2 == 0 {
+            if i.is_multiple_of(2) {
                 by * x
             } else {
                 -by * x

@@ -122,8 +122,11 @@ fn median(mut values: Vec<f64>) -> Option<f64> {
     values.get(values.len() / 2).copied()
 }
 
-/// Taps in their order, each with its passes (index, pass, Cp).
-fn by_tap(r: &Reduction) -> Vec<(&str, Vec<(usize, &Pass, f64)>)> {
+/// A tap with its passes: index, pass, Cp.
+type TapPasses<'r> = (&'r str, Vec<(usize, &'r Pass, f64)>);
+
+/// Taps in their order, each with its passes.
+fn by_tap(r: &Reduction) -> Vec<TapPasses<'_>> {
     let mut taps: Vec<&str> = r.levels.iter().map(|l| l.tap.as_str()).collect();
     let mut known = BTreeSet::new();
     taps.retain(|tap| known.insert(*tap));
@@ -351,7 +354,7 @@ fn steps(r: &Reduction) -> Vec<Step<'_>> {
     let mut best: BTreeMap<&str, (f64, Step<'_>)> = BTreeMap::new();
     for (indices, names) in &groups {
         let passes: Vec<&Pass> = indices.iter().map(|i| &r.passes[*i]).collect();
-        for split in 1..passes.len() {
+        for (split, at) in indices.iter().copied().enumerate().skip(1) {
             let design = step_design(&passes, split);
             let Some(shared) = model::fit(&design, &DVector::zeros(passes.len())).filter(|f| f.dof >= 2) else {
                 continue;
@@ -367,7 +370,7 @@ fn steps(r: &Reduction) -> Vec<Step<'_>> {
                 let tries = (passes.len() * taps.len()) as f64;
                 // What the tap read before, whatever was fitted: the mean over those passes less what came after.
                 let before = y.rows(0, split).sum() / split as f64;
-                let found = Step { tap, at: indices[split], before, after: before + step, se };
+                let found = Step { tap, at, before, after: before + step, se };
                 if p * tries < P_STEP && best.get(tap).is_none_or(|(old, _)| p < *old) {
                     best.insert(tap, (p, found));
                 }

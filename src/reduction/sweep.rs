@@ -264,11 +264,19 @@ pub struct SweepRow {
     pub extreme: Option<(f64, Interval)>,
 }
 
+/// A model's levels over a setting, and the curve through its passes.
+#[derive(Clone, Debug)]
+pub struct Swept {
+    /// Settings, rising, with their levels.
+    pub levels: Vec<(f64, f64)>,
+    /// The quadratic, where it fits or could not be tested.
+    pub quadratic: Option<Quadratic>,
+    /// p of its lack of fit.
+    pub lack_of_fit_p: Option<f64>,
+}
+
 /// Sweeps one model's levels over settings given by configuration; none below three settings.
-pub fn sweep(
-    model: &Model<'_>,
-    setting: impl Fn(&str) -> Option<f64>,
-) -> Option<(Vec<(f64, f64)>, Option<Quadratic>, Option<f64>)> {
+pub fn sweep(model: &Model<'_>, setting: impl Fn(&str) -> Option<f64>) -> Option<Swept> {
     let (fit, design, observations) = model.parts();
     let xs: Vec<Option<f64>> = observations.iter().map(|o| setting(&o.pass.configuration)).collect();
     let mut levels: Vec<(f64, f64)> = Vec::new();
@@ -279,7 +287,7 @@ pub fn sweep(
     let mut settings: Vec<f64> = levels.iter().map(|l| l.0).collect();
     settings.dedup();
     if settings.len() < 3 || xs.iter().any(Option::is_none) {
-        return (settings.len() >= 3).then_some((levels, None, None));
+        return (settings.len() >= 3).then_some(Swept { levels, quadratic: None, lack_of_fit_p: None });
     }
     // The configurations' columns give way to 1, x, x²; the nuisance columns stay.
     let configurations = model.level_values().len();
@@ -289,10 +297,12 @@ pub fn sweep(
         j => design[(i, configurations + j - 3)],
     });
     let y = DVector::from_iterator(observations.len(), observations.iter().map(|o| o.y));
-    let Some(quadratic) = model::fit(&curve, &y) else { return Some((levels, None, None)) };
+    let Some(quadratic) = model::fit(&curve, &y) else {
+        return Some(Swept { levels, quadratic: None, lack_of_fit_p: None });
+    };
     let test =
         lack_of_fit((quadratic.residuals.norm_squared(), quadratic.dof), (fit.residuals.norm_squared(), fit.dof));
-    let p = test.map(|(_, p)| p);
-    let fits = p.is_none_or(|p| p > ALPHA);
-    Some((levels, if fits { Quadratic::of(&quadratic) } else { None }, p))
+    let lack_of_fit_p = test.map(|(_, p)| p);
+    let fits = lack_of_fit_p.is_none_or(|p| p > ALPHA);
+    Some(Swept { levels, quadratic: if fits { Quadratic::of(&quadratic) } else { None }, lack_of_fit_p })
 }
