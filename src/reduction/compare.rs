@@ -110,6 +110,8 @@ pub enum Weakness {
     BaselineOnce,
     /// The drift bends: what a straight one leaves over shows as a change.
     Bent,
+    /// The passes of a tap agree to the last digit, as no measurement does.
+    Still(String),
     /// No degrees of freedom: no intervals.
     NoScatter,
 }
@@ -311,8 +313,8 @@ impl<'a> Model<'a> {
 
     /// Smallest p of "the drift is straight", over sessions.
     ///
-    /// *Method* t test of the coefficient of the squared time (Frisch, Waugh and Lovell: of what the other columns leave of it); `None` where that leaves fewer than [`DOF_TO_BEND`] degrees of freedom. It names
-    /// the trouble and mends nothing: adding the square wherever it tests significant made the 95 % intervals cover 91–93 % of differences.
+    /// *Method* t test of the coefficient of the squared time (Frisch, Waugh and Lovell: of what the other columns leave of it); `None` where
+    /// that leaves fewer than [`DOF_TO_BEND`] degrees of freedom. It names the trouble and mends nothing: adding the square wherever it tests significant made the 95 % intervals cover 91–93 % of differences.
     fn straightness(&self, fit: &Fit) -> Option<f64> {
         let dof = fit.dof.checked_sub(1).filter(|dof| *dof >= DOF_TO_BEND)?;
         let p = |square: &DVector<f64>| {
@@ -332,6 +334,9 @@ impl<'a> Model<'a> {
         let Some(fit) = model::fit(&self.design, &y) else { return };
         if fit.dof == 0 {
             self.weaknesses.insert(Weakness::NoScatter);
+        }
+        if fit.variance == Some(0.0) {
+            self.weaknesses.insert(Weakness::Still(self.tap.to_string()));
         }
         let count = |letter: &str| self.passes.iter().filter(|p| p.configuration == letter).count();
         let single: Vec<Weakness> =
@@ -413,7 +418,7 @@ impl<'a> Model<'a> {
             p,
             p_adjusted: None,
             scatter: fit.variance.map(f64::sqrt),
-            detectable,
+            detectable: detectable.filter(|x| x.is_finite()),
             verdict: Verdict::Undecided,
             passes_needed: None,
         }
@@ -426,6 +431,9 @@ impl<'a> Model<'a> {
         let common = self.zero_variance(&fit.weights_of(contrast), zeros);
         let dof = effective_dof(&[(scatter, fit.dof as f64), (common, f64::INFINITY)]);
         let u = (scatter + common).sqrt();
+        if !u.is_finite() {
+            return Estimate { value, u: None, dof: None, u95: None };
+        }
         let t = dof.and_then(|dof| t_quantile(1.0 - ALPHA / 2.0, dof));
         let u95 = t.map(|t| t * u).filter(|x| x.is_finite());
         Estimate { value, u: Some(u), dof, u95 }

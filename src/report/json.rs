@@ -13,7 +13,8 @@ pub fn json(r: &Reduction) -> String {
         .map(|l| {
             json!({"tap": l.tap, "configuration": l.configuration, "target_kmh": l.target_kmh, "passes": l.passes,
                 "cp": number(l.cp.value), "cp_u95": option(l.cp.u95),
-                "pa_at": number(l.cp.value * r.at_q_pa), "pa_at_u95": pa_u95(&l.cp, r)})
+                "pa_at": number(l.cp.value * r.at_q_pa), "pa_at_u95": pa_u95(&l.cp, r),
+                "cp_between_sd": option(l.between.map(|b| b.sd)), "between_share": option(l.between.map(|b| b.share))})
         })
         .collect();
     let comparisons: Vec<Value> = r
@@ -23,7 +24,8 @@ pub fn json(r: &Reduction) -> String {
             json!({"tap": c.tap, "target_kmh": c.target_kmh, "baseline": r.baseline, "configuration": c.configuration,
                 "delta_cp": number(c.delta.value), "delta_cp_u95": option(c.delta.u95),
                 "delta_pa_at": number(c.delta.value * r.at_q_pa), "delta_pa_at_u95": pa_u95(&c.delta, r),
-                "p_adjusted": option(c.p_adjusted), "verdict": c.verdict.word(), "passes_needed": c.passes_needed})
+                "p_adjusted": option(c.p_adjusted), "verdict": c.verdict.word(), "passes_needed": c.passes_needed,
+                "delta_cp_detectable": option(c.detectable)})
         })
         .collect();
     let object = json!({
