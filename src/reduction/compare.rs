@@ -290,10 +290,10 @@ impl<'a> Model<'a> {
     fn add_drift(&mut self) {
         let (mut told, mut squares) = (false, Vec::new());
         for session in self.sessions() {
-            let within: Vec<&&Pass> = self.passes.iter().filter(|p| p.session == session).collect();
-            let base = |p: &&&Pass| p.configuration == self.question.baseline;
-            let blocks = within.iter().position(|p| base(&p)).zip(within.iter().rposition(|p| base(&p)));
-            let between = blocks.is_some_and(|(first, last)| !within[first..last].iter().all(|p| base(&p)));
+            let within: Vec<&Pass> = self.passes.iter().copied().filter(|p| p.session == session).collect();
+            let base = |p: &&Pass| p.configuration == self.question.baseline;
+            let blocks = within.iter().position(&base).zip(within.iter().rposition(&base));
+            let between = blocks.is_some_and(|(first, last)| !within[first..last].iter().all(base));
             if !between {
                 continue;
             }

@@ -122,8 +122,11 @@ fn median(mut values: Vec<f64>) -> Option<f64> {
     values.get(values.len() / 2).copied()
 }
 
-/// Taps in their order, each with its passes (index, pass, Cp).
-fn by_tap(r: &Reduction) -> Vec<(&str, Vec<(usize, &Pass, f64)>)> {
+/// A pass that has a tap: its index, itself, the tap's Cp.
+type Seen<'a> = (usize, &'a Pass, f64);
+
+/// Taps in their order, each with its passes.
+fn by_tap(r: &Reduction) -> Vec<(&str, Vec<Seen<'_>>)> {
     let mut taps: Vec<&str> = r.levels.iter().map(|l| l.tap.as_str()).collect();
     let mut known = BTreeSet::new();
     taps.retain(|tap| known.insert(*tap));
@@ -134,7 +137,7 @@ fn by_tap(r: &Reduction) -> Vec<(&str, Vec<(usize, &Pass, f64)>)> {
     taps.into_iter().map(|tap| (tap, of(tap))).collect()
 }
 
-fn channel_of(passes: &[(usize, &Pass, f64)], tap: &str) -> String {
+fn channel_of(passes: &[Seen<'_>], tap: &str) -> String {
     passes.last().map_or(String::new(), |(_, p, _)| p.taps[tap].channel.clone())
 }
 

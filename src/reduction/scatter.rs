@@ -10,6 +10,8 @@ use std::collections::BTreeMap;
 
 /// Independent averages in a pass below which its own standard error is only a lower bound.
 const FEWEST_INDEPENDENT: f64 = 10.0;
+/// Move inside a pass that is worth a word, as a share of the smallest change worth knowing.
+const MOVING: f64 = 0.25;
 /// Family error rate of a prompt.
 const ALPHA: f64 = 0.01;
 
@@ -185,7 +187,7 @@ fn moving(r: &Reduction) -> Vec<String> {
     tests
         .iter()
         .zip(adjusted)
-        .filter(|(_, p)| *p <= ALPHA)
+        .filter(|((_, mean, _), p)| *p <= ALPHA && mean.abs() >= MOVING * r.resolve.0)
         .map(|((tap, mean, _), _)| {
             format!("{tap} moves by {mean:+.1} Pa from the first half of a pass to the second: settle longer, look for a slow hose")
         })

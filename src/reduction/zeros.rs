@@ -50,7 +50,7 @@ impl<'a> Zeros<'a> {
         let with = || (0..self.list.len()).filter(|i| self.mean(*i, channel).is_some());
         let middle = |i: usize| f64::midpoint(self.list[i].t0.seconds(), self.list[i].t1.seconds());
         let t = t.seconds();
-        let before = with().filter(|i| middle(*i) <= t).next_back();
+        let before = with().rfind(|i| middle(*i) <= t);
         let after = with().find(|i| middle(*i) > t);
         let parts = match (before, after) {
             (Some(a), Some(b)) => {

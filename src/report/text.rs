@@ -95,7 +95,7 @@ fn next_pass(next: &NextPass, r: &Reduction, unit: Unit) -> String {
     let drive = format!("Next: drive {} {} at {} km/h", next.configuration, next.direction.word(), next.target_kmh);
     let shown = |cp: f64| pressure(cp * r.at_q_pa, unit);
     match &next.why {
-        Why::NotDriven => format!("{drive}: it has no pass yet."),
+        Why::NotDriven => format!("{drive}: it has no pass at this speed yet."),
         Why::Narrows { tap, configuration, from_to: Some((from, to)) } => format!(
             "{drive}: {tap}, {configuration} against {}, comes from ± {} to about ± {} {}.",
             r.baseline,
