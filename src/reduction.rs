@@ -361,6 +361,10 @@ fn words_of(weakness: &Weakness) -> String {
             "the drift bends (warming up?), and what is not straight of it may show as a change; alternate faster"
                 .to_string()
         }
+        Weakness::Drifting(taps) => format!(
+            "drift of more than the change sought at {taps}, with the baseline in two blocks: a drift that is not straight shows as \
+             a change; alternate"
+        ),
         Weakness::Still(tap) => {
             format!("the passes of {tap} agree to the last digit, as no measurement does; look at it")
         }

@@ -88,6 +88,9 @@ struct Tally {
     falsely_changed: usize,
     falsely_same: usize,
     bent: usize,
+    /// Outings that are cautioned of a drift, and those of the wrongly changed ones.
+    cautioned: usize,
+    wrong_and_cautioned: usize,
     /// Differences by verdict.
     changed: usize,
     same: usize,
@@ -104,6 +107,8 @@ impl Tally {
         self.falsely_same += other.falsely_same;
         self.changed += other.changed;
         self.bent += other.bent;
+        self.cautioned += other.cautioned;
+        self.wrong_and_cautioned += other.wrong_and_cautioned;
         self.same += other.same;
         self.half_width += other.half_width;
     }
@@ -119,7 +124,7 @@ impl Tally {
     fn print(&self, what: &str) {
         let known = (self.differences - self.without_interval) as f64;
         println!(
-            "{what:<34} {:>5} outings, {:>6} differences: covered {:>6.2} %, half-width {:.5}, changed {:>5.1} %, no change {:>5.1} %; wrong: changed {:>5.2} %, no change {:>5.2} % of outings; bend seen in {:>4.1} %",
+            "{what:<34} {:>5} outings, {:>6} differences: covered {:>6.2} %, half-width {:.5}, changed {:>5.1} %, no change {:>5.1} %; wrong: changed {:>5.2} %, no change {:>5.2} % of outings; bend seen in {:>4.1} %, cautioned {:>4.1} %, wrong and cautioned {:>4.2} %",
             self.outings,
             self.differences,
             self.coverage(),
@@ -128,7 +133,9 @@ impl Tally {
             100.0 * self.same as f64 / known,
             self.share(self.falsely_changed),
             self.share(self.falsely_same),
-            self.share(self.bent)
+            self.share(self.bent),
+            self.share(self.cautioned),
+            self.share(self.wrong_and_cautioned)
         );
     }
 }
@@ -154,6 +161,9 @@ fn judge(day: &Day) -> Tally {
         falsely_same |= c.verdict == Verdict::NoChange && truth.abs() > resolve_cp();
     }
     tally.bent = usize::from(reduction.flags.iter().any(|f| f.contains("drift bends")));
+    let cautioned = reduction.flags.iter().any(|f| f.contains("a drift that is not straight"));
+    tally.cautioned = usize::from(cautioned);
+    tally.wrong_and_cautioned = usize::from(cautioned && falsely_changed);
     tally.falsely_changed = usize::from(falsely_changed);
     tally.falsely_same = usize::from(falsely_same);
     tally

@@ -74,8 +74,8 @@ fn verdicts(out: &mut String, r: &Reduction, unit: Unit) {
     }
     if !r.comparisons.is_empty() {
         let words = format!(
-            "Differences are pressures at {} km/h in standard air, ± their 95 % half-width; verdicts at 5 % over all taps and \
-             configurations of a target together; a change below {} {} at {} km/h is not worth knowing.",
+            "Differences are pressures at {} km/h in standard air, ± their 95 % half-width; changed is said at 5 % over all taps \
+             and configurations of a target together, no change by each interval alone; a change below {} {} at {} km/h is not worth knowing.",
             r.at_kmh,
             shown(r.resolve.0),
             unit.name,
