@@ -331,6 +331,13 @@ fn words_of(weakness: &Weakness) -> String {
             "the drift bends (warming up?), and what is not straight of it may show as a change; alternate faster"
                 .to_string()
         }
+        Weakness::Drifting(taps) => format!(
+            "drift of more than the change sought at {taps}, with the baseline in two blocks: a drift that is not straight shows as \
+             a change; alternate"
+        ),
+        Weakness::Still(tap) => {
+            format!("the passes of {tap} agree to the last digit, as no measurement does; look at it")
+        }
         Weakness::NoScatter => "too few passes for any interval; drive more".to_string(),
     }
 }
@@ -433,9 +440,7 @@ fn cautions(r: &Reduction, sessions: &[Session], zeros: &[Zeros<'_>]) -> Vec<Str
             drift.channel, drift.change_pa, drift.from_s, drift.to_s
         ));
     }
-    if !r.comparisons.is_empty() {
-        words.push("ten passes without refitting the part replicate the road, not the part".to_string());
-    } else if !r.passes.is_empty() {
+    if r.comparisons.is_empty() && !r.passes.is_empty() {
         words.push(format!("nothing to compare: drive the baseline {} and another configuration", r.baseline));
     }
     words

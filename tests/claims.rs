@@ -16,6 +16,7 @@ mod reduction_coverage;
 mod reduction_inference;
 mod reduction_outings;
 mod reduction_plumbing;
+mod reduction_poor_inputs;
 mod same_bytes_same_session;
 mod samples_and_readme;
 mod screens;

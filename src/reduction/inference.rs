@@ -72,7 +72,7 @@ pub fn power(noncentrality: f64, dof: f64, alpha: f64) -> Option<f64> {
         let density = if u > 0.0 { (log_scale + (dof - 1.0) * u.ln() - dof * u * u / 2.0).exp() } else { 0.0 };
         density * (normal.sf(t * u - noncentrality) + normal.cdf(-t * u - noncentrality))
     };
-    const STEPS: usize = 2000;
+    const STEPS: usize = 500;
     let (low, high) = ((1.0 - 12.0 / (2.0 * dof).sqrt()).max(0.0), 1.0 + 12.0 / (2.0 * dof).sqrt());
     let h = (high - low) / STEPS as f64;
     let inner: f64 = (1..STEPS).map(|i| if i % 2 == 1 { 4.0 } else { 2.0 } * integrand(low + h * i as f64)).sum();
@@ -162,7 +162,7 @@ pub fn between(values: &[f64], errors: &[f64]) -> Option<Between> {
     // Q(τ²) falls below (Σ(y − ȳ)²)/τ², so the root lies below that over k − 1.
     let mean = values.iter().sum::<f64>() / k as f64;
     let (mut low, mut high) = (0.0, values.iter().map(|y| (y - mean).powi(2)).sum::<f64>() / excess);
-    for _ in 0..200 {
+    for _ in 0..60 {
         let middle = f64::midpoint(low, high);
         if q(middle) > excess { low = middle } else { high = middle }
     }

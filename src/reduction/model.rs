@@ -7,6 +7,8 @@ use nalgebra::{DMatrix, DVector};
 
 /// Singular values below this share of the largest one make a column superfluous.
 const RANK_TOLERANCE: f64 = 1e-9;
+/// Residuals below this share of the observations are rounding, not scatter.
+const ROUNDING: f64 = 1e-12;
 
 /// A fitted linear model.
 #[derive(Clone, Debug)]
@@ -17,7 +19,7 @@ pub struct Fit {
     pub weights: DMatrix<f64>,
     /// (X'X)⁻¹.
     pub unscaled: DMatrix<f64>,
-    /// Residual variance; none without degrees of freedom.
+    /// Residual variance; none without degrees of freedom, 0 where only rounding is left.
     pub variance: Option<f64>,
     /// Observations less columns.
     pub dof: usize,
@@ -47,7 +49,8 @@ pub fn fit(design: &DMatrix<f64>, y: &DVector<f64>) -> Option<Fit> {
     let estimates = &weights * y;
     let residuals = y - design * &estimates;
     let dof = n - k;
-    let variance = (dof > 0).then(|| residuals.norm_squared() / dof as f64);
+    let scatter = if residuals.norm() > ROUNDING * y.norm() { residuals.norm_squared() } else { 0.0 };
+    let variance = (dof > 0).then(|| scatter / dof as f64);
     let unscaled = &r_inverse * r_inverse.transpose();
     Some(Fit { estimates, weights, unscaled, variance, dof, residuals })
 }

@@ -29,7 +29,7 @@ pub struct NextPass {
 /// What a next pass is for.
 #[derive(Clone, Debug, PartialEq)]
 pub enum Why {
-    /// The configuration has no pass yet.
+    /// The configuration has no pass at this speed yet.
     NotDriven,
     /// It makes an interval possible at this tap, or narrows the widest undecided one.
     Narrows {
@@ -59,11 +59,15 @@ fn width(c: &Comparison) -> f64 {
 }
 
 fn not_driven(r: &Reduction) -> Option<NextPass> {
-    let first = r.passes.first()?;
-    let without = |letter: &&str| !r.passes.iter().any(|p| p.configuration == **letter);
-    let letters = std::iter::once(r.baseline.as_str()).chain(r.configurations.iter().map(|c| c.letter.as_str()));
-    let configuration = letters.into_iter().find(without)?.to_string();
-    Some(NextPass { configuration, direction: first.direction, target_kmh: first.target_kmh, why: Why::NotDriven })
+    let letters = || std::iter::once(&r.baseline).chain(r.configurations.iter().map(|c| &c.letter));
+    // A pass with another letter at every target shows how fast and which way.
+    r.passes.iter().find_map(|pass| {
+        let driven =
+            |letter: &String| r.passes.iter().any(|p| p.target_kmh == pass.target_kmh && p.configuration == *letter);
+        let configuration = letters().find(|letter| !driven(letter))?.clone();
+        let (direction, target_kmh) = (pass.direction, pass.target_kmh);
+        Some(NextPass { configuration, direction, target_kmh, why: Why::NotDriven })
+    })
 }
 
 fn narrowing(r: &Reduction, widest: &Comparison) -> Option<NextPass> {
@@ -120,22 +124,4 @@ fn spacing(passes: &[&Pass]) -> f64 {
         passes.windows(2).filter(|w| w[0].session == w[1].session).map(|w| w[1].t_s - w[0].t_s).collect();
     apart.sort_by(f64::total_cmp);
     apart.get(apart.len() / 2).copied().filter(|t| *t > 0.0).unwrap_or(BETWEEN_PASSES_S)
-}
-
-impl NextPass {
-    /// The plan in words; half-widths in Pa at the stated speed.
-    pub fn words(&self, at_q_pa: f64) -> String {
-        let drive = format!("drive {} {} at {} km/h next", self.configuration, self.direction.word(), self.target_kmh);
-        match &self.why {
-            Why::NotDriven => format!("{drive}: it has no pass yet"),
-            Why::Narrows { tap, configuration, from_to: Some((from, to)) } => format!(
-                "{drive}: it narrows {configuration} at {tap} most, from ± {:.1} to about ± {:.1} Pa",
-                from * at_q_pa,
-                to * at_q_pa
-            ),
-            Why::Narrows { tap, configuration, from_to: None } => {
-                format!("{drive}: {configuration} at {tap} has no interval yet")
-            }
-        }
-    }
 }

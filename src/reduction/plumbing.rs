@@ -122,11 +122,11 @@ fn median(mut values: Vec<f64>) -> Option<f64> {
     values.get(values.len() / 2).copied()
 }
 
-/// A tap with its passes: index, pass, Cp.
-type TapPasses<'r> = (&'r str, Vec<(usize, &'r Pass, f64)>);
+/// A pass that has a tap: its index, itself, the tap's Cp.
+type Seen<'a> = (usize, &'a Pass, f64);
 
 /// Taps in their order, each with its passes.
-fn by_tap(r: &Reduction) -> Vec<TapPasses<'_>> {
+fn by_tap(r: &Reduction) -> Vec<(&str, Vec<Seen<'_>>)> {
     let mut taps: Vec<&str> = r.levels.iter().map(|l| l.tap.as_str()).collect();
     let mut known = BTreeSet::new();
     taps.retain(|tap| known.insert(*tap));
@@ -137,7 +137,7 @@ fn by_tap(r: &Reduction) -> Vec<TapPasses<'_>> {
     taps.into_iter().map(|tap| (tap, of(tap))).collect()
 }
 
-fn channel_of(passes: &[(usize, &Pass, f64)], tap: &str) -> String {
+fn channel_of(passes: &[Seen<'_>], tap: &str) -> String {
     passes.last().map_or(String::new(), |(_, p, _)| p.taps[tap].channel.clone())
 }
 
@@ -198,19 +198,20 @@ fn following<'a>(r: &'a Reduction, sessions: &[Session]) -> BTreeMap<&'a str, Ve
 
 /// *Method* least squares by centred normal equations, an own mean for every segment, so that a jump between dwells is no gust.
 fn follow(pass: usize, group: &[&Segment], p: &str, q: &str) -> Option<Follow> {
-    let (mut xx, mut xy, mut yy, mut n, mut means) = (Matrix3::zeros(), Vector3::zeros(), 0.0, 0usize, 0usize);
+    // Sums of products of the deviations of q before, q, q after, p.
+    let (mut sums, mut n, mut means) = ([[0.0; 4]; 4], 0usize, 0usize);
     for segment in group {
         let (p, q) = (&segment.channels.get(p)?.bins, &segment.channels.get(q)?.bins);
-        let rows: Vec<(Vector3<f64>, f64)> = (1..p.len().min(q.len()).saturating_sub(1))
-            .filter_map(|i| Some((Vector3::new(q[i - 1]?, q[i]?, q[i + 1]?), p[i]?)))
+        let rows: Vec<[f64; 4]> = (1..p.len().min(q.len()).saturating_sub(1))
+            .filter_map(|i| Some([q[i - 1]?, q[i]?, q[i + 1]?, p[i]?]))
             .collect();
-        let share = 1.0 / rows.len() as f64;
-        let x_mean = rows.iter().fold(Vector3::zeros(), |a, row| a + row.0 * share);
-        let y_mean = rows.iter().map(|row| row.1 * share).sum::<f64>();
-        for (x, y) in rows.iter().map(|row| (row.0 - x_mean, row.1 - y_mean)) {
-            xx += x * x.transpose();
-            xy += x * y;
-            yy += y * y;
+        let mean: [f64; 4] = std::array::from_fn(|k| rows.iter().map(|row| row[k]).sum::<f64>() / rows.len() as f64);
+        for row in &rows {
+            for i in 0..4 {
+                for j in 0..=i {
+                    sums[i][j] += (row[i] - mean[i]) * (row[j] - mean[j]);
+                }
+            }
         }
         n += rows.len();
         means += 1;
@@ -218,6 +219,8 @@ fn follow(pass: usize, group: &[&Segment], p: &str, q: &str) -> Option<Follow> {
     if n < FEWEST_BINS + means {
         return None;
     }
+    let xx = Matrix3::from_fn(|i, j| sums[i.max(j)][i.min(j)]);
+    let (xy, yy) = (Vector3::from_fn(|i, _| sums[3][i]), sums[3][3]);
     let inverse = xx.try_inverse()?;
     let slopes = inverse * xy;
     let variance = (yy - slopes.dot(&xy)).max(0.0) / (n - means - 3) as f64;
@@ -351,37 +354,63 @@ fn steps(r: &Reduction) -> Vec<Step<'_>> {
     for (tap, passes) in &taps {
         groups.entry(passes.iter().map(|p| p.0).collect()).or_default().push(tap);
     }
-    let mut best: BTreeMap<&str, (f64, Step<'_>)> = BTreeMap::new();
+    let tries = (r.passes.len() * taps.len()) as f64;
+    let mut found = Vec::new();
     for (indices, names) in &groups {
         let passes: Vec<&Pass> = indices.iter().map(|i| &r.passes[*i]).collect();
-        for (split, at) in indices.iter().copied().enumerate().skip(1) {
-            let design = step_design(&passes, split);
-            let Some(shared) = model::fit(&design, &DVector::zeros(passes.len())).filter(|f| f.dof >= 2) else {
-                continue;
-            };
-            let last = design.ncols() - 1;
-            for tap in names {
-                let y = DVector::from_iterator(passes.len(), passes.iter().filter_map(|p| p.taps[*tap].cp));
-                let estimates = &shared.weights * &y;
-                let variance = (&y - &design * &estimates).norm_squared() / shared.dof as f64;
-                let se = (variance * shared.unscaled[(last, last)]).sqrt();
-                let (step, dof) = (estimates[last], shared.dof as f64);
-                let p = if se > 0.0 { t_two_sided_p(step / se, dof).unwrap_or(1.0) } else { 1.0 };
-                let tries = (passes.len() * taps.len()) as f64;
-                // What the tap read before, whatever was fitted: the mean over those passes less what came after.
+        let Some(without) = Without::of(&passes) else { continue };
+        for tap in names {
+            let y = DVector::from_iterator(passes.len(), passes.iter().filter_map(|p| p.taps[*tap].cp));
+            let Some((split, step, se, p)) = without.largest_step(&y) else { continue };
+            if p * tries < P_STEP {
+                // What the tap read before, whatever was fitted.
                 let before = y.rows(0, split).sum() / split as f64;
-                let found = Step { tap, at, before, after: before + step, se };
-                if p * tries < P_STEP && best.get(tap).is_none_or(|(old, _)| p < *old) {
-                    best.insert(tap, (p, found));
-                }
+                found.push(Step { tap, at: indices[split], before, after: before + step, se });
             }
         }
     }
-    best.into_values().map(|(_, step)| step).collect()
+    found
 }
 
-/// Levels of the configurations, both ways, a drift, and a step before pass `split`.
-fn step_design(passes: &[&Pass], split: usize) -> DMatrix<f64> {
+/// What is left of passes when the levels of configurations, heading and drift are taken off: the same for all taps of these passes.
+struct Without {
+    /// I − X (X'X)⁻¹ X'.
+    rest: DMatrix<f64>,
+    /// For every split that can be told from those: its number, and what is left of the step, over its square.
+    steps: Vec<(usize, DVector<f64>, f64)>,
+    /// Degrees of freedom with a step.
+    dof: f64,
+}
+
+impl Without {
+    fn of(passes: &[&Pass]) -> Option<Self> {
+        let n = passes.len();
+        let design = undisturbed(passes);
+        let fit = model::fit(&design, &DVector::zeros(n)).filter(|f| f.dof >= 3)?;
+        let rest = DMatrix::identity(n, n) - &design * &fit.weights;
+        let step = |split: usize| {
+            let left = &rest * DVector::from_fn(n, |i, _| f64::from(u8::from(i >= split)));
+            let square = left.norm_squared();
+            (square > 0.05).then_some((split, left, square))
+        };
+        let steps = (1..n).filter_map(step).collect();
+        Some(Self { rest, steps, dof: (fit.dof - 1) as f64 })
+    }
+
+    /// Split, step, its standard error and p of the surest step. *Method* Frisch, Waugh and Lovell: a column's estimate from what the others leave.
+    fn largest_step(&self, y: &DVector<f64>) -> Option<(usize, f64, f64, f64)> {
+        let left = (&self.rest * y).norm_squared();
+        let one = |(split, column, square): &(usize, DVector<f64>, f64)| {
+            let step = column.dot(y) / square;
+            let se = ((left - step * step * square).max(0.0) / self.dof / square).sqrt();
+            Some((*split, step, se, t_two_sided_p(step / se, self.dof).filter(|_| se > 0.0)?))
+        };
+        self.steps.iter().filter_map(one).min_by(|a, b| a.3.total_cmp(&b.3))
+    }
+}
+
+/// Levels of the configurations, both ways, a drift.
+fn undisturbed(passes: &[&Pass]) -> DMatrix<f64> {
     let mut letters: Vec<(&str, u64)> = Vec::new();
     for pass in passes {
         let level = (pass.configuration.as_str(), pass.target_kmh.to_bits());
@@ -394,14 +423,12 @@ fn step_design(passes: &[&Pass], split: usize) -> DMatrix<f64> {
         f64::from(u8::from(p.direction == Direction::Out)) - f64::from(u8::from(p.direction == Direction::Back))
     };
     let both = passes.iter().any(|p| heading(p) != heading(passes[0]));
-    let columns = letters.len() + usize::from(both) + 2;
+    let columns = letters.len() + usize::from(both) + 1;
     DMatrix::from_fn(passes.len(), columns, |i, j| {
         let p = passes[i];
         if j < letters.len() {
             f64::from(u8::from((p.configuration.as_str(), p.target_kmh.to_bits()) == letters[j]))
         } else if j == columns - 1 {
-            f64::from(u8::from(i >= split))
-        } else if j == columns - 2 {
             (p.t_s - first) / (last - first).max(1.0) - 0.5
         } else {
             heading(p)

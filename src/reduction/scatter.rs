@@ -10,6 +10,8 @@ use std::collections::BTreeMap;
 
 /// Independent averages in a pass below which its own standard error is only a lower bound.
 const FEWEST_INDEPENDENT: f64 = 10.0;
+/// Move inside a pass that is worth a word, as a share of the smallest change worth knowing.
+const MOVING: f64 = 0.25;
 /// Family error rate of a prompt.
 const ALPHA: f64 = 0.01;
 
@@ -93,6 +95,7 @@ pub fn cautions(r: &Reduction, outliers: &[Outlier]) -> Vec<String> {
             words.push(outlier(o, r));
         }
     }
+    words.extend(refits(r));
     words.extend(short(r));
     words.extend(moving(r));
     words
@@ -112,6 +115,34 @@ fn outlier(o: &Outlier, r: &Reduction) -> String {
         ));
     }
     words.push_str("; look at it, and void it only for a reason seen on the road");
+    words
+}
+
+/// Passes without touching the part replicate the road, not the part; two letters for one set-up are told.
+fn refits(r: &Reduction) -> Vec<String> {
+    let mut words = Vec::new();
+    for c in r.configurations.iter().filter(|c| c.letter != r.baseline) {
+        let passes = r.passes.iter().filter(|p| p.configuration == c.letter).count();
+        let fitted = |i: usize, p: &Pass| {
+            let before = i.checked_sub(1).map(|i| &r.passes[i]);
+            p.configuration == c.letter && before.is_none_or(|b| b.configuration != c.letter || b.session != p.session)
+        };
+        let fits = r.passes.iter().enumerate().filter(|(i, p)| fitted(*i, p)).count();
+        if fits == 1 && passes > 1 {
+            words.push(format!(
+                "{} was fitted once: its {passes} passes replicate the road, not the part; refit it to know how well it repeats",
+                c.letter
+            ));
+        }
+    }
+    for (i, a) in r.configurations.iter().enumerate() {
+        for b in r.configurations[i + 1..].iter().filter(|b| !a.name.is_empty() && b.name == a.name) {
+            words.push(format!(
+                "{} and {} have one name, `{}`: one set-up under two letters is compared as two; give its passes one letter",
+                a.letter, b.letter, a.name
+            ));
+        }
+    }
     words
 }
 
@@ -156,7 +187,7 @@ fn moving(r: &Reduction) -> Vec<String> {
     tests
         .iter()
         .zip(adjusted)
-        .filter(|(_, p)| *p <= ALPHA)
+        .filter(|((_, mean, _), p)| *p <= ALPHA && mean.abs() >= MOVING * r.resolve.0)
         .map(|((tap, mean, _), _)| {
             format!("{tap} moves by {mean:+.1} Pa from the first half of a pass to the second: settle longer, look for a slow hose")
         })

@@ -2,24 +2,24 @@
 
 use crate::config::Show;
 use crate::reduction::compare::{Comparison, Estimate, Level, Verdict};
+use crate::reduction::plan::{NextPass, Why};
 use crate::reduction::{Reduction, words_of_interval};
-use crate::units::{PRESSURES, STANDARD_GRAVITY, Unit};
-use std::fmt::Write;
+use crate::units::{KMH_PER_M_S, PRESSURES, STANDARD_GRAVITY, Unit};
 
 /// Widest line.
 pub const WIDTH: usize = 100;
 /// Longest name in a table, characters.
 const NAME: usize = 20;
+/// Longest letter of a configuration in a table, characters.
+const LETTER: usize = 4;
 
 /// The whole reduction, in the unit that the outing shows pressures in.
 pub fn text(r: &Reduction, show: &Show) -> String {
     let mut out = String::new();
     let unit = Unit::find(PRESSURES, &show.pressure).unwrap_or(PRESSURES[0]);
     let baseline = r.configurations.iter().find(|c| c.letter == r.baseline).map_or("", |c| c.name.as_str());
-    line(
-        &mut out,
-        &format!("{} · {} · baseline {} {}", safe(&r.title), safe(&r.car), safe(&r.baseline), safe(baseline)),
-    );
+    let head = format!("{} · {} · baseline {} {}", r.title, r.car, r.baseline, baseline);
+    folded(&mut out, &head, "", "  ");
     verdicts(&mut out, r, unit);
     levels(&mut out, r, unit);
     meanings(&mut out, r);
@@ -57,23 +57,26 @@ fn verdicts(out: &mut String, r: &Reduction, unit: Unit) {
             at = Some((c.target_kmh, c.configuration.as_str()));
             let fitted = r.configurations.iter().find(|k| k.letter == c.configuration).map_or("", |k| k.name.as_str());
             let passes = format!("{} + {} passes", c.passes[0], c.passes[1]);
+            let head = format!(
+                "{} {fitted} against {}, driven at {} km/h, {passes}",
+                c.configuration, r.baseline, c.target_kmh
+            );
+            out.push('\n');
+            folded(out, &head, "", "  ");
+        }
+        let (words, numbers) = verdict(c, r, unit);
+        row(out, &format!("  {} {words:<34}", name(&c.tap)), &numbers);
+        if let (Verdict::Undecided, Some(least)) = (c.verdict, c.detectable) {
             line(
                 out,
-                &format!(
-                    "\n{} {} against {}, driven at {} km/h, {passes}",
-                    safe(&c.configuration),
-                    safe(fitted),
-                    safe(&r.baseline),
-                    c.target_kmh
-                ),
+                &format!("      these passes would have found a change of {} {}", shown(least * r.at_q_pa), unit.name),
             );
         }
-        line(out, &format!("  {} {}", name(&c.tap), verdict(c, r, unit)));
     }
     if !r.comparisons.is_empty() {
         let words = format!(
-            "Differences are pressures at {} km/h in standard air, ± their 95 % half-width; verdicts at 5 % over all taps and \
-             configurations of a target together; a change below {} {} at {} km/h is not worth knowing.",
+            "Differences are pressures at {} km/h in standard air, ± their 95 % half-width; changed is said at 5 % over all taps \
+             and configurations of a target together, no change by each interval alone; a change below {} {} at {} km/h is not worth knowing.",
             r.at_kmh,
             shown(r.resolve.0),
             unit.name,
@@ -84,7 +87,26 @@ fn verdicts(out: &mut String, r: &Reduction, unit: Unit) {
     }
     if let Some(next) = &r.next {
         out.push('\n');
-        wrapped(out, &next.words(r.at_q_pa));
+        wrapped(out, &next_pass(next, r, unit));
+    }
+}
+
+/// What to drive next, and what for.
+fn next_pass(next: &NextPass, r: &Reduction, unit: Unit) -> String {
+    let drive = format!("Next: drive {} {} at {} km/h", next.configuration, next.direction.word(), next.target_kmh);
+    let shown = |cp: f64| pressure(cp * r.at_q_pa, unit);
+    match &next.why {
+        Why::NotDriven => format!("{drive}: it has no pass at this speed yet."),
+        Why::Narrows { tap, configuration, from_to: Some((from, to)) } => format!(
+            "{drive}: {tap}, {configuration} against {}, comes from ± {} to about ± {} {}.",
+            r.baseline,
+            shown(*from),
+            shown(*to),
+            unit.name
+        ),
+        Why::Narrows { tap, configuration, from_to: None } => {
+            format!("{drive}: {tap}, {configuration} against {}, has no interval yet.", r.baseline)
+        }
     }
 }
 
@@ -94,7 +116,7 @@ fn first_target(r: &Reduction) -> f64 {
     crate::reduction::probe::speed_of(crate::reduction::air::ISA_DENSITY, r.resolve.0 / r.resolve.1).round()
 }
 
-fn verdict(c: &Comparison, r: &Reduction, unit: Unit) -> String {
+fn verdict(c: &Comparison, r: &Reduction, unit: Unit) -> (String, String) {
     let x = pressure(r.resolve.1 * r.at_q_pa, unit);
     let words = match c.verdict {
         Verdict::Changed if c.delta.value.abs() < r.resolve.1 => format!("changed, by less than {x} {}", unit.name),
@@ -106,11 +128,34 @@ fn verdict(c: &Comparison, r: &Reduction, unit: Unit) -> String {
             None => "undecided".to_string(),
         },
     };
-    format!("{words:<34} {:>17}   Cp {:>16}", with_half_width(&c.delta, r.at_q_pa, unit), cp(&c.delta, true))
+    (words, format!("{:>17}   Cp {:>16}", with_half_width(&c.delta, r.at_q_pa, unit), cp(&c.delta, true)))
+}
+
+/// A row in two parts; the second goes below where both are too long for one line.
+fn row(out: &mut String, left: &str, right: &str) {
+    if left.chars().count() + 1 + right.chars().count() <= WIDTH {
+        line(out, &format!("{left} {right}"));
+    } else {
+        line(out, left);
+        line(out, &format!("  {:NAME$} {right}", ""));
+    }
 }
 
 fn pressure(pa: f64, unit: Unit) -> String {
-    format!("{:.*}", decimals(unit), unit.from_inside(pa))
+    fixed(unit.from_inside(pa), decimals(unit), false)
+}
+
+/// Fixed decimals, unless the figure is so large that it must be nonsense: then its order of magnitude, in as little room.
+fn fixed(x: f64, decimals: usize, signed: bool) -> String {
+    if !x.is_finite() {
+        return "?".to_string();
+    }
+    match (x.abs() < 1e5, signed) {
+        (true, true) => format!("{x:+.decimals$}"),
+        (true, false) => format!("{x:.decimals$}"),
+        (false, true) => format!("{x:+.0e}"),
+        (false, false) => format!("{x:.0e}"),
+    }
 }
 
 /// Decimals that show about a tenth of a pascal.
@@ -119,7 +164,7 @@ fn decimals(unit: Unit) -> usize {
 }
 
 fn with_half_width(e: &Estimate, q: f64, unit: Unit) -> String {
-    let value = format!("{:+.*}", decimals(unit), unit.from_inside(e.value * q));
+    let value = fixed(unit.from_inside(e.value * q), decimals(unit), true);
     match e.u95 {
         Some(u) => format!("{value} ± {} {}", pressure(u * q, unit), unit.name),
         None => format!("{value} ± ? {}", unit.name),
@@ -127,9 +172,9 @@ fn with_half_width(e: &Estimate, q: f64, unit: Unit) -> String {
 }
 
 fn cp(e: &Estimate, signed: bool) -> String {
-    let value = if signed { format!("{:+.4}", e.value) } else { format!("{:.4}", e.value) };
+    let value = fixed(e.value, 4, signed);
     match e.u95 {
-        Some(u) => format!("{value} ± {u:.4}"),
+        Some(u) => format!("{value} ± {}", fixed(u, 4, false)),
         None => format!("{value} ± ?"),
     }
 }
@@ -147,19 +192,20 @@ fn levels(out: &mut String, r: &Reduction, unit: Unit) {
                 ),
             );
         }
-        line(out, &level(l, r, unit));
+        let (head, numbers) = level(l, r, unit);
+        row(out, &head, &numbers);
+    }
+    if r.levels.iter().any(|l| l.between.is_some()) {
+        wrapped(out, "s: scatter of Cp from pass to pass beyond what the gusts within the passes explain.");
     }
 }
 
-fn level(l: &Level, r: &Reduction, unit: Unit) -> String {
+fn level(l: &Level, r: &Reduction, unit: Unit) -> (String, String) {
     let passes = format!("{} pass{}", l.passes, if l.passes == 1 { "" } else { "es" });
-    let letter = safe(&l.configuration);
-    format!(
-        "  {} {letter:<4} {passes:>10} {:>22}   Cp {:>17}",
-        name(&l.tap),
-        with_half_width(&l.cp, r.at_q_pa, unit),
-        cp(&l.cp, false)
-    )
+    let letter: String = safe(&l.configuration).chars().take(LETTER).collect();
+    let scatter = l.between.map_or(String::new(), |b| format!("  s {}", fixed(b.sd, 4, false)));
+    let numbers = format!("{:>22}   Cp {:>17}{scatter}", with_half_width(&l.cp, r.at_q_pa, unit), cp(&l.cp, false));
+    (format!("  {} {letter:<4} {passes:>10}", name(&l.tap)), numbers)
 }
 
 /// Forces, axles, base drag, cores, contour: only what the car file makes possible.
@@ -259,34 +305,39 @@ fn meanings(out: &mut String, r: &Reduction) {
 
 /// A value with its half-width and unit.
 fn physical(e: &Estimate, decimals: usize, unit: &str) -> String {
-    let half = e.u95.map_or("?".to_string(), |u| format!("{u:.decimals$}"));
-    format!("{:+.decimals$} ± {half} {unit}", e.value).trim_end().to_string()
+    let half = e.u95.map_or("?".to_string(), |u| fixed(u, decimals, false));
+    format!("{} ± {half} {unit}", fixed(e.value, decimals, true)).trim_end().to_string()
 }
 
 fn surroundings(out: &mut String, r: &Reduction) {
     line(out, "\nAir, wind, zeros");
     if let Some(a) = &r.air {
         let source = super::json::source(a.source);
-        line(
-            out,
-            &format!(
-                "  air {:.1} °C, {:.1} hPa, {:.0} % humidity ({source}): {:.4} kg/m³",
-                a.air.temperature_c, a.air.pressure_hpa, a.air.humidity_pct, a.density
-            ),
+        let words = format!(
+            "air {} °C, {} hPa, {} % humidity ({source}): {} kg/m³",
+            fixed(a.air.temperature_c, 1, false),
+            fixed(a.air.pressure_hpa, 1, false),
+            fixed(a.air.humidity_pct, 0, false),
+            fixed(a.density, 4, false)
         );
+        wrapped(out, &words);
     }
     if !r.wind.is_empty() {
         let n = r.wind.len();
         let wind = r.wind.iter().map(|w| w.head_wind_out_kmh).sum::<f64>() / n as f64;
-        line(out, &format!("  head wind on the way out {wind:+.1} km/h, mean of {n} out-and-back pairs"));
+        wrapped(
+            out,
+            &format!("head wind on the way out {} km/h, mean of {n} out-and-back pairs", fixed(wind, 1, true)),
+        );
     }
     if let Some(wind) = &r.probe_factor.wind {
-        let (speed, from) = (wind.speed_m_s() * crate::units::KMH_PER_M_S, wind.from_deg());
-        line(out, &format!("  wind {speed:.1} km/h from {from:.0}°, by all headings"));
+        let (speed, from) = (wind.speed_m_s() * KMH_PER_M_S, wind.from_deg());
+        wrapped(out, &format!("wind {} km/h from {from:.0}°, by all headings", fixed(speed, 1, false)));
     }
-    let half = r.probe_factor.u95.map_or("?".to_string(), |u| format!("{u:.4}"));
     if r.passes.iter().any(|p| p.q.as_ref().is_some_and(|q| q.measured.is_some())) {
-        wrapped(out, &format!("probe factor {:.4} ± {half}, {}", r.probe_factor.k, r.probe_factor.source.words()));
+        let half = r.probe_factor.u95.map_or("?".to_string(), |u| fixed(u, 4, false));
+        let k = fixed(r.probe_factor.k, 4, false);
+        wrapped(out, &format!("probe factor {k} ± {half}, {}", r.probe_factor.source.words()));
     }
     let mut channels: Vec<&str> = r.drift.iter().map(|d| d.channel.as_str()).collect();
     channels.dedup();
@@ -294,10 +345,8 @@ fn surroundings(out: &mut String, r: &Reduction) {
         let of = || r.drift.iter().filter(|d| d.channel == channel);
         let largest = of().map(|d| d.change_pa).fold(0.0f64, |a, b| if b.abs() > a.abs() { b } else { a });
         let u = of().map(|d| d.u_pa).fold(0.0, f64::max);
-        line(
-            out,
-            &format!("  zero of {} moved by at most {largest:+.2} ± {:.2} Pa between zeros", safe(channel), 2.0 * u),
-        );
+        let (largest, u) = (fixed(largest, 2, true), fixed(2.0 * u, 2, false));
+        wrapped(out, &format!("zero of {channel} moved by at most {largest} ± {u} Pa between zeros"));
     }
 }
 
@@ -317,13 +366,24 @@ fn left_out(out: &mut String, r: &Reduction) {
 
 /// Words in lines of at most [`WIDTH`], indented.
 fn wrapped(out: &mut String, text: &str) {
-    let mut current = String::from(" ");
+    folded(out, text, "  ", "    ");
+}
+
+/// Words in lines of at most [`WIDTH`]; a word that is longer is cut.
+fn folded(out: &mut String, text: &str, first: &str, next: &str) {
+    let mut current = String::from(first);
+    let mut empty = true;
     for word in safe(text).split_whitespace() {
-        if current.chars().count() + 1 + word.chars().count() > WIDTH {
+        let word: String = word.chars().take(WIDTH - next.len()).collect();
+        if !empty && current.chars().count() + 1 + word.chars().count() > WIDTH {
             line(out, &current);
-            current = String::from("   ");
+            (current, empty) = (String::from(next), true);
         }
-        let _ = write!(current, " {word}");
+        if !empty {
+            current.push(' ');
+        }
+        current.push_str(&word);
+        empty = false;
     }
     line(out, &current);
 }
