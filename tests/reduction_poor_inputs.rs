@@ -123,7 +123,7 @@ fn no_dynamic_pressure() {
         edited(day().outing(), move |s| names.iter().for_each(|n| drop(s.channels.remove(*n))))
     };
     let made = sound(&[without(&["q"])], &Options::default());
-    says(&made, "q from ground speed and density");
+    says(&made, "no probe: a fallback");
     assert!(made.levels.iter().all(|l| (l.cp.value + 0.2).abs() < 0.3));
     let made = sound(&[without(&["q", "speed"])], &Options::default());
     says(&made, "passes without q");
