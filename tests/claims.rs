@@ -10,6 +10,7 @@ mod bad_configs;
 mod command_line;
 mod holds;
 mod layers;
+mod lines;
 mod live_ports;
 mod outside;
 mod reduction_coverage;

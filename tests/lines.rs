@@ -1,0 +1,186 @@
+//! A line either parses whole or is rejected with a reason, and nothing depends on how its bytes were cut into reads.
+
+use proptest::prelude::*;
+use steadytap::config::{Channel, Convert, LineFormat, Port, Rig};
+use steadytap::stream::number;
+use steadytap::stream::record::{self, Reader, Told};
+use steadytap::stream::splitter::{LONGEST_LINE, Piece, Splitter};
+use steadytap::stream::{Decoder, Reject};
+use steadytap::units::{Quantity, StreamTime};
+
+/// A decoder of a port whose channels use `p1` and `p2`.
+fn decoder(format: LineFormat, columns: &[&str]) -> Decoder {
+    let port = Port {
+        name: "gauge".to_string(),
+        device: None,
+        usb: None,
+        baud: 115_200,
+        format,
+        columns: columns.iter().map(ToString::to_string).collect(),
+        dtr: true,
+    };
+    let channel = |field: &str| Channel {
+        name: field.to_string(),
+        port: "gauge".to_string(),
+        field: field.to_string(),
+        quantity: Quantity::Other,
+        unit: String::new(),
+        convert: Convert::Linear { gain: 1.0, offset: 0.0 },
+        range: None,
+        lag_s: 0.0,
+        tube: None,
+        damping_s: 0.0,
+        stale_s: 1.0,
+    };
+    let rig = Rig { ports: vec![port.clone()], channels: vec![channel("p1"), channel("p2")] };
+    Decoder::new(&rig, &port)
+}
+
+fn values(decoder: &mut Decoder, line: &str) -> Result<Vec<Option<f64>>, Reject> {
+    decoder.decode(line.as_bytes()).map(<[_]>::to_vec)
+}
+
+#[test]
+fn columns_take_every_usual_separator() {
+    let mut d = decoder(LineFormat::Columns, &["p1", "p2"]);
+    for line in ["1.5,-2", "1.5;-2", "1.5\t-2", "1.5 -2", " 1.5 ,  -2 ", "1.5   -2", "+1.5,-2.0", "15e-1,-.2e1"] {
+        assert_eq!(values(&mut d, line), Ok(vec![Some(1.5), Some(-2.0)]), "{line:?}");
+    }
+}
+
+#[test]
+fn columns_reject_what_is_no_finite_decimal_or_another_count() {
+    let mut d = decoder(LineFormat::Columns, &["p1", "p2"]);
+    for (line, why) in [
+        ("", Reject::Empty),
+        ("   ", Reject::Empty),
+        ("1", Reject::FieldCount { have: 1, need: 2 }),
+        ("1,2,3", Reject::FieldCount { have: 3, need: 2 }),
+        ("1,2,", Reject::FieldCount { have: 3, need: 2 }),
+        ("1,", Reject::NotANumber { field: 2 }),
+        (",1", Reject::NotANumber { field: 1 }),
+        ("1,,2", Reject::NotANumber { field: 2 }),
+        ("nan,1", Reject::NotANumber { field: 1 }),
+        ("1,inf", Reject::NotANumber { field: 2 }),
+        ("1,-inf", Reject::NotANumber { field: 2 }),
+        ("1e999,1", Reject::NotANumber { field: 1 }),
+        ("0x10,1", Reject::NotANumber { field: 1 }),
+        ("1_0,1", Reject::NotANumber { field: 1 }),
+        ("1,2\0", Reject::NotANumber { field: 2 }),
+        ("\u{1b}]0;x\u{7}", Reject::NotANumber { field: 1 }),
+        ("banner v1.2", Reject::NotANumber { field: 1 }),
+        ("1.5.2,1", Reject::NotANumber { field: 1 }),
+        ("1e,1", Reject::NotANumber { field: 1 }),
+        ("--1,1", Reject::NotANumber { field: 1 }),
+    ] {
+        assert_eq!(values(&mut d, line), Err(why), "{line:?}");
+    }
+    // A decimal comma where one number is wanted is two numbers.
+    let mut one = decoder(LineFormat::Columns, &["p1"]);
+    assert_eq!(values(&mut one, "1,234"), Err(Reject::FieldCount { have: 2, need: 1 }));
+}
+
+#[test]
+fn pairs_and_json_give_the_names_in_the_line_and_no_others() {
+    let mut d = decoder(LineFormat::Pairs, &[]);
+    assert_eq!(values(&mut d, "p1=12.3 p2=-4.0"), Ok(vec![Some(12.3), Some(-4.0)]));
+    assert_eq!(values(&mut d, "p2:-4,state:ok"), Ok(vec![None, Some(-4.0)]));
+    assert_eq!(values(&mut d, "p1=nan"), Err(Reject::NotANumber { field: 1 }));
+    assert_eq!(values(&mut d, "hello"), Err(Reject::NotAPair { field: 1 }));
+    assert_eq!(values(&mut d, ""), Err(Reject::Empty));
+    let mut d = decoder(LineFormat::Json, &[]);
+    assert_eq!(values(&mut d, r#"{"p1": 12.3, "id": "x", "p2": -4}"#), Ok(vec![Some(12.3), Some(-4.0)]));
+    assert_eq!(values(&mut d, r#"{"p1": null}"#), Ok(vec![None, None]));
+    for bad in [r#"{"p1": {"a": 1}}"#, r#"{"p1": 1"#, "[1]", r#"{"p1": NaN}"#, r#"{"p1": 1e999}"#] {
+        assert_eq!(values(&mut d, bad), Err(Reject::NotFlatJson), "{bad}");
+    }
+    assert_eq!(values(&mut d, r#"{"p1": "12"}"#), Err(Reject::NotANumber { field: 1 }));
+}
+
+fn pieces(bytes: &[u8], chunks: impl Iterator<Item = usize>) -> Vec<(bool, Vec<u8>)> {
+    let (mut splitter, mut rest, mut out) = (Splitter::default(), bytes, Vec::new());
+    for n in chunks {
+        let (head, tail) = rest.split_at(n.min(rest.len()));
+        splitter.push(head, |piece| match piece {
+            Piece::Line(line) => out.push((false, line.to_vec())),
+            Piece::Cut(line) => out.push((true, line.to_vec())),
+        });
+        rest = tail;
+    }
+    assert!(rest.is_empty(), "all was fed");
+    out
+}
+
+#[test]
+fn a_line_without_end_is_cut_and_memory_stays_bounded() {
+    let mut bytes = vec![b'A'; 10 << 20];
+    bytes.extend_from_slice(b"\nnext\r\n");
+    let got = pieces(&bytes, std::iter::repeat_n(4096, bytes.len() / 4096 + 1));
+    assert_eq!(got.len(), 2);
+    assert!(got[0].0 && got[0].1.len() == LONGEST_LINE);
+    assert_eq!(got[1], (false, b"next".to_vec()));
+    // Just the longest length, with CR LF, is whole.
+    let mut bytes = vec![b'B'; LONGEST_LINE];
+    bytes.extend_from_slice(b"\r\n");
+    for chunk in [1000, bytes.len()] {
+        let got = pieces(&bytes, std::iter::repeat_n(chunk, bytes.len() / chunk + 1));
+        assert_eq!(got, [(false, vec![b'B'; LONGEST_LINE])]);
+    }
+}
+
+fn told(bytes: &[u8], chunk: usize) -> (Vec<String>, record::Tally) {
+    let mut reader = Reader::new(None);
+    let mut all = Vec::new();
+    for piece in bytes.chunks(chunk.max(1)) {
+        reader.push(piece, &mut |t: Told<'_>| all.push(format!("{t:?}")));
+    }
+    reader.finish();
+    (all, reader.tally)
+}
+
+#[test]
+fn damage_in_a_record_is_passed_over_and_told() {
+    let record =
+        b"# steadytap record 1\n# started 2026-06-14T09:12:03.250Z\n1.000000 gauge 1\nno head\n0.500000 gauge back\n\
+        2.000000 gauge 2\n2.1 gauge short\n3.000000 @take\n4.000000 !gauge lost\n5.000000 gauge torn";
+    let (all, tally) = told(record, 7);
+    assert_eq!(all.len(), 4, "{all:?}");
+    assert_eq!((tally.good, tally.damaged), (4, 4));
+    assert_eq!(tally.first_damage, Some((4, "no `seconds port line` head")));
+    assert_eq!(tally.started.as_deref(), Some("2026-06-14T09:12:03.250Z"));
+}
+
+proptest! {
+    #![proptest_config(ProptestConfig { cases: 300, failure_persistence: None, ..ProptestConfig::default() })]
+
+    #[test]
+    fn lines_do_not_depend_on_the_reads(bytes in prop::collection::vec(prop::sample::select(b"a1,.\r\n\\x".to_vec()), 0..200), cuts in prop::collection::vec(1usize..9, 200)) {
+        let whole = pieces(&bytes, std::iter::once(bytes.len()));
+        prop_assert_eq!(&whole, &pieces(&bytes, std::iter::repeat_n(1, bytes.len())));
+        prop_assert_eq!(&whole, &pieces(&bytes, cuts.into_iter().chain([200])));
+    }
+
+    #[test]
+    fn a_record_does_not_depend_on_the_reads(bytes in prop::collection::vec(prop::sample::select(b"0123. gauge@!take\r\n\\x#".to_vec()), 0..300), chunk in 1usize..50) {
+        prop_assert_eq!(told(&bytes, 300), told(&bytes, chunk));
+    }
+
+    #[test]
+    fn any_bytes_come_back_from_a_record_line(line in prop::collection::vec(any::<u8>(), 0..100), us in 0i64..9_000_000_000) {
+        let mut record = Vec::new();
+        record::write_line(&mut record, StreamTime::from_micros(us), "gauge", &line);
+        let printable = record[..record.len() - 1].iter().all(|c| (0x20..=0x7E).contains(c));
+        prop_assert!(printable);
+        let read = record::parse(&record[..record.len() - 1]);
+        let Some(record::Line::Port { at, port, escaped }) = read else { return Err(TestCaseError::fail("no line")) };
+        prop_assert_eq!((at.micros(), port), (us, &b"gauge"[..]));
+        let unescaped = record::unescape(escaped);
+        prop_assert_eq!(unescaped.as_ref(), &line[..]);
+    }
+
+    #[test]
+    fn a_number_is_what_the_standard_library_reads(text in "[+-]?[0-9]{0,20}(\\.[0-9]{0,20})?(e[+-]?[0-9]{1,3})?") {
+        let expected = text.parse::<f64>().ok().filter(|x| x.is_finite());
+        prop_assert_eq!(number::whole(text.as_bytes()).map(f64::to_bits), expected.map(f64::to_bits));
+    }
+}
