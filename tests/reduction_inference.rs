@@ -914,7 +914,7 @@ fn passes_of_one_fitting_are_said_to_replicate_the_road() {
         -0.621, -0.6188, -0.6235, -0.648, -0.6502, -0.6471, -0.6151, -0.613, -0.6172, -0.6399, -0.6428, -0.6414,
         -0.6259, -0.6241, -0.6266, -0.6555, -0.6521, -0.654,
     ];
-    let is_a = |i: usize| (i / 3) % 2 == 0;
+    let is_a = |i: usize| (i / 3).is_multiple_of(2);
     let design = DMatrix::from_fn(18, 2, |i, j| f64::from(u8::from(is_a(i) == (j == 0))));
     let fit = fit(&design, &DVector::from_column_slice(&cp)).unwrap();
     let c = DVector::from_column_slice(&[-1.0, 1.0]);

@@ -1,4 +1,5 @@
 //! Faults of hoses and sensors are named by tap from the data, and a healthy outing is left in peace.
+#![expect(clippy::disallowed_macros, reason = "the figures are for whoever runs the study with --nocapture")]
 
 use crate::reduction_outings::{BIN_S, Chance, Course, Day, p, plan, statistics, tap};
 use steadytap::reduction::plumbing::{Fault, Kind, faults};
@@ -20,7 +21,7 @@ fn day(n: usize) -> Day {
         scatter: [0.002, pick(&[0.001, 0.003], 2)],
         drift: pick(&[0.0, 0.02], 4),
         zero_drift_pa: pick(&[0.0, 4.0], 8),
-        course: if n % 5 == 0 { Course::Warming } else { Course::Straight },
+        course: if n.is_multiple_of(5) { Course::Warming } else { Course::Straight },
         noise_pa: pick(&[0.3, 1.0, 2.0], 3),
         wind_kmh: pick(&[0.0, 8.0], 7),
         wind_sd_kmh: 2.0,
