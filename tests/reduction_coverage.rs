@@ -1,4 +1,5 @@
 //! The intervals cover as they say, and verdicts are wrong no more often than they say, over many simulated outings.
+#![expect(clippy::disallowed_macros, reason = "the figures are for whoever runs the study with --nocapture")]
 
 use crate::reduction_outings::{Course, Day, Step, plan};
 use std::sync::atomic::{AtomicUsize, Ordering};

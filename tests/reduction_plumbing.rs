@@ -1,4 +1,5 @@
 //! Faults of hoses and sensors are named by tap from the data, and a healthy outing is left in peace.
+#![expect(clippy::disallowed_macros, reason = "the figures are for whoever runs the study with --nocapture")]
 
 use crate::reduction_outings::{BIN_S, Chance, Course, Day, p, plan, statistics, tap};
 use steadytap::reduction::plumbing::{Fault, Kind, faults};
