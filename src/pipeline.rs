@@ -4,7 +4,9 @@
 //! entries, byte for byte: nothing in here knows the time of day, a file or a port.
 
 pub mod health;
+pub mod kept;
 pub mod logbook;
+pub mod refusal;
 
 use crate::config::{Setup, Watch};
 use crate::hold::dwell::{Dwell, Hold};
@@ -17,7 +19,8 @@ use crate::stream::command::Command;
 use crate::stream::{Decoder, Reject};
 use crate::units::{KMH_PER_M_S, Quantity, StreamTime};
 use health::Health;
-use logbook::{Logbook, Refusal};
+use logbook::Logbook;
+use refusal::Refusal;
 
 /// Below this ground speed the car stands, km/h.
 const STANDING_KMH: f64 = 1.0;

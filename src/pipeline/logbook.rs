@@ -3,6 +3,8 @@
 //! Full dwells and commands → session entries. A dwell gets its tags when it is full; `take` keeps it with those, however much
 //! later it is pressed before the next one holds.
 
+use super::kept::{HeldDwell, KeptSegment};
+use super::refusal::Refusal;
 use super::{Event, What};
 use crate::config::{Air, Configuration, Setup};
 use crate::hold::Rule;
@@ -20,74 +22,6 @@ use std::collections::{BTreeMap, VecDeque};
 const DIRECTION_WITHIN_DEG: f64 = 45.0;
 /// Marks older than this cannot lie in a dwell that is still to come, µs.
 const MARKS_KEPT_US: i64 = 3_600_000_000;
-
-/// Why a command could not be done, with the remedy.
-#[derive(Clone, Debug, PartialEq, thiserror::Error)]
-pub enum Refusal {
-    /// `void` of a number that no segment has.
-    #[error("there is no segment {0}: nothing was voided")]
-    NoSuchSegment(u32),
-    /// `void` of a void segment.
-    #[error("segment {0} is void already")]
-    AlreadyVoid(u32),
-    /// `zero` on the move.
-    #[error("no zero: the car moves at {0:.1} km/h; stop first")]
-    Moving(f64),
-    /// `zero` without a speed.
-    #[error("no zero: there is no speed, so nobody knows that the car stands; check the speed's port")]
-    NoSpeed,
-    /// `zero` too soon after stopping.
-    #[error("no zero: the car has stood for {have_s:.1} s; wait until {need_s:.1} s")]
-    StandLonger {
-        /// How long it has stood.
-        have_s: f64,
-        /// How long it must.
-        need_s: f64,
-    },
-    /// A letter that the outing does not have.
-    #[error("there is no configuration `{letter}`: the outing has {known}")]
-    NoSuchConfiguration {
-        /// What was asked for.
-        letter: String,
-        /// What there is.
-        known: String,
-    },
-    /// A channel or tap that rig and car do not have, or a tap on two channels.
-    #[error("taps unchanged: {0}")]
-    Taps(String),
-    /// `span begin` twice.
-    #[error("a span is open already: end it first")]
-    SpanOpen,
-    /// `span end` without a begin.
-    #[error("no span is open: begin one first")]
-    NoSpan,
-}
-
-/// A segment in short, for counting passes.
-#[derive(Clone, Debug, PartialEq)]
-pub struct KeptSegment {
-    /// Its number.
-    pub id: u32,
-    /// What was fitted.
-    pub configuration: String,
-    /// Which way.
-    pub direction: Direction,
-    /// Target speed; none for a span.
-    pub target_kmh: Option<f64>,
-    /// Which run of the session and which stretch of that.
-    pub pass: (u32, u32),
-    /// It was withdrawn.
-    pub void: bool,
-}
-
-/// The dwell whose values stand still.
-#[derive(Clone, Debug, PartialEq)]
-pub struct HeldDwell {
-    /// As it will stand in the file; its id is 0 until it is kept.
-    pub segment: Segment,
-    /// Its number once it was kept.
-    pub kept: Option<u32>,
-}
 
 struct ChannelFacts {
     name: String,

@@ -1,0 +1,29 @@
+//! What was kept, in short, and the dwell that can still be.
+
+use crate::session::{Direction, Segment};
+
+/// A segment in short, for counting passes.
+#[derive(Clone, Debug, PartialEq)]
+pub struct KeptSegment {
+    /// Its number.
+    pub id: u32,
+    /// What was fitted.
+    pub configuration: String,
+    /// Which way.
+    pub direction: Direction,
+    /// Target speed; none for a span.
+    pub target_kmh: Option<f64>,
+    /// Which run of the session and which stretch of that.
+    pub pass: (u32, u32),
+    /// It was withdrawn.
+    pub void: bool,
+}
+
+/// The dwell whose values stand still.
+#[derive(Clone, Debug, PartialEq)]
+pub struct HeldDwell {
+    /// As it will stand in the file; its id is 0 until it is kept.
+    pub segment: Segment,
+    /// Its number once it was kept.
+    pub kept: Option<u32>,
+}
