@@ -382,7 +382,10 @@ fn sweeps(ground: Ground<'_>, configurations: &[Configuration], taps: &[String])
     for target in ground.targets() {
         for tap in taps {
             let Some(model) = ground.weighted(target, &[(tap, 1.0)]) else { continue };
-            let Some(Swept { levels, quadratic, lack_of_fit_p }) = sweep::sweep(&model, setting) else { continue };
+            let Some(swept) = sweep::sweep(&model, setting) else { continue };
+            let baseline = setting(ground.question.baseline);
+            let crossing = baseline.and_then(|x| sweep::reaches(&swept, x, ground.question.resolve_cp));
+            let Swept { levels, quadratic, lack_of_fit_p } = swept;
             let range = [levels[0].0, levels[levels.len() - 1].0];
             let extreme = quadratic.as_ref().and_then(sweep::Quadratic::vertex);
             let extreme = extreme.filter(|(x, ..)| (range[0]..=range[1]).contains(x)).map(|(x, set, _)| (x, set));
@@ -394,6 +397,7 @@ fn sweeps(ground: Ground<'_>, configurations: &[Configuration], taps: &[String])
                 quadratic,
                 lack_of_fit_p,
                 extreme,
+                crossing,
             });
         }
     }

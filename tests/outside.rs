@@ -716,3 +716,25 @@ fn an_escaped_line_reads_back_to_the_same_bytes() {
     assert!(escaped.iter().all(|c| (0x20..=0x7E).contains(c)));
     assert_eq!(record::unescape(&escaped).as_ref(), all);
 }
+
+/// The setting where a change becomes worth knowing is a crossing of the same curves (checks swp-cross and swp-pchip-mono).
+#[test]
+fn a_change_worth_knowing_is_reached_where_the_curve_crosses_it() {
+    let (curve, ..) = quadratic();
+    let start = curve.at(0.0);
+    let swept = sweep::Swept {
+        levels: vec![(0.0, start), (25.0, curve.at(25.0))],
+        quadratic: Some(curve),
+        lack_of_fit_p: None,
+    };
+    let found = sweep::reaches(&swept, 0.0, start + 0.3).expect("it gets there");
+    assert!((found.at - 11.017412867939008).abs() < 1e-6, "{found:?}");
+    let ([low, high], open) = found.interval.expect("a quadratic has a band");
+    assert!((low - 10.272578275090325).abs() < 1e-4 && (high - 11.820467320137599).abs() < 1e-4 && open == [false; 2]);
+    assert_eq!(sweep::reaches(&swept, 0.0, 1.0), None, "never beyond the tested range");
+    let levels =
+        [0.0, 5.0, 10.0, 15.0, 20.0, 25.0].into_iter().zip([-0.2155, -0.2585, -0.2945, -0.3215, -0.3315, -0.3415]);
+    let drawn = sweep::Swept { levels: levels.collect(), quadratic: None, lack_of_fit_p: Some(0.01) };
+    let found = sweep::reaches(&drawn, 0.0, 0.3 - 0.2155).expect("it gets there");
+    assert!((found.at - 10.875338624257264).abs() < 1e-6 && found.interval.is_none(), "{found:?}");
+}

@@ -262,6 +262,40 @@ pub struct SweepRow {
     pub lack_of_fit_p: Option<f64>,
     /// Setting of the extreme within the tested range, and its set.
     pub extreme: Option<(f64, Interval)>,
+    /// Where the change from the baseline becomes worth knowing.
+    pub crossing: Option<Crossing>,
+}
+
+/// Where a curve crosses a level within the tested range.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Crossing {
+    /// The setting.
+    pub at: f64,
+    /// Settings whose 95 % band contains the level, and whether they go on beyond the tested range; none for a curve that interpolates.
+    pub interval: Option<([f64; 2], [bool; 2])>,
+}
+
+/// Where the change from the baseline's setting reaches a size, on the side of the largest change.
+///
+/// *Output* `None` where the curve does not get there within the tested range. *Method* inversion of the quadratic's 95 % band; else the first crossing of
+/// the shape-preserving cubic. The baseline's own level is taken as known.
+pub fn reaches(swept: &Swept, baseline_setting: f64, size: f64) -> Option<Crossing> {
+    let nearest = |x: f64| swept.levels.iter().find(|l| l.0 == x).map(|l| l.1);
+    let start = swept.quadratic.as_ref().map_or(nearest(baseline_setting), |q| Some(q.at(baseline_setting)))?;
+    let far = swept.levels.iter().map(|l| l.1 - start).max_by(|a, b| a.abs().total_cmp(&b.abs()))?;
+    let level = start + size * far.signum();
+    let range = [swept.levels.first()?.0, swept.levels.last()?.0];
+    match &swept.quadratic {
+        Some(q) => {
+            let at = q.crossing(level, range)?;
+            Some(Crossing { at, interval: q.crossing_interval(level, range) })
+        }
+        None => {
+            let (x, y): (Vec<f64>, Vec<f64>) = swept.levels.iter().copied().unzip();
+            let at = *Pchip::new(&x, &y)?.crossings(level).first()?;
+            Some(Crossing { at, interval: None })
+        }
+    }
 }
 
 /// A model's levels over a setting, and the curve through its passes.

@@ -147,5 +147,8 @@ fn sweep(s: &SweepRow) -> Value {
     let levels: Vec<Value> = s.levels.iter().map(|(x, cp)| json!({"setting": number(*x), "cp": number(*cp)})).collect();
     json!({"tap": s.tap, "target_kmh": s.target_kmh, "parameter": s.parameter.0, "unit": s.parameter.1, "levels": levels,
         "quadratic": s.quadratic.as_ref().map(|q| q.b.map(number)), "lack_of_fit_p": option(s.lack_of_fit_p),
-        "extreme": option(s.extreme.map(|e| e.0)), "extreme_interval95": bounds})
+        "extreme": option(s.extreme.map(|e| e.0)), "extreme_interval95": bounds,
+        "worth_knowing_at": option(s.crossing.map(|c| c.at)),
+        "worth_knowing_interval95": s.crossing.and_then(|c| c.interval).map(|(ends, _)| ends.map(number)),
+        "worth_knowing_open": s.crossing.and_then(|c| c.interval).map(|(_, open)| open)})
 }

@@ -3,6 +3,7 @@
 use crate::config::Show;
 use crate::reduction::compare::{Comparison, Estimate, Level, Verdict};
 use crate::reduction::plan::{NextPass, Why};
+use crate::reduction::sweep::Crossing;
 use crate::reduction::{Reduction, words_of_interval};
 use crate::units::{KMH_PER_M_S, PRESSURES, STANDARD_GRAVITY, Unit};
 
@@ -284,7 +285,8 @@ fn meanings(out: &mut String, r: &Reduction) {
                 format!("extreme at {x:.1}, {}", words_of_interval(set, &safe(&s.parameter.1)))
             }
         };
-        wrapped(out, &format!("{} {} km/h: Cp {}; {curve}", safe(&s.tap), s.target_kmh, settings.join(", ")));
+        let reaches = s.crossing.map_or(String::new(), |c| format!("; {}", reaches(&c, &safe(&s.parameter.1))));
+        wrapped(out, &format!("{} {} km/h: Cp {}; {curve}{reaches}", safe(&s.tap), s.target_kmh, settings.join(", ")));
     }
     if !r.contour.is_empty() {
         line(out, "\nSection of the contour, by chord; a coarse ring of taps shows a false drag");
@@ -301,6 +303,17 @@ fn meanings(out: &mut String, r: &Reduction) {
             ),
         );
     }
+}
+
+/// Where a change becomes worth knowing; an interval that leaves the tested range is open.
+fn reaches(c: &Crossing, unit: &str) -> String {
+    let interval =
+        c.interval.map_or("no interval: the curve interpolates".to_string(), |([low, high], [below, above])| {
+            let low = if below { "open below".to_string() } else { format!("{low:.1}") };
+            let high = if above { "open above".to_string() } else { format!("{high:.1}") };
+            format!("{low} to {high}")
+        });
+    format!("the change becomes worth knowing at {:.1} {unit} ({interval})", c.at)
 }
 
 /// A value with its half-width and unit.
