@@ -246,20 +246,25 @@ fn a_record_driven_again_unattended_gives_what_rehold_gives() {
         assert_eq!(segments(&read(&session)), expected, "pieces of {piece}");
     }
     let session = dir.path().join("file.session");
-    let output = program()
-        .args(["drive", "--unattended", "--fast", "max", "--stream"])
-        .arg(&record)
-        .arg("--session")
-        .arg(&session)
-        .arg(van_outing())
-        .output()
-        .unwrap();
-    assert!(output.status.success(), "{}", String::from_utf8_lossy(&output.stderr));
+    driven_from(&record, &session);
     assert_eq!(segments(&read(&session)), expected);
     // And the record that this drive wrote gives this drive's session again, byte for byte.
     let third = dir.path().join("third.session");
     rehold_to(&setup, &dir.path().join("file.record"), &third, true);
     same_file(&session, &third);
+}
+
+/// Drives a record as a stream, as the user would on the command line.
+fn driven_from(record: &Path, session: &Path) {
+    let output = program()
+        .args(["drive", "--unattended", "--fast", "max", "--stream"])
+        .arg(record)
+        .arg("--session")
+        .arg(session)
+        .arg(van_outing())
+        .output()
+        .unwrap();
+    assert!(output.status.success(), "{}", String::from_utf8_lossy(&output.stderr));
 }
 
 #[test]
@@ -271,15 +276,7 @@ fn a_record_without_a_head_still_gives_the_driven_session_again() {
     let bare = dir.path().join("bare.record");
     std::fs::write(&bare, text.lines().skip(2).map(|line| format!("{line}\n")).collect::<String>()).unwrap();
     let session = dir.path().join("c.session");
-    let output = program()
-        .args(["drive", "--unattended", "--fast", "max", "--stream"])
-        .arg(&bare)
-        .arg("--session")
-        .arg(&session)
-        .arg(van_outing())
-        .output()
-        .unwrap();
-    assert!(output.status.success(), "{}", String::from_utf8_lossy(&output.stderr));
+    driven_from(&bare, &session);
     assert_eq!(read(&session).header.started, None);
     let again = dir.path().join("d.session");
     rehold_to(&setup, &dir.path().join("c.record"), &again, true);
