@@ -8,6 +8,7 @@ use super::digits::{self, Size};
 use super::figures::Figures;
 use super::theme::Role;
 use super::{Row, View, WindowState};
+use crate::units::Quantity;
 use ratatui::layout::Rect;
 
 /// How the channels stand.
@@ -101,14 +102,19 @@ fn flag(row: &Row) -> Option<&'static str> {
     }
 }
 
+/// A label at the left of its columns and, where there is room, the unit at their right.
+fn draw_label(canvas: &mut Canvas, (x, y): (u16, u16), columns: u16, (label, role): (&str, Role), unit: &str) {
+    let used = canvas.text((x, y), columns, label, role);
+    if usize::from(columns - used) > unit.chars().count() {
+        canvas.text_right((x + columns, y), columns - used, unit, Role::Quiet);
+    }
+}
+
 fn draw_tile(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
     let figures = Figures::of(row.quantity, &view.show);
     let x = area.x + 2;
     let words = TILE_WORDS - 3;
-    let used = canvas.text((x, area.y), words, &row.label, Role::Strong);
-    if usize::from(words - used) > figures.unit().len() {
-        canvas.text_right((x + words, area.y), words - used, figures.unit(), Role::Quiet);
-    }
+    draw_label(canvas, (x, area.y), words, (&row.label, Role::Strong), figures.unit());
     canvas.text((x, area.y + 1), words, &format!("live{:>8}", figures.signed(row.live)), Role::Quiet);
     match flag(row) {
         Some(flag) => canvas.text((x, area.y + 2), words, &format!(" {flag} "), Role::Trouble),
@@ -146,7 +152,7 @@ impl Columns {
 fn draw_table_head(view: &View, canvas: &mut Canvas, area: Rect) {
     let columns = Columns::of(area.width);
     let mut right = area.x + 1 + columns.label;
-    let unit = Figures::of(crate::units::Quantity::Pressure, &view.show).unit();
+    let unit = Figures::of(Quantity::Pressure, &view.show).unit();
     canvas.text((area.x + 2, area.y), columns.label, &format!("tap {unit}"), Role::Quiet);
     for (word, columns) in [("held", columns.held), ("live", columns.live), ("sd", columns.spread)] {
         right += columns;
@@ -161,7 +167,9 @@ fn draw_line(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
     let figures = Figures::of(row.quantity, &view.show);
     let columns = Columns::of(area.width);
     let mut right = area.x + 1 + columns.label;
-    canvas.text((area.x + 2, area.y), columns.label - 1, &row.label, Role::Base);
+    let of_head = row.quantity == Quantity::Pressure;
+    let unit = if of_head { "" } else { figures.unit() };
+    draw_label(canvas, (area.x + 2, area.y), columns.label - 1, (&row.label, Role::Base), unit);
     let held = if held_role(view) == Role::Held { Role::Held } else { Role::Strong };
     let cells = [
         (figures.signed(row.held), columns.held, held),
