@@ -238,6 +238,28 @@ fn nothing_is_overwritten_and_nothing_half_written() {
     desk.refuses(&goes_on.replace("--session van.session", "--session van.toml"), 1, &["no session", "van.toml"]);
 }
 
+/// A pipe or a device that is named as an output is written to; putting a new file in its place would destroy it.
+#[cfg(unix)]
+#[test]
+fn a_pipe_given_as_output_is_written_to_and_not_replaced() {
+    use std::os::unix::fs::FileTypeExt;
+    let desk = Desk::driven();
+    let pipe = desk.path("pipe.csv");
+    assert!(std::process::Command::new("mkfifo").arg(&pipe).status().unwrap().success());
+    let from = pipe.clone();
+    // The writer opens both ways in, so that a program that never opens the pipe cannot hang the test.
+    let open = std::fs::OpenOptions::new().read(true).write(true).open(&from).unwrap();
+    let reader = std::thread::spawn(move || {
+        let mut head = [0; 7];
+        std::io::Read::read_exact(&mut &open, &mut head).map(|()| (head, open))
+    });
+    std::fs::write(desk.path("few.record"), b"1.000000 gauge 1\n").unwrap();
+    let answer = desk.run("rehold few.record van-outing.toml --csv pipe.csv");
+    assert_eq!(answer.status, Some(3), "its one line does not parse: {}", answer.err);
+    assert!(std::fs::symlink_metadata(&pipe).unwrap().file_type().is_fifo(), "the pipe was replaced by a file");
+    assert_eq!(&reader.join().unwrap().unwrap().0, b"stretch");
+}
+
 /// Re-holding tells how much it read on standard error, so two outputs that belong together are tried apart from the rest.
 #[test]
 fn of_two_outputs_there_are_both_or_none() {

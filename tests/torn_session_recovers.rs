@@ -363,7 +363,7 @@ fn a_session_that_cannot_be_a_file_is_refused_with_the_remedy() {
 
 #[cfg(unix)]
 #[test]
-fn a_session_that_is_a_link_or_a_device_is_refused() {
+fn a_session_that_is_a_link_or_a_socket_is_refused() {
     let dir = tempfile::tempdir().unwrap();
     let [target, link] = ["target", "link.session"].map(|name| dir.path().join(name));
     std::os::unix::fs::symlink(&target, &link).unwrap();
@@ -372,10 +372,10 @@ fn a_session_that_is_a_link_or_a_device_is_refused() {
     std::fs::write(&target, b"mine").unwrap();
     open_error(&link);
     assert_eq!(std::fs::read(&target).unwrap(), b"mine");
-    open_error(Path::new("/dev/null"));
-    if Path::new("/dev/full").exists() {
-        open_error(Path::new("/dev/full"));
-    }
+    let socket = dir.path().join("socket.session");
+    let _listener = std::os::unix::net::UnixListener::bind(&socket).unwrap();
+    open_error(&socket);
+    assert!(!std::fs::metadata(&socket).unwrap().is_file(), "the socket is as it was");
 }
 
 #[cfg(target_os = "linux")]
