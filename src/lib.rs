@@ -27,7 +27,7 @@
 //! | 9 | [`screen`] | a pipeline | a drawn frame (observer) |
 //! | 9 | [`simulate`] | a seed | the bytes the ports of an invented van would send |
 //! | 10 | [`shell`] | the world: ports, files, clock, terminal | inputs for the pipeline; the only I/O |
-//! | 10 | [`cli`] | words | a command and its exit status |
+//! | 11 | [`cli`] | words | a command and its exit status |
 //!
 //! Nothing below the shell reads a clock, a file, an environment variable or a random source: the same
 //! bytes give the same session.

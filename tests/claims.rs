@@ -22,4 +22,6 @@ mod same_bytes_same_session;
 mod samples_and_readme;
 mod screens;
 mod simulate_van;
+mod statistics;
 mod torn_session_recovers;
+mod units;

@@ -8,17 +8,21 @@ use steadytap::stream::splitter::{LONGEST_LINE, Piece, Splitter};
 use steadytap::stream::{Decoder, Reject};
 use steadytap::units::{Quantity, StreamTime};
 
-/// A decoder of a port whose channels use `p1` and `p2`.
-fn decoder(format: LineFormat, columns: &[&str]) -> Decoder {
-    let port = Port {
-        name: "gauge".to_string(),
+fn port_of(name: &str, format: LineFormat, columns: &[&str]) -> Port {
+    Port {
+        name: name.to_string(),
         device: None,
         usb: None,
         baud: 115_200,
         format,
         columns: columns.iter().map(ToString::to_string).collect(),
         dtr: true,
-    };
+    }
+}
+
+/// A decoder of a port whose channels use `p1` and `p2`.
+fn decoder(format: LineFormat, columns: &[&str]) -> Decoder {
+    let port = port_of("gauge", format, columns);
     let channel = |field: &str| Channel {
         name: field.to_string(),
         port: "gauge".to_string(),
@@ -97,6 +101,87 @@ fn pairs_and_json_give_the_names_in_the_line_and_no_others() {
     assert_eq!(values(&mut d, r#"{"p1": "12"}"#), Err(Reject::NotANumber { field: 1 }));
 }
 
+/// A sentence with its checksum, after NMEA 0183.
+fn sentence(body: &str) -> String {
+    format!("${body}*{:02X}", body.bytes().fold(0, |sum, c| sum ^ c))
+}
+
+#[test]
+fn an_nmea_checksum_is_two_hexadecimal_digits_and_no_sign() {
+    // The characters of this body sum to less than 16, so that a sign and one digit would name the sum.
+    let body = ('A'..='Z').map(|c| format!("GPXX{c},,A")).find(|b| b.bytes().fold(0, |s, c| s ^ c) < 16).unwrap();
+    let sum = body.bytes().fold(0, |s, c| s ^ c);
+    let mut d = decoder(LineFormat::Nmea, &[]);
+    assert!(values(&mut d, &format!("${body}*{sum:02x}")).is_ok());
+    assert_eq!(values(&mut d, &format!("${body}*+{sum:X}")), Err(Reject::NoChecksum));
+}
+
+#[test]
+fn an_nmea_time_or_date_that_is_none_is_rejected() {
+    let mut d = decoder(LineFormat::Nmea, &[]);
+    let rmc = |time: &str, date: &str| sentence(&format!("GPRMC,{time},A,4807.038,N,01131.000,E,022.4,084.4,{date},,"));
+    assert!(values(&mut d, &rmc("123519.25", "230394")).is_ok());
+    for time in ["1235", "12351", "+1+2+3", "1.2.3.", "12351e300", "1235-9", "996199", "126019", "123561", "1235190"] {
+        assert_eq!(values(&mut d, &rmc(time, "230394")), Err(Reject::NotANumber { field: 2 }), "{time}");
+    }
+    for date in ["+30394", "2303", "2303994"] {
+        assert_eq!(values(&mut d, &rmc("123519", date)), Err(Reject::NotANumber { field: 10 }), "{date}");
+    }
+}
+
+#[test]
+fn without_a_fix_the_receiver_is_said_to_have_none_whichever_sentence_tells() {
+    let fix = |q: u8| sentence(&format!("GPGGA,123519,4807.038,N,01131.000,E,{q},08,0.9,545.4,M,46.9,M,,"));
+    let mut d = decoder(LineFormat::Nmea, &[]);
+    for (line, no_fix) in [
+        (fix(0), true),
+        (fix(1), false),
+        (sentence("GPRMC,123519,V,,,,,,,230394,,"), true),
+        (sentence("GPRMC,123519,A,4807.038,N,01131.000,E,022.4,084.4,230394,,"), false),
+    ] {
+        values(&mut d, &line).unwrap();
+        assert_eq!(d.gps().no_fix, no_fix, "{line}");
+    }
+}
+
+/// Slots: speed km/h, track, lat, lon, altitude, fix.
+#[test]
+fn only_what_a_receiver_measured_is_used() {
+    let decode = |lines: &[&str]| {
+        let mut d = decoder(LineFormat::Nmea, &[]);
+        let mut last = Vec::new();
+        for body in lines {
+            last = values(&mut d, &sentence(body)).unwrap();
+        }
+        last
+    };
+    let rmc = |status: &str, knots: &str, mode: &str| {
+        format!("GNRMC,123519,{status},4807.038,N,01131.000,E,{knots},084.4,230394,,{mode}")
+    };
+    let none = vec![None; 6];
+    for mode in ["", ",A", ",D", ",R", ",F", ",P"] {
+        assert!(decode(&[&rmc("A", "054.0", mode)])[0].is_some_and(|v| (v - 100.008).abs() < 1e-9), "{mode}");
+    }
+    // Without a fix, estimated, manual, simulated or invalid: nothing.
+    assert_eq!(decode(&[&rmc("V", "054.0", "")]), none);
+    for mode in [",E", ",M", ",S", ",N"] {
+        assert_eq!(decode(&[&rmc("A", "054.0", mode)]), none, "{mode}");
+    }
+    // An empty speed is none, and below 1 m/s the course is noise.
+    assert_eq!(decode(&[&rmc("A", "", "")])[..2], [None, None]);
+    assert_eq!(decode(&[&rmc("A", "001.9", "")])[1], None);
+    assert_eq!(decode(&[&rmc("A", "002.0", "")])[1], Some(84.4));
+    // VTG repeats RMC and is used only where there is none.
+    let vtg = "GPVTG,054.7,T,034.4,M,005.5,N,010.2,K";
+    assert_eq!(decode(&[vtg])[..2], [Some(10.2), Some(54.7)]);
+    assert_eq!(decode(&["GPVTG,054.7,T,034.4,M,000.5,N,001.0,K"])[..2], [Some(1.0), None]);
+    assert_eq!(decode(&[&rmc("A", "054.0", ""), vtg]), none);
+    // GGA without a fix tells that it has none, and no place.
+    let gga = |q: u8| format!("GPGGA,123519,4807.038,N,01131.000,E,{q},08,0.9,545.4,M,46.9,M,,");
+    assert_eq!(decode(&[&gga(0)]), vec![None, None, None, None, None, Some(0.0)]);
+    assert_eq!(decode(&[&gga(1)])[4..], [Some(545.4), Some(1.0)]);
+}
+
 fn pieces(bytes: &[u8], chunks: impl Iterator<Item = usize>) -> Vec<(bool, Vec<u8>)> {
     let (mut splitter, mut rest, mut out) = (Splitter::default(), bytes, Vec::new());
     for n in chunks {
@@ -119,6 +204,7 @@ fn a_line_without_end_is_cut_and_memory_stays_bounded() {
     assert_eq!(got.len(), 2);
     assert!(got[0].0 && got[0].1.len() == LONGEST_LINE);
     assert_eq!(got[1], (false, b"next".to_vec()));
+    assert_eq!(got, pieces(&bytes, std::iter::once(bytes.len())), "in one read as in many");
     // Just the longest length, with CR LF, is whole.
     let mut bytes = vec![b'B'; LONGEST_LINE];
     bytes.extend_from_slice(b"\r\n");
@@ -148,6 +234,31 @@ fn damage_in_a_record_is_passed_over_and_told() {
     assert_eq!((tally.good, tally.damaged), (4, 4));
     assert_eq!(tally.first_damage, Some((4, "no `seconds port line` head")));
     assert_eq!(tally.started.as_deref(), Some("2026-06-14T09:12:03.250Z"));
+}
+
+#[test]
+fn ports_that_the_rig_does_not_name_neither_count_nor_move_the_time() {
+    let ports = [port_of("gauge", LineFormat::Columns, &["p1"])];
+    let mut reader = Reader::new(Some(&ports));
+    let record = b"5.000000 other 1\n9.000000 !other lost\n1.000000 gauge 1\n0.500000 other 2\n1.000000 gauge 2\n2.000000 gaug 3\n";
+    let mut times = Vec::new();
+    reader.push(record, &mut |told| {
+        let Told::Line { at, port: 0, .. } = told else { panic!("{told:?}") };
+        times.push(at.micros());
+    });
+    reader.finish();
+    assert_eq!(times, [1_000_000, 1_000_000]);
+    assert_eq!((reader.tally.unknown_port, reader.tally.damaged), (4, 0));
+}
+
+#[test]
+fn a_record_line_longer_than_any_is_damage_however_it_was_read() {
+    let mut record = b"1.000000 gauge ".to_vec();
+    record.resize(4 * LONGEST_LINE + 300, b'A');
+    record.extend_from_slice(b"\n2.000000 gauge 2\n");
+    let whole = told(&record, record.len());
+    assert_eq!((whole.1.good, whole.1.damaged), (1, 1));
+    assert_eq!(whole, told(&record, 4096));
 }
 
 proptest! {

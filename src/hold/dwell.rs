@@ -157,11 +157,13 @@ impl Hold {
     pub fn sample(&mut self, sample: &Sample) {
         if let Some(dwell) = self.dwells.iter_mut().find(|d| d.interval.contains(sample.t)) {
             dwell.interval.push(sample);
-        } else if let Some(k) = self.running(sample.t) {
-            if let Some(dwell) = self.dwell(k) {
-                dwell.interval.push(sample);
-            }
-        } else if let Some(recent) = &mut self.recent {
+        } else if let Some(k) = self.running(sample.t)
+            && let Some(dwell) = self.dwell(k)
+        {
+            dwell.interval.push(sample);
+        }
+        // Kept though a dwell has it: the stretch may turn out to have ended before it, and another to have begun.
+        if let Some(recent) = &mut self.recent {
             recent.push_back(*sample);
             while recent.front().is_some_and(|s| sample.t.since(s.t) > 2 * self.longest_lag_us) {
                 recent.pop_front();

@@ -112,7 +112,7 @@ impl Accumulator {
     ///
     /// *Output* in the channel's unit: arithmetic mean (angles: mean of unit vectors, 0–360), sd with n − 1, least-squares
     /// slope per s, standard error from the bin means ([`standard_error`]). *Accuracy* against the NIST StRD univariate sets
-    /// (`tests/statistics.rs`).
+    /// (`tests/outside.rs`); the error against AR(1) series (`tests/statistics.rs`).
     pub fn finish(&self) -> Option<ChannelStatistics> {
         if self.n == 0 {
             return None;

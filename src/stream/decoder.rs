@@ -79,7 +79,7 @@ pub struct Decoder {
 pub struct Gps {
     /// An RMC was seen: VTG repeats it and is passed over from then on.
     seen_rmc: bool,
-    /// The last RMC or GGA was without a fix.
+    /// The last RMC was without a fix; before any RMC: the last GGA.
     pub no_fix: bool,
     /// UTC of the last fix, ms since 1970.
     pub utc_ms: Option<i64>,
@@ -180,6 +180,10 @@ impl Decoder {
             }
             Sentence::Gga(gga) => {
                 fix = gga.quality;
+                // RMC judges more finely, by its mode too; where one comes, it has the word.
+                if !self.gps.seen_rmc {
+                    self.gps.no_fix = gga.quality.is_none_or(|q| q <= 0.0);
+                }
                 if gga.quality.is_some_and(|q| q > 0.0) {
                     altitude = gga.altitude_m;
                     // Where an RMC comes, it gives the position of the same epoch.

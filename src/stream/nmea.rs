@@ -88,8 +88,11 @@ pub fn parse(line: &[u8]) -> Result<Sentence, Reject> {
     if body[star] != b'*' {
         return Err(if body.contains(&b'*') { Reject::NotNmea } else { Reject::NoChecksum });
     }
-    let digits = std::str::from_utf8(&body[star + 1..]).ok();
-    let sum = digits.and_then(|d| u8::from_str_radix(d, 16).ok()).ok_or(Reject::NoChecksum)?;
+    let sum = match body[star + 1..] {
+        [high, low] => hex_digit(high).zip(hex_digit(low)).map(|(high, low)| high * 16 + low),
+        _ => None,
+    };
+    let sum = sum.ok_or(Reject::NoChecksum)?;
     let body = &body[..star];
     if checksum(body) != sum {
         return Err(Reject::WrongChecksum);
@@ -152,9 +155,26 @@ impl<'a> Fields<'a> {
             return Ok(None);
         }
         let wrong = Reject::NotANumber { field: self.at };
-        let two = |i: usize| text.get(i..i + 2).and_then(number::whole).ok_or(wrong);
-        let seconds = text.get(4..).and_then(number::whole).ok_or(wrong)?;
-        Ok(Some(two(0)? * 3600.0 + two(2)? * 60.0 + seconds))
+        // Six digits first: signs and exponents have no place here.
+        let (clock, fraction) = text.split_at_checked(6).ok_or(wrong)?;
+        let n = digits(clock).ok_or(wrong)?;
+        let (hours, minutes, seconds) = (n / 10_000, n / 100 % 100, n % 100);
+        // Second 60 is a leap second.
+        if hours > 23 || minutes > 59 || seconds > 60 {
+            return Err(wrong);
+        }
+        let part = match fraction {
+            [] => 0.0,
+            [b'.', decimals @ ..] if decimals.iter().all(u8::is_ascii_digit) => {
+                if decimals.is_empty() {
+                    0.0
+                } else {
+                    number::whole(fraction).ok_or(wrong)?
+                }
+            }
+            _ => return Err(wrong),
+        };
+        Ok(Some(f64::from(hours * 3600 + minutes * 60 + seconds) + part))
     }
 
     fn date(&mut self) -> Result<Option<(u32, u32, i32)>, Reject> {
@@ -163,11 +183,21 @@ impl<'a> Fields<'a> {
             return Ok(None);
         }
         let wrong = Reject::NotANumber { field: self.at };
-        let digits = std::str::from_utf8(text).ok().and_then(|t| t.parse::<u32>().ok());
-        let n = digits.filter(|_| text.len() == 6).ok_or(wrong)?;
+        let n = digits(text).filter(|_| text.len() == 6).ok_or(wrong)?;
         let year = (n % 100) as i32;
         Ok(Some((n / 10_000, n / 100 % 100, if year >= 80 { 1900 + year } else { 2000 + year })))
     }
+}
+
+/// Up to nine digits and nothing else.
+fn digits(text: &[u8]) -> Option<u32> {
+    let fits = (1..=9).contains(&text.len());
+    let push = |n: u32, c: &u8| c.is_ascii_digit().then(|| n * 10 + u32::from(c - b'0'));
+    if fits { text.iter().try_fold(0, push) } else { None }
+}
+
+fn hex_digit(c: u8) -> Option<u8> {
+    char::from(c).to_digit(16).and_then(|d| u8::try_from(d).ok())
 }
 
 /// Estimated, manual, simulated and invalid data are no measurement.

@@ -265,7 +265,7 @@ impl Reader {
     fn end_pending(&mut self, each: &mut impl FnMut(Told<'_>)) {
         let pending = std::mem::take(&mut self.pending);
         if std::mem::take(&mut self.overlong) {
-            self.damage("longer than a record line can be");
+            self.damage(OVERLONG);
         } else {
             self.line(&pending, each);
         }
@@ -275,6 +275,9 @@ impl Reader {
 
     #[inline]
     fn line(&mut self, line: &[u8], each: &mut impl FnMut(Told<'_>)) {
+        if line.len() > LONGEST_RECORD_LINE {
+            return self.damage(OVERLONG);
+        }
         let line = line.strip_suffix(b"\r").unwrap_or(line);
         let Some(parsed) = parse(line) else { return self.damage("no `seconds port line` head") };
         let told = match parsed {
@@ -331,5 +334,6 @@ impl Reader {
     }
 }
 
+const OVERLONG: &str = "longer than a record line can be";
 /// Longest line of a record file: the longest line of a port, all of it escaped, and its head.
 const LONGEST_RECORD_LINE: usize = 4 * LONGEST_LINE + 256;
