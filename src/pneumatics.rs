@@ -73,7 +73,8 @@ impl Gas {
     }
 }
 
-/// J₂(z)/J₀(z) for complex z, by the continued fraction of J₍ₙ₊₁₎/Jₙ (Lentz's method). *Accuracy* 1e-12 for |z| below 100.
+/// J₂(z)/J₀(z) for complex z, by the continued fraction of J₍ₙ₊₁₎/Jₙ (Lentz's method). *Accuracy* 1e-12 up to |z| = 150,
+/// which the widest bore of a rig file does not reach below 400 Hz.
 fn bessel_ratio(z: Complex<f64>) -> Complex<f64> {
     ratio_of_neighbours(0, z) * ratio_of_neighbours(1, z)
 }
@@ -146,10 +147,10 @@ impl Tube {
         grid().find(|hz| (self.response(*hz, gas).norm() - 1.0).abs() > share)
     }
 
-    /// Frequency and gain of the highest peak below 400 Hz; none where nothing is amplified by more than 1 ‰.
+    /// Frequency and gain of the highest peak below 400 Hz; none where nothing is amplified by more than 1 ‰, or where the gain still rises there.
     pub fn resonance(&self, gas: &Gas) -> Option<(f64, f64)> {
         let peak = grid().map(|hz| (hz, self.response(hz, gas).norm())).max_by(|a, b| a.1.total_cmp(&b.1));
-        peak.filter(|(_, gain)| *gain > 1.001)
+        peak.filter(|(hz, gain)| *gain > 1.001 && *hz < HIGHEST_HZ)
     }
 
     /// Time that a step needs to be within 1 %, s: of the first-order form, or of a resonance that rings on for longer.
@@ -180,26 +181,34 @@ fn grid() -> impl Iterator<Item = f64> {
 
 /// What `hose` prints of a tube in a gas.
 pub fn describe(tube: &Tube, gas: &Gas) -> String {
-    let hz = |x: Option<f64>| x.map_or("above 400 Hz".to_string(), |x| format!("{x:.1} Hz"));
+    let hz = |x: Option<f64>| {
+        x.map_or("above 400 Hz".to_string(), |x| if x < 1.0 { format!("{x:.2} Hz") } else { format!("{x:.1} Hz") })
+    };
+    // Below these the steady resistance says little: inertia and a resonance beyond what is searched decide.
+    let or_below =
+        |x: f64, least: f64, unit: &str, text: String| if x < least { format!("below {least} {unit}") } else { text };
+    let delay_ms = tube.time_constant_s(gas) * 1000.0;
+    let settle_s = tube.settle_s(gas);
     let resonance = match tube.resonance(gas) {
         Some((hz, gain)) => format!("{hz:.1} Hz, gain {gain:.2}"),
+        None if tube.response(HIGHEST_HZ, gas).norm() > 1.001 => "above 400 Hz".to_string(),
         None => "none: the tube is narrow enough to damp it".to_string(),
     };
     format!(
         "tube {} m × {} mm, volume {} cm³ (the tube itself holds {:.2} cm³)\n\
-         delay               {:.1} ms\n\
+         delay               {}\n\
          amplitude within 1 %  up to {}\n\
          amplitude within 10 % up to {}; report no spectra or peaks above\n\
          resonance           {resonance}\n\
-         settle at least     {:.2} s after a step, to be within 1 %\n\
+         settle at least     {} after a step, to be within 1 %\n\
          Means need no correction. Use equal tubes on tap and static.\n",
         tube.length_m,
         tube.bore_mm,
         tube.volume_cm3,
         tube.tube_m3() * 1e6,
-        tube.time_constant_s(gas) * 1000.0,
+        or_below(delay_ms, 1.0, "ms", format!("{delay_ms:.1} ms")),
         hz(tube.bandwidth_hz(0.01, gas)),
         hz(tube.bandwidth_hz(0.1, gas)),
-        tube.settle_s(gas),
+        or_below(settle_s, 0.1, "s", format!("{settle_s:.2} s")),
     )
 }

@@ -172,10 +172,9 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
     flags.extend(words);
     airspeed::correct(&mut passes, &setup.car.probe, &probe_factor);
     let letters: Vec<String> = configurations.iter().map(|c| c.letter.clone()).collect();
-    let question = Question { configurations: &letters, baseline: &baseline, resolve_cp };
-    let Verdicts { mut levels, comparisons, outliers } =
-        compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
-    airspeed::widen(&mut levels, &setup.car.probe, &probe_factor);
+    let factor = probe_factor.error(&setup.car.probe);
+    let question = Question { configurations: &letters, baseline: &baseline, resolve_cp, factor };
+    let Verdicts { levels, comparisons, outliers } = compared(&passes, &zeros, &taps(sessions), (question, &mut flags));
     let drift = drift(&zeros, sessions, resolve_pa);
     let at_q_pa = probe::dynamic_pressure(air::ISA_DENSITY, at_kmh);
     let ground = Ground { car: &setup.car, passes: &passes, zeros: &zeros, question };
@@ -382,10 +381,9 @@ fn sweeps(ground: Ground<'_>, configurations: &[Configuration], taps: &[String])
     for target in ground.targets() {
         for tap in taps {
             let Some(model) = ground.weighted(target, &[(tap, 1.0)]) else { continue };
-            let Some(swept) = sweep::sweep(&model, setting) else { continue };
-            let baseline = setting(ground.question.baseline);
-            let crossing = baseline.and_then(|x| sweep::reaches(&swept, x, ground.question.resolve_cp));
-            let Swept { levels, quadratic, lack_of_fit_p } = swept;
+            let Some(swept) = sweep::sweep(&model, ground.question.baseline, setting) else { continue };
+            let crossing = sweep::reaches(&swept, ground.question.resolve_cp);
+            let Swept { levels, quadratic, lack_of_fit_p, .. } = swept;
             let range = [levels[0].0, levels[levels.len() - 1].0];
             let extreme = quadratic.as_ref().and_then(sweep::Quadratic::vertex);
             let extreme = extreme.filter(|(x, ..)| (range[0]..=range[1]).contains(x)).map(|(x, set, _)| (x, set));

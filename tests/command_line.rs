@@ -505,3 +505,36 @@ fn a_link_given_as_output_stays_a_link() {
     assert!(std::fs::symlink_metadata(&link).unwrap().is_symlink());
     assert_eq!(std::fs::read(&file).unwrap(), b"table");
 }
+
+/// Time constants of a capillary and volume by the Hagen–Poiseuille resistance (the check `tub-lumped`); a stiff tube has its resonance beyond
+/// what is searched.
+#[test]
+fn hose_tells_delay_bandwidth_and_settling() {
+    let desk = Desk::new();
+    let answer = desk.run("hose --length 2 --bore 1 --volume 0.5");
+    assert_eq!(answer.status, Some(0), "{}", answer.err);
+    for line in ["delay               16.4 ms", "settle at least     below 0.1 s", "none: the tube is narrow enough"] {
+        assert!(answer.out.contains(line), "`{line}` in\n{}", answer.out);
+    }
+    let stiff = desk.run("hose --length 0.1 --bore 4 --volume 0.05");
+    assert!(stiff.out.contains("resonance           above 400 Hz"), "{}", stiff.out);
+    let slow = desk.run("hose --length 3 --bore 0.4 --volume 2");
+    assert!(
+        slow.out.contains("delay               1363.5 ms") && slow.out.contains("settle at least     6.28 s"),
+        "{}",
+        slow.out
+    );
+    assert_eq!(desk.run("hose --length 2 --bore 1").status, Some(2));
+    assert_eq!(desk.run("hose --length 2000 --bore 1 --volume 1").status, Some(1));
+}
+
+/// The outing settles 2 s; that tube has a time constant of 1.36 s (above) and needs 4.605 of them to be within 1 %.
+#[test]
+fn check_warns_of_a_tube_slower_than_the_outing_settles() {
+    let desk = Desk::new();
+    let lag = "lag_s = 0.05                      # hose and sensor; taken off a sample's time";
+    desk.change("van-rig.toml", lag, "tube = { length_m = 3.0, bore_mm = 0.4, volume_cm3 = 2.0 }");
+    let answer = desk.run("check van-outing.toml");
+    assert_eq!(answer.status, Some(0), "{}", answer.err);
+    assert!(answer.err.contains("channel `p1` asks for 6.28 s"), "{}{}", answer.out, answer.err);
+}

@@ -66,6 +66,9 @@ fn of_air(id: &str, i: &Value) -> Value {
         }
         return all;
     }
+    if id == "air-sens" || id == "air-budget" {
+        return of_air_sensitivities(id, i);
+    }
     let p = i["p_Pa"].as_f64().unwrap_or_else(|| number(i, "p_mmHg") * PA_PER_MMHG);
     let a = Air { temperature_c: number(i, "t_C"), pressure_hpa: p / 100.0, humidity_pct: number(i, "rh") * 100.0 };
     let mut all = json!({"rho_kg_m3": air::density(&a)});
@@ -77,6 +80,28 @@ fn of_air(id: &str, i: &Value) -> Value {
         all["p_sv_Pa"] = json!(air::saturation_pressure(a.temperature_c + air::CELSIUS_ZERO_K));
     }
     all
+}
+
+/// Relative change of the density for a small step of each input, by central differences.
+fn of_air_sensitivities(id: &str, i: &Value) -> Value {
+    let a = Air {
+        temperature_c: number(i, "t_C"),
+        pressure_hpa: number(i, "p_Pa") / 100.0,
+        humidity_pct: number(i, "rh") * 100.0,
+    };
+    let slope = |step: f64, of: fn(Air, f64) -> Air| {
+        (air::density(&of(a, step)).ln() - air::density(&of(a, -step)).ln()) / (2.0 * step)
+    };
+    let per_k = slope(1e-3, |a, d| Air { temperature_c: a.temperature_c + d, ..a });
+    let per_pa = slope(1.0, |a, d| Air { pressure_hpa: a.pressure_hpa + d / 100.0, ..a });
+    let per_rh = slope(1e-4, |a, d| Air { humidity_pct: a.humidity_pct + 100.0 * d, ..a });
+    if id == "air-sens" {
+        return json!({"dlnrho_dT_perK": per_k, "dlnrho_dp_perPa": per_pa, "dlnrho_drh": per_rh});
+    }
+    let parts = [per_k * number(i, "u_T_K"), per_pa * number(i, "u_p_Pa"), per_rh * number(i, "u_rh")];
+    let u = parts.iter().map(|p| p * p).sum::<f64>().sqrt();
+    // V goes with 1/√ρ at one q.
+    json!({"u_rel_rho": u, "u_rel_V_from_q": u / 2.0})
 }
 
 fn of_unit(i: &Value) -> Value {
@@ -292,6 +317,18 @@ fn of_wind(id: &str, i: &Value) -> Value {
             let found = wind::ground_speed_pair(two("V1", "V2"), number(i, "rho"), &p).expect("the taps tell a wind");
             json!({"headwind": found.head_wind_m_s, "cp": found.cp, "rss": found.rss, "se_headwind": found.se_m_s})
         }
+        "wnd-gs-u" => {
+            // The wind's change for a small change of either pressure.
+            let v = number(i, "V");
+            let wind =
+                |p: [f64; 2]| wind::ground_speed_pair([v, v], number(i, "rho"), &[p]).expect("a wind").head_wind_m_s;
+            let p = two("p1", "p2");
+            let by = |k: usize| {
+                let moved = |d: f64| std::array::from_fn(|j| if j == k { p[j] + d } else { p[j] });
+                (wind(moved(1e-3)) - wind(moved(-1e-3))) / 2e-3 * number(i, "u_p")
+            };
+            json!({"headwind": wind(p), "u_headwind": by(0).hypot(by(1))})
+        }
         _ if id.starts_with("wnd-gs") => {
             let found = wind::ground_speed_pair(two("V1", "V2"), number(i, "rho"), &[two("p1", "p2")]).expect("a wind");
             json!({"headwind_on_run1": found.head_wind_m_s, "cp": found.cp[0]})
@@ -362,6 +399,17 @@ fn of_force(id: &str, i: &Value) -> Value {
             let s = contour::section(&points, &vec![number(i, "cp"); points.len()], about, 1.0);
             json!({"cx": s.cx, "cy": s.cz, "cm": s.cm})
         }
+        "frc-sae" => {
+            // One lift where its moment about mid-wheelbase, nose up, is the coefficient's.
+            let (lift, moment) = (number(i, "C_L"), number(i, "C_PM_about_midwheelbase_per_wheelbase"));
+            let [front, rear] = force::axles([0.0, 0.0, lift], [0.5 - moment / lift, 0.0, 0.0], 1.0);
+            json!({"C_LF": front, "C_LR": rear})
+        }
+        "frc-jouk" => {
+            let sections: Vec<[f64; 3]> = numbers(i, "N").iter().map(|n| joukowski(*n as usize, i)).collect();
+            let column = |k: usize| sections.iter().map(|s| s[k]).collect::<Vec<_>>();
+            json!({"cl_polygon": column(0), "cd_polygon": column(1), "cm_polygon": column(2)})
+        }
         _ if id.starts_with("frc-cyl") => {
             let gamma = number(i, "Gamma_over_RU");
             let sections = numbers(i, "N").into_iter().map(|n| {
@@ -381,6 +429,34 @@ fn of_force(id: &str, i: &Value) -> Value {
             json!({"F2": number(i, "F") * q("V2_kmh") / q("V1_kmh")})
         }
     }
+}
+
+/// Lift, drag and nose-up moment of a polygon of `n` points on a Joukowski aerofoil, from the trailing edge, with the Cp of its potential flow
+/// (map ζ + c²/ζ, Kutta condition; the limit of the velocity at the trailing edge).
+fn joukowski(n: usize, i: &Value) -> [f64; 3] {
+    use nalgebra::Complex;
+    let centre = numbers(i, "circle_centre");
+    let (c, alpha) = (number(i, "c"), number(i, "alpha_deg").to_radians());
+    let mu = Complex::new(centre[0], centre[1]);
+    let radius = (c - mu).norm();
+    let beta = (centre[1] / radius).asin();
+    let circulation = 4.0 * std::f64::consts::PI * radius * (alpha + beta).sin();
+    let (turn, vortex) = (Complex::from_polar(1.0, alpha), Complex::new(0.0, circulation / std::f64::consts::TAU));
+    let (mut points, mut cp) = (Vec::new(), Vec::new());
+    for k in 0..n {
+        let zeta = mu + Complex::from_polar(radius, std::f64::consts::TAU * k as f64 / n as f64 - beta);
+        let from = zeta - mu;
+        let velocity = if k == 0 {
+            (turn * 2.0 * radius * radius / from.powi(3) - vortex / from.powi(2)) * c / 2.0
+        } else {
+            (turn.conj() - turn * radius * radius / from.powi(2) + vortex / from) / (1.0 - c * c / zeta.powi(2))
+        };
+        let z = zeta + c * c / zeta;
+        points.push([z.re, z.im]);
+        cp.push(1.0 - velocity.norm_sqr());
+    }
+    let s = contour::section(&points, &cp, [0.0, 0.0], number(i, "chord"));
+    [s.cz * alpha.cos() - s.cx * alpha.sin(), s.cz * alpha.sin() + s.cx * alpha.cos(), -s.cm]
 }
 
 fn of_base(id: &str, i: &Value) -> Value {
@@ -721,20 +797,28 @@ fn an_escaped_line_reads_back_to_the_same_bytes() {
 #[test]
 fn a_change_worth_knowing_is_reached_where_the_curve_crosses_it() {
     let (curve, ..) = quadratic();
-    let start = curve.at(0.0);
+    // A baseline at 0 that is known: the difference is the curve.
     let swept = sweep::Swept {
-        levels: vec![(0.0, start), (25.0, curve.at(25.0))],
-        quadratic: Some(curve),
+        levels: vec![(0.0, curve.at(0.0)), (25.0, curve.at(25.0))],
+        quadratic: Some(curve.clone()),
+        difference: Some(curve),
+        baseline: Some(0.0),
         lack_of_fit_p: None,
     };
-    let found = sweep::reaches(&swept, 0.0, start + 0.3).expect("it gets there");
+    let found = sweep::reaches(&swept, 0.3).expect("it gets there");
     assert!((found.at - 11.017412867939008).abs() < 1e-6, "{found:?}");
     let ([low, high], open) = found.interval.expect("a quadratic has a band");
     assert!((low - 10.272578275090325).abs() < 1e-4 && (high - 11.820467320137599).abs() < 1e-4 && open == [false; 2]);
-    assert_eq!(sweep::reaches(&swept, 0.0, 1.0), None, "never beyond the tested range");
+    assert_eq!(sweep::reaches(&swept, 1.0), None, "never beyond the tested range");
     let levels =
         [0.0, 5.0, 10.0, 15.0, 20.0, 25.0].into_iter().zip([-0.2155, -0.2585, -0.2945, -0.3215, -0.3315, -0.3415]);
-    let drawn = sweep::Swept { levels: levels.collect(), quadratic: None, lack_of_fit_p: Some(0.01) };
-    let found = sweep::reaches(&drawn, 0.0, 0.3 - 0.2155).expect("it gets there");
+    let drawn = sweep::Swept {
+        levels: levels.collect(),
+        quadratic: None,
+        difference: None,
+        baseline: Some(-0.2155),
+        lack_of_fit_p: Some(0.01),
+    };
+    let found = sweep::reaches(&drawn, 0.3 - 0.2155).expect("it gets there");
     assert!((found.at - 10.875338624257264).abs() < 1e-6 && found.interval.is_none(), "{found:?}");
 }

@@ -225,7 +225,16 @@ fn tube(table: &mut Table) -> Option<Option<Tube>> {
     let bore_mm = parts.number("bore_mm", &BORE);
     let volume_cm3 = parts.number("volume_cm3", &VOLUME);
     parts.finish();
-    Some(Some(Tube { length_m: length_m?, bore_mm: bore_mm?, volume_cm3: volume_cm3? }))
+    let tube = Tube { length_m: length_m?, bore_mm: bore_mm?, volume_cm3: volume_cm3? };
+    let lag_s = tube.time_constant_s(&Gas::STANDARD);
+    if !(LAG.ok)(lag_s) {
+        value.refuse(
+            format!("`tube` delays by {lag_s:.1} s"),
+            format!("a lag is {}: use a shorter or wider tube or a smaller volume", LAG.says),
+        );
+        return None;
+    }
+    Some(Some(tube))
 }
 
 fn stale_default_s(quantity: Quantity) -> f64 {

@@ -1,14 +1,14 @@
 //! One q for every pass: the probe's factor of the day, or, without a probe, the wind that opposite passes tell.
 //!
-//! There is one factor for all configurations: a factor for each would put its own error into every difference, where a common one
-//! cancels. Its uncertainty belongs to the levels.
+//! There is one factor for all configurations: a factor for each would put its own error into every difference, where a common one only
+//! scales it.
 
-use super::compare::{Estimate, Level};
-use super::inference::{ALPHA, effective_dof, t_quantile};
+use super::compare::FactorError;
+use super::inference::{ALPHA, t_quantile};
 use super::passes::Pass;
 use super::probe;
 use super::wind::{self, Leg, WindError, WindFit};
-use crate::config::{Probe, ProbeFactor, ProbeModel};
+use crate::config::{Probe, ProbeFactor};
 use crate::session::Direction;
 use crate::units::KMH_PER_M_S;
 
@@ -46,6 +46,10 @@ impl Source {
     pub fn words(self) -> String {
         match self {
             Self::Stated => "stated in the car file".to_string(),
+            Self::Pairs(1) => {
+                "from one out-and-back pair: its own error is not known and in no interval; drive another pair"
+                    .to_string()
+            }
             Self::Pairs(n) => {
                 format!("from {n} out-and-back pairs; a cross wind makes it low, by 1 % at 4 m/s and 100 km/h")
             }
@@ -74,17 +78,25 @@ impl Factor {
         let u95 = u.and_then(|(u, dof)| Some(t_quantile(1.0 - ALPHA / 2.0, dof)? * u));
         Self { k, u, u95, source, wind }
     }
+
+    /// What it does to whatever is divided by q.
+    pub fn error(&self, probe: &Probe) -> Option<FactorError> {
+        self.u.map(|(u, dof)| FactorError { model: probe.model, relative: u / self.k, dof })
+    }
 }
 
 /// Indicated airspeed of a pass, km/h; none without a probe.
 fn indicated_kmh(p: &Pass) -> Option<f64> {
-    p.q.as_ref().filter(|q| q.measured.is_some() && q.pa > 0.0).map(|q| probe::speed_of(p.density, q.pa))
+    p.q.as_ref().filter(|q| q.measured.is_some() && q.pa > 0.0).map(|q| probe::airspeed(p.density, p.pressure_pa, q.pa))
 }
 
-/// Consecutive passes of one target in opposite directions, out first.
+/// Consecutive passes of one target in opposite directions, out first; a pass is in one pair at most, so that pairs are independent.
 fn opposite(passes: &[Pass]) -> Vec<(usize, usize)> {
-    let mut found = Vec::new();
+    let mut found: Vec<(usize, usize)> = Vec::new();
     for (i, a) in passes.iter().enumerate() {
+        if found.iter().any(|(out, back)| *out == i || *back == i) {
+            continue;
+        }
         let same = |p: &Pass| p.session == a.session && p.target_kmh == a.target_kmh;
         let Some(j) = (i + 1..passes.len()).find(|j| same(&passes[*j])) else { continue };
         let b = &passes[j];
@@ -163,23 +175,6 @@ pub fn correct(passes: &mut [Pass], probe: &Probe, factor: &Factor) {
     }
 }
 
-/// Adds the factor's uncertainty to the levels; in differences it cancels.
-pub fn widen(levels: &mut [Level], probe: &Probe, factor: &Factor) {
-    let Some((u_k, dof_k)) = factor.u else { return };
-    for level in levels {
-        let cp = level.cp.value;
-        let sensitivity = match probe.model {
-            ProbeModel::Static => 2.0 * (1.0 - cp) / factor.k,
-            ProbeModel::Gain => -2.0 * cp / factor.k,
-        };
-        let (Some(u), Some(dof)) = (level.cp.u, level.cp.dof) else { continue };
-        let parts = [(u * u, dof), ((sensitivity * u_k).powi(2), dof_k)];
-        let (u, dof) = ((parts[0].0 + parts[1].0).sqrt(), effective_dof(&parts));
-        let u95 = dof.and_then(|dof| t_quantile(1.0 - ALPHA / 2.0, dof)).map(|t| t * u);
-        level.cp = Estimate { value: cp, u: Some(u), dof, u95 };
-    }
-}
-
 /// Where only ground speed is known, gives opposite passes the q of the wind that all their taps tell together; words about it.
 pub fn wind_without_a_probe(passes: &mut [Pass]) -> Vec<String> {
     let ground_only = |p: &Pass| p.q.as_ref().is_some_and(|q| q.measured.is_none());
@@ -188,7 +183,7 @@ pub fn wind_without_a_probe(passes: &mut [Pass]) -> Vec<String> {
     }
     let mut told = vec![false; passes.len()];
     for (out, back) in opposite(passes) {
-        if !(ground_only(&passes[out]) && ground_only(&passes[back])) || told[out] || told[back] {
+        if !(ground_only(&passes[out]) && ground_only(&passes[back])) {
             continue;
         }
         let Some(q) = q_of_pair(&passes[out], &passes[back]) else { continue };

@@ -9,6 +9,7 @@ use super::model::{self, Fit};
 use super::passes::Pass;
 use super::scatter::Outlier;
 use super::zeros::{Correction, Zeros};
+use crate::config::ProbeModel;
 use crate::session::Direction;
 use nalgebra::{DMatrix, DVector};
 use std::collections::{BTreeMap, BTreeSet};
@@ -31,6 +32,20 @@ pub struct Estimate {
     pub dof: Option<f64>,
     /// Half-width of the 95 % interval.
     pub u95: Option<f64>,
+}
+
+impl Estimate {
+    /// A value with a standard uncertainty and its degrees of freedom.
+    fn new(value: f64, u: Option<(f64, f64)>) -> Self {
+        let half = |(u, dof): (f64, f64)| t_quantile(1.0 - ALPHA / 2.0, dof).map(|t| t * u).filter(|x| x.is_finite());
+        Self { value, u: u.map(|u| u.0), dof: u.map(|u| u.1), u95: u.and_then(half) }
+    }
+}
+
+/// Standard uncertainty and degrees of freedom of a sum of variances; none where they are not finite.
+fn combined(parts: &[(f64, f64)]) -> Option<(f64, f64)> {
+    let u = parts.iter().map(|(variance, _)| variance).sum::<f64>().sqrt();
+    u.is_finite().then(|| (u, effective_dof(parts).unwrap_or(f64::INFINITY)))
 }
 
 /// The verdict on one tap, target and configuration.
@@ -68,6 +83,8 @@ pub struct Level {
     pub passes: usize,
     /// Cp.
     pub cp: Estimate,
+    /// Standard uncertainty of it and its degrees of freedom, were the probe's factor known: what two levels do not have in common.
+    pub apart: Option<(f64, f64)>,
     /// How its passes scatter beyond their own standard errors, drift and heading taken off; a diagnosis.
     pub between: Option<Between>,
 }
@@ -144,7 +161,23 @@ pub struct Question<'a> {
     pub baseline: &'a str,
     /// Smallest Cp difference worth knowing.
     pub resolve_cp: f64,
+    /// How sure the probe's factor is; none where it is stated.
+    pub factor: Option<FactorError>,
 }
+
+/// Error of the probe's factor: common to everything that is divided by q, so it widens levels and scales differences.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct FactorError {
+    /// What the factor means.
+    pub model: ProbeModel,
+    /// Its standard uncertainty over itself.
+    pub relative: f64,
+    /// Degrees of freedom of that.
+    pub dof: f64,
+}
+
+/// A channel, its zero correction, and how a value changes for one unit more of that zero.
+pub type ZeroEffect<'a> = (&'a str, &'a Correction, f64);
 
 /// One pass's value of something linear in its Cps, and how the zeros enter it.
 #[derive(Clone, Debug)]
@@ -153,13 +186,16 @@ pub struct Observation<'a> {
     pub pass: &'a Pass,
     /// The value.
     pub y: f64,
-    /// (channel, its zero correction, change of the value for one Pa more of that zero).
-    effects: Vec<(&'a str, &'a Correction, f64)>,
+    effects: Vec<ZeroEffect<'a>>,
+    /// Change of the value for a relative change of the probe's factor.
+    by_factor: f64,
 }
 
 impl<'a> Observation<'a> {
     /// Σ weight · Cp over taps; none where one of them has no Cp.
-    pub fn weighted(pass: &'a Pass, weights: &[(&str, f64)]) -> Option<Self> {
+    ///
+    /// A relative error ε of the factor changes it by 2ε(Σ weight − y) in the static model, −2εy in the gain model.
+    pub fn weighted(pass: &'a Pass, weights: &[(&str, f64)], question: Question<'_>) -> Option<Self> {
         let q = pass.q.as_ref()?;
         let mut y = 0.0;
         let mut effects = Vec::new();
@@ -171,12 +207,17 @@ impl<'a> Observation<'a> {
         if let Some((channel, Some(zero))) = &q.measured {
             effects.push((channel, zero, y / q.pa));
         }
-        y.is_finite().then_some(Self { pass, y, effects })
+        let sum = match question.factor.map(|f| f.model) {
+            Some(ProbeModel::Static) => weights.iter().map(|(_, weight)| weight).sum(),
+            Some(ProbeModel::Gain) | None => 0.0,
+        };
+        y.is_finite().then_some(Self { pass, y, effects, by_factor: 2.0 * (sum - y) })
     }
 
-    /// A value that no zero enters.
-    pub fn plain(pass: &'a Pass, y: f64) -> Option<Self> {
-        y.is_finite().then_some(Self { pass, y, effects: Vec::new() })
+    /// Any other value, that goes with a power of the probe's factor.
+    pub fn plain(pass: &'a Pass, y: f64, effects: Vec<ZeroEffect<'a>>, power: f64) -> Option<Self> {
+        let sound = y.is_finite() && effects.iter().all(|(_, _, effect)| effect.is_finite());
+        sound.then_some(Self { pass, y, effects, by_factor: power * y })
     }
 }
 
@@ -185,7 +226,7 @@ pub fn compare(passes: &[&Pass], zeros: &[Zeros<'_>], taps: &[String], question:
     let mut all = Compared::default();
     for tap in taps {
         let seen: Vec<Observation<'_>> =
-            passes.iter().filter_map(|p| Observation::weighted(p, &[(tap, 1.0)])).collect();
+            passes.iter().filter_map(|p| Observation::weighted(p, &[(tap, 1.0)], question)).collect();
         if let Some(model) = Model::new(seen, question) {
             model.compare(tap, zeros, &mut all);
         }
@@ -235,7 +276,8 @@ fn more_passes(c: &Comparison, resolve_cp: f64, family: usize) -> Option<u32> {
 ///
 /// *Output* `None` without the configuration, the baseline or degrees of freedom.
 pub(super) fn interval_over_scatter(passes: &[&Pass], question: Question<'_>, letter: &str) -> Option<f64> {
-    let model = Model::new(passes.iter().filter_map(|p| Observation::plain(p, 0.0)).collect(), question)?;
+    let model =
+        Model::new(passes.iter().filter_map(|p| Observation::plain(p, 0.0, Vec::new(), 0.0)).collect(), question)?;
     let place = |letter: &str| model.present.iter().position(|c| *c == letter);
     let contrast = model.level_contrast(place(letter)?) - model.level_contrast(place(question.baseline)?);
     let scale = (contrast.transpose() * &model.fit.unscaled * &contrast)[(0, 0)];
@@ -276,6 +318,8 @@ pub struct Outcome<'a> {
     pub passes: [usize; 2],
     /// The value.
     pub estimate: Estimate,
+    /// Its standard uncertainty and degrees of freedom, were the probe's factor known.
+    pub apart: Option<(f64, f64)>,
 }
 
 /// Columns of a design as it grows.
@@ -410,10 +454,9 @@ impl<'a> Model<'a> {
 
     /// Every configuration's level.
     pub fn levels(&self, zeros: &[Zeros<'_>]) -> Vec<Outcome<'a>> {
-        let each = self.present.iter().enumerate().map(|(j, letter)| Outcome {
-            configuration: letter,
-            passes: [self.count(letter); 2],
-            estimate: self.estimate(&self.level_contrast(j), zeros),
+        let each = self.present.iter().enumerate().map(|(j, letter)| {
+            let (estimate, apart) = self.estimate(&self.level_contrast(j), zeros);
+            Outcome { configuration: letter, passes: [self.count(letter); 2], estimate, apart }
         });
         each.collect()
     }
@@ -422,10 +465,10 @@ impl<'a> Model<'a> {
     pub fn differences(&self, zeros: &[Zeros<'_>]) -> Vec<Outcome<'a>> {
         let Some(base) = self.present.iter().position(|c| *c == self.question.baseline) else { return Vec::new() };
         let others = (0..self.present.len()).filter(|j| *j != base);
-        let each = others.map(|j| Outcome {
-            configuration: self.present[j],
-            passes: [self.count(self.present[base]), self.count(self.present[j])],
-            estimate: self.estimate(&(self.level_contrast(j) - self.level_contrast(base)), zeros),
+        let each = others.map(|j| {
+            let (estimate, apart) = self.estimate(&(self.level_contrast(j) - self.level_contrast(base)), zeros);
+            let passes = [self.count(self.present[base]), self.count(self.present[j])];
+            Outcome { configuration: self.present[j], passes, estimate, apart }
         });
         each.collect()
     }
@@ -469,6 +512,7 @@ impl<'a> Model<'a> {
             passes: o.passes[0],
             between: self.between(tap, o.configuration),
             cp: o.estimate,
+            apart: o.apart,
         }));
         all.comparisons.extend(self.differences(zeros).into_iter().map(|o| self.comparison(tap, &o)));
         if self.leans_on_straightness() {
@@ -514,7 +558,8 @@ impl<'a> Model<'a> {
 
     fn comparison(&self, tap: &str, outcome: &Outcome<'_>) -> Comparison {
         let delta = outcome.estimate;
-        let known = delta.u.zip(delta.dof).filter(|(u, _)| *u > 0.0);
+        // "No difference" and the smallest one to be found do not depend on the probe's factor: it scales what there is.
+        let known = outcome.apart.filter(|(u, _)| *u > 0.0);
         let found = |(u, dof): (f64, f64)| Some(u * (t_quantile(1.0 - ALPHA / 2.0, dof)? + t_quantile(POWER, dof)?));
         Comparison {
             tap: tap.to_string(),
@@ -531,21 +576,20 @@ impl<'a> Model<'a> {
         }
     }
 
-    /// A contrast with the scatter's and the zeros' uncertainty.
-    pub fn estimate(&self, contrast: &DVector<f64>, zeros: &[Zeros<'_>]) -> Estimate {
+    /// A contrast with the uncertainty of the scatter, the zeros and the probe's factor.
+    fn estimate(&self, contrast: &DVector<f64>, zeros: &[Zeros<'_>]) -> (Estimate, Option<(f64, f64)>) {
         let value = self.fit.value(contrast);
-        let Some(scatter) = self.fit.variance_of(contrast) else {
-            return Estimate { value, u: None, dof: None, u95: None };
+        let weights = self.fit.weights_of(contrast);
+        let apart = self.fit.variance_of(contrast).and_then(|scatter| {
+            let common = self.zero_variance(&weights, zeros);
+            combined(&[(scatter, self.fit.dof as f64), (common, f64::INFINITY)])
+        });
+        let by_factor: f64 = self.observations.iter().zip(weights.iter()).map(|(o, w)| w * o.by_factor).sum();
+        let whole = match self.question.factor {
+            Some(f) => apart.and_then(|(u, dof)| combined(&[(u * u, dof), ((by_factor * f.relative).powi(2), f.dof)])),
+            None => apart,
         };
-        let common = self.zero_variance(&self.fit.weights_of(contrast), zeros);
-        let dof = effective_dof(&[(scatter, self.fit.dof as f64), (common, f64::INFINITY)]);
-        let u = (scatter + common).sqrt();
-        if !u.is_finite() {
-            return Estimate { value, u: None, dof: None, u95: None };
-        }
-        let t = dof.and_then(|dof| t_quantile(1.0 - ALPHA / 2.0, dof));
-        let u95 = t.map(|t| t * u).filter(|x| x.is_finite());
-        Estimate { value, u: Some(u), dof, u95 }
+        (Estimate::new(value, whole), apart)
     }
 
     /// Variance that the zeros' own errors give a contrast with these weights: every zero counts once, however many passes rest on it.

@@ -42,7 +42,8 @@ pub fn changes(levels: &[Level], density: f64) -> Vec<Change> {
 }
 
 fn change(low: &Level, high: &Level, density: f64) -> Option<(Change, f64)> {
-    let parts = [(low.cp.u?.powi(2), low.cp.dof?), (high.cp.u?.powi(2), high.cp.dof?)];
+    // The probe's factor is common to both.
+    let parts = [low.apart?, high.apart?].map(|(u, dof)| (u * u, dof));
     let dof = effective_dof(&parts)?;
     let u = (parts[0].0 + parts[1].0).sqrt();
     let delta_cp = high.cp.value - low.cp.value;

@@ -4,7 +4,7 @@
 //! by itself and divided by the airspeed: a ratio of pressure drops is right only for a pure square law.
 
 use super::air;
-use super::compare::Estimate;
+use super::compare::{Estimate, ZeroEffect};
 use super::force::Ground;
 use super::model;
 use super::passes::{LEAST_Q_PA, Pass};
@@ -91,7 +91,7 @@ pub fn cores(ground: Ground<'_>, at_kmh: f64) -> (Vec<CoreRow>, Vec<String>) {
             ));
         }
         for target in ground.targets() {
-            let Some(model) = ground.plain(target, |p| ratio(p, core, curve)) else { continue };
+            let Some(model) = ground.plain(target, -1.0, |p| ratio(p, core, curve)) else { continue };
             rows.extend(ground.outcomes(&model).into_iter().map(|(difference, o)| CoreRow {
                 core: core.name.clone(),
                 configuration: o.configuration.to_string(),
@@ -114,12 +114,29 @@ pub fn cores(ground: Ground<'_>, at_kmh: f64) -> (Vec<CoreRow>, Vec<String>) {
 /// Face velocity of a pass, m/s, with the curve in the pass's air.
 fn velocity(p: &Pass, core: &Core, curve: Curve) -> Option<f64> {
     let dp = p.taps.get(&core.front)?.pa - p.taps.get(&core.rear)?.pa;
-    let viscosity = air::viscosity(p.temperature_c + air::CELSIUS_ZERO_K) / air::viscosity(BENCH_KELVIN);
-    curve.in_air(viscosity, p.density / BENCH_DENSITY).velocity(dp)
+    in_air_of(p, curve).velocity(dp)
 }
 
-fn ratio(p: &Pass, core: &Core, curve: Curve) -> Option<f64> {
+fn in_air_of(p: &Pass, curve: Curve) -> Curve {
+    let viscosity = air::viscosity(p.temperature_c + air::CELSIUS_ZERO_K) / air::viscosity(BENCH_KELVIN);
+    curve.in_air(viscosity, p.density / BENCH_DENSITY)
+}
+
+/// Face velocity over airspeed, and how the zeros of front, rear and q enter it.
+fn ratio<'a>(p: &'a Pass, core: &Core, curve: Curve) -> Option<(f64, Vec<ZeroEffect<'a>>)> {
     let q = p.q.as_ref().filter(|q| q.pa >= LEAST_Q_PA)?;
-    let airspeed_m_s = super::probe::speed_of(p.density, q.pa) / crate::units::KMH_PER_M_S;
-    Some(velocity(p, core, curve)? / airspeed_m_s)
+    let airspeed_m_s = super::probe::airspeed(p.density, p.pressure_pa, q.pa) / crate::units::KMH_PER_M_S;
+    let velocity = velocity(p, core, curve)?;
+    let curve = in_air_of(p, curve);
+    // dv/dp of dp = a v + b v².
+    let per_pa = 1.0 / (curve.a + 2.0 * curve.b * velocity) / airspeed_m_s;
+    let ratio = velocity / airspeed_m_s;
+    let of_tap = |tap: &String, effect: f64| {
+        let mean = p.taps.get(tap)?;
+        mean.zero.as_ref().map(|zero| (mean.channel.as_str(), zero, effect))
+    };
+    let mut effects: Vec<ZeroEffect<'a>> =
+        [of_tap(&core.front, -per_pa), of_tap(&core.rear, per_pa)].into_iter().flatten().collect();
+    effects.extend(q.zero().map(|(channel, zero)| (channel, zero, ratio / (2.0 * q.pa))));
+    Some((ratio, effects))
 }

@@ -4,7 +4,7 @@
 //! downforce). Everything is linear in a pass's Cps, so a force is a weighted Cp and gets its interval from the same model; taps scatter
 //! together, and that is in it. Beside it stand the two bounds: taps independent, taps fully common.
 
-use super::compare::{Estimate, Model, Observation, Outcome, Question};
+use super::compare::{Estimate, Model, Observation, Outcome, Question, ZeroEffect};
 use super::passes::Pass;
 use super::zeros::Zeros;
 use super::{Level, Reduction};
@@ -149,13 +149,22 @@ impl<'a> Ground<'a> {
     /// The model of Σ weight · Cp over the passes of a target that have all of these taps.
     pub fn weighted(&self, target_kmh: f64, weights: &[(&str, f64)]) -> Option<Model<'a>> {
         let of_target = self.passes.iter().filter(|p| p.target_kmh == target_kmh);
-        Model::new(of_target.filter_map(|p| Observation::weighted(p, weights)).collect(), self.question)
+        Model::new(of_target.filter_map(|p| Observation::weighted(p, weights, self.question)).collect(), self.question)
     }
 
-    /// The model of any value of a pass.
-    pub fn plain(&self, target_kmh: f64, value: impl Fn(&Pass) -> Option<f64>) -> Option<Model<'a>> {
+    /// The model of any value of a pass that goes with a power of the probe's factor.
+    pub fn plain(
+        &self,
+        target_kmh: f64,
+        power: f64,
+        value: impl Fn(&'a Pass) -> Option<(f64, Vec<ZeroEffect<'a>>)>,
+    ) -> Option<Model<'a>> {
         let of_target = self.passes.iter().filter(|p| p.target_kmh == target_kmh);
-        Model::new(of_target.filter_map(|p| Observation::plain(p, value(p)?)).collect(), self.question)
+        let observed = of_target.filter_map(|p| {
+            let (y, effects) = value(p)?;
+            Observation::plain(p, y, effects, power)
+        });
+        Model::new(observed.collect(), self.question)
     }
 
     /// Levels (false) and differences (true) of a model.
@@ -262,11 +271,16 @@ fn ride_height_models<'a>(ground: Ground<'a>, target: f64, at_q_pa: f64) -> [Out
     let axles = ground.car.ride_height.as_ref().map(|r| [r.front.as_ref(), r.rear.as_ref()]).unwrap_or([None, None]);
     axles.map(|axle| {
         let axle = axle?;
-        let load = |p: &Pass| {
+        let load = |p: &'a Pass| {
             let q = p.q.as_ref().filter(|q| q.pa >= super::passes::LEAST_Q_PA)?;
-            Some(p.heights.get(&axle.channel)? * axle.wheel_rate_n_per_mm * at_q_pa / q.pa)
+            let (channel, rise) = p.heights.get_key_value(&axle.channel)?;
+            let per_mm = axle.wheel_rate_n_per_mm * at_q_pa / q.pa;
+            let load = rise.mm * per_mm;
+            let mut effects = vec![(channel.as_str(), &rise.zero, -per_mm)];
+            effects.extend(q.zero().map(|(channel, zero)| (channel, zero, load / q.pa)));
+            Some((load, effects))
         };
-        ground.plain(target, load).map(|model| ground.outcomes(&model))
+        ground.plain(target, -2.0, load).map(|model| ground.outcomes(&model))
     })
 }
 

@@ -6,7 +6,7 @@ use super::air;
 use super::probe::dynamic_pressure;
 use super::scatter::Within;
 use super::zeros::{Correction, Zeros};
-use crate::config::Channel;
+use crate::config::{Air, Channel};
 use crate::hold::statistics::standard_error;
 use crate::session::{Direction, Entry, Segment, Session};
 use crate::units::{KMH_PER_M_S, Quantity, StreamTime};
@@ -38,10 +38,12 @@ pub struct Pass {
     pub track_deg: Option<f64>,
     /// Air density, kg/m³.
     pub density: f64,
-    /// Air temperature, °C.
+    /// Air temperature, °C, and absolute pressure, Pa.
     pub temperature_c: f64,
+    /// Second of the two.
+    pub pressure_pa: f64,
     /// Ride heights against the zero, mm, by channel.
-    pub heights: BTreeMap<String, f64>,
+    pub heights: BTreeMap<String, Rise>,
     /// By tap.
     pub taps: BTreeMap<String, TapMean>,
 }
@@ -53,6 +55,22 @@ pub struct DynamicPressure {
     pub pa: f64,
     /// Its channel and zero; none when it comes from ground speed and density.
     pub measured: Option<(String, Option<Correction>)>,
+}
+
+impl DynamicPressure {
+    /// Its channel's zero.
+    pub fn zero(&self) -> Option<(&str, &Correction)> {
+        self.measured.as_ref().and_then(|(channel, zero)| Some((channel.as_str(), zero.as_ref()?)))
+    }
+}
+
+/// Mean ride height over a pass.
+#[derive(Clone, Debug)]
+pub struct Rise {
+    /// Above its zero, mm.
+    pub mm: f64,
+    /// That zero.
+    pub zero: Correction,
 }
 
 /// One tap over a pass.
@@ -155,11 +173,12 @@ fn pass(index: usize, session: &Session, zeros: &Zeros<'_>, group: &[&Segment]) 
     let middle = StreamTime::from_micros(i64::midpoint(first.t0.micros(), last.t1.micros()));
     let channels = &session.header.setup.rig.channels;
     let named = |quantity| channels.iter().find(|c| c.quantity == quantity).map(|c| c.name.as_str());
-    let air = group.iter().map(|s| air::density(&s.air.air)).sum::<f64>() / group.len() as f64;
+    let of_air = |of: fn(&Air) -> f64| group.iter().map(|s| of(&s.air.air)).sum::<f64>() / group.len() as f64;
+    let density = of_air(air::density);
     let speed = named(Quantity::Speed);
     let q = named(Quantity::DynamicPressure)
         .and_then(|c| measured_q(group, zeros, c, middle))
-        .or_else(|| speed.and_then(|c| ground_q(group, c, air)));
+        .or_else(|| speed.and_then(|c| ground_q(group, c, density)));
     let q_channel = q.as_ref().and_then(|q| q.measured.as_ref()).map(|(c, _)| c.clone());
     let tap = |(channel, tap): (&String, &String)| {
         let raw = mean(group, channel)?;
@@ -182,8 +201,9 @@ fn pass(index: usize, session: &Session, zeros: &Zeros<'_>, group: &[&Segment]) 
         t_s: middle.seconds(),
         speed_kmh: speed.and_then(|c| mean(group, c)),
         track_deg: first.track_deg,
-        density: air,
-        temperature_c: group.iter().map(|s| s.air.air.temperature_c).sum::<f64>() / group.len() as f64,
+        density,
+        temperature_c: of_air(|a| a.temperature_c),
+        pressure_pa: of_air(|a| a.pressure_hpa) * 100.0,
         heights: heights(group, zeros, channels, middle),
         taps: first.taps.iter().filter_map(tap).collect(),
         q,
@@ -191,8 +211,11 @@ fn pass(index: usize, session: &Session, zeros: &Zeros<'_>, group: &[&Segment]) 
 }
 
 /// Ride heights less their zero; a channel that was never zeroed says nothing of a load.
-fn heights(group: &[&Segment], zeros: &Zeros<'_>, channels: &[Channel], t: StreamTime) -> BTreeMap<String, f64> {
-    let of = |c: &Channel| Some((c.name.clone(), mean(group, &c.name)? - zeros.at(&c.name, t)?.pa));
+fn heights(group: &[&Segment], zeros: &Zeros<'_>, channels: &[Channel], t: StreamTime) -> BTreeMap<String, Rise> {
+    let of = |c: &Channel| {
+        let zero = zeros.at(&c.name, t)?;
+        Some((c.name.clone(), Rise { mm: mean(group, &c.name)? - zero.pa, zero }))
+    };
     channels.iter().filter(|c| c.quantity == Quantity::RideHeight).filter_map(of).collect()
 }
 

@@ -75,7 +75,7 @@ fn narrowing(r: &Reduction, widest: &Comparison) -> Option<NextPass> {
         |p: &&Pass| p.target_kmh == widest.target_kmh && p.taps.get(&widest.tap).is_some_and(|t| t.cp.is_some());
     let passes: Vec<&Pass> = r.passes.iter().filter(with_tap).collect();
     let letters: Vec<String> = r.configurations.iter().map(|c| c.letter.clone()).collect();
-    let question = Question { configurations: &letters, baseline: &r.baseline, resolve_cp: r.resolve.1 };
+    let question = Question { configurations: &letters, baseline: &r.baseline, resolve_cp: r.resolve.1, factor: None };
     let ask = |passes: &[&Pass]| interval_over_scatter(passes, question, &widest.configuration);
     let driven = |letter: &str, way: Direction| {
         passes.iter().filter(|p| p.configuration == letter && p.direction == way).count()

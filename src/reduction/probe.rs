@@ -31,6 +31,19 @@ pub fn mach_of(impact_over_static: f64) -> f64 {
     (2.0 / (GAMMA - 1.0) * ((impact_over_static.max(0.0) + 1.0).powf((GAMMA - 1.0) / GAMMA) - 1.0)).sqrt()
 }
 
+/// Airspeed of an impact pressure, km/h; 0 for a negative one.
+///
+/// *Input* density kg/m³, static pressure Pa, impact pressure p_t − p Pa. *Method* [`mach_of`] times the speed of sound √(γ p/ρ). *Accuracy* against
+/// NACA Report 1135; the incompressible [`speed_of`] is high by M²/8: 0.08 % at 100 km/h, 0.33 % at 200.
+///
+/// ```
+/// let kmh = steadytap::reduction::probe::airspeed(1.225, 101_325.0, 473.396); // q = 472.608 Pa at 100 km/h, times 1 + M²/4
+/// assert!((kmh - 100.0).abs() < 1e-3);
+/// ```
+pub fn airspeed(density: f64, pressure_pa: f64, impact_pa: f64) -> f64 {
+    mach_of(impact_pa / pressure_pa) * (GAMMA * pressure_pa / density).sqrt() * KMH_PER_M_S
+}
+
 /// A measured pressure coefficient corrected for the probe.
 ///
 /// *Input* Cp by the indicated q; k, true over indicated airspeed. *Output* Cp by the free stream's q. *Method* static model:

@@ -61,6 +61,13 @@ impl Quadratic {
         Some(Self { b: [fit.estimates[0], fit.estimates[1], fit.estimates[2]], covariance, dof: fit.dof })
     }
 
+    /// Of three linear combinations of a fit's estimates, one a row.
+    fn of_combinations(fit: &Fit, rows: &DMatrix<f64>) -> Option<Self> {
+        let b = rows * &fit.estimates;
+        let covariance = rows * &fit.unscaled * rows.transpose() * fit.variance?;
+        Some(Self { b: [b[0], b[1], b[2]], covariance, dof: fit.dof })
+    }
+
     /// Value at a setting.
     pub fn at(&self, x: f64) -> f64 {
         self.b[0] + x * (self.b[1] + x * self.b[2])
@@ -275,24 +282,23 @@ pub struct Crossing {
     pub interval: Option<([f64; 2], [bool; 2])>,
 }
 
-/// Where the change from the baseline's setting reaches a size, on the side of the largest change.
+/// Where the change from the baseline reaches a size, on the side of the largest change.
 ///
-/// *Output* `None` where the curve does not get there within the tested range. *Method* inversion of the quadratic's 95 % band; else the first crossing of
-/// the shape-preserving cubic. The baseline's own level is taken as known.
-pub fn reaches(swept: &Swept, baseline_setting: f64, size: f64) -> Option<Crossing> {
-    let nearest = |x: f64| swept.levels.iter().find(|l| l.0 == x).map(|l| l.1);
-    let start = swept.quadratic.as_ref().map_or(nearest(baseline_setting), |q| Some(q.at(baseline_setting)))?;
+/// *Output* `None` where the curve does not get there within the tested range. *Method* inversion of the 95 % band of the difference from the baseline,
+/// whose own uncertainty is in it; else the first crossing of the shape-preserving cubic.
+pub fn reaches(swept: &Swept, size: f64) -> Option<Crossing> {
+    let start = swept.baseline?;
     let far = swept.levels.iter().map(|l| l.1 - start).max_by(|a, b| a.abs().total_cmp(&b.abs()))?;
-    let level = start + size * far.signum();
+    let change = size * far.signum();
     let range = [swept.levels.first()?.0, swept.levels.last()?.0];
-    match &swept.quadratic {
-        Some(q) => {
-            let at = q.crossing(level, range)?;
-            Some(Crossing { at, interval: q.crossing_interval(level, range) })
+    match (&swept.quadratic, &swept.difference) {
+        (Some(_), Some(difference)) => {
+            let at = difference.crossing(change, range)?;
+            Some(Crossing { at, interval: difference.crossing_interval(change, range) })
         }
-        None => {
+        _ => {
             let (x, y): (Vec<f64>, Vec<f64>) = swept.levels.iter().copied().unzip();
-            let at = *Pchip::new(&x, &y)?.crossings(level).first()?;
+            let at = *Pchip::new(&x, &y)?.crossings(start + change).first()?;
             Some(Crossing { at, interval: None })
         }
     }
@@ -305,38 +311,52 @@ pub struct Swept {
     pub levels: Vec<(f64, f64)>,
     /// The quadratic, where it fits or could not be tested.
     pub quadratic: Option<Quadratic>,
+    /// The quadratic less the baseline's level.
+    pub difference: Option<Quadratic>,
+    /// The baseline's level.
+    pub baseline: Option<f64>,
     /// p of its lack of fit.
     pub lack_of_fit_p: Option<f64>,
 }
 
-/// Sweeps one model's levels over settings given by configuration; none below three settings.
-pub fn sweep(model: &Model<'_>, setting: impl Fn(&str) -> Option<f64>) -> Option<Swept> {
+/// Sweeps one model's levels over settings given by configuration; none below three settings. Configurations without a setting keep a level of their
+/// own: they help to tell heading and drift, and say nothing of the curve.
+pub fn sweep(model: &Model<'_>, baseline: &str, setting: impl Fn(&str) -> Option<f64>) -> Option<Swept> {
     let (fit, design, observations) = model.parts();
     let xs: Vec<Option<f64>> = observations.iter().map(|o| setting(&o.pass.configuration)).collect();
-    let mut levels: Vec<(f64, f64)> = Vec::new();
-    for (letter, value) in model.level_values() {
-        levels.extend(setting(letter).map(|x| (x, value)));
-    }
+    let all = model.level_values();
+    let mut levels: Vec<(f64, f64)> =
+        all.iter().filter_map(|(letter, level)| Some((setting(letter)?, *level))).collect();
     levels.sort_by(|a, b| a.0.total_cmp(&b.0));
     let mut settings: Vec<f64> = levels.iter().map(|l| l.0).collect();
     settings.dedup();
-    if settings.len() < 3 || xs.iter().any(Option::is_none) {
-        return (settings.len() >= 3).then_some(Swept { levels, quadratic: None, lack_of_fit_p: None });
+    if settings.len() < 3 {
+        return None;
     }
-    // The configurations' columns give way to 1, x, x²; the nuisance columns stay.
-    let configurations = model.level_values().len();
-    let nuisance = design.ncols() - configurations;
-    let curve = DMatrix::from_fn(design.nrows(), 3 + nuisance, |i, j| match j {
-        0..=2 => xs[i].unwrap_or(0.0).powi(j as i32),
-        j => design[(i, configurations + j - 3)],
+    let own = all.iter().find(|(letter, _)| *letter == baseline).map(|(_, level)| *level);
+    let drawn = Swept { levels, quadratic: None, difference: None, baseline: own, lack_of_fit_p: None };
+    // The columns of configurations with a setting give way to 1, x, x²; the others stay.
+    let letter_of = |column: usize| all.get(column).map(|(letter, _)| *letter);
+    let kept: Vec<usize> = (0..design.ncols()).filter(|j| letter_of(*j).and_then(&setting).is_none()).collect();
+    let curve = DMatrix::from_fn(design.nrows(), 3 + kept.len(), |i, j| match j {
+        0..=2 => xs[i].map_or(0.0, |x| x.powi(j as i32)),
+        j => design[(i, kept[j - 3])],
     });
     let y = DVector::from_iterator(observations.len(), observations.iter().map(|o| o.y));
-    let Some(quadratic) = model::fit(&curve, &y) else {
-        return Some(Swept { levels, quadratic: None, lack_of_fit_p: None });
-    };
+    let Some(quadratic) = model::fit(&curve, &y) else { return Some(drawn) };
     let test =
         lack_of_fit((quadratic.residuals.norm_squared(), quadratic.dof), (fit.residuals.norm_squared(), fit.dof));
     let lack_of_fit_p = test.map(|(_, p)| p);
-    let fits = lack_of_fit_p.is_none_or(|p| p > ALPHA);
-    Some(Swept { levels, quadratic: if fits { Quadratic::of(&quadratic) } else { None }, lack_of_fit_p })
+    if lack_of_fit_p.is_some_and(|p| p <= ALPHA) {
+        return Some(Swept { lack_of_fit_p, ..drawn });
+    }
+    // b₀ + b₁x + b₂x² less the baseline: a level of its own, or the curve at its setting.
+    let mut rows = DMatrix::identity(3, 3 + kept.len());
+    if let Some(x) = setting(baseline) {
+        (0..3).for_each(|j| rows[(0, j)] -= x.powi(j as i32));
+    } else if let Some(place) = kept.iter().position(|column| letter_of(*column) == Some(baseline)) {
+        rows[(0, 3 + place)] = -1.0;
+    }
+    let difference = own.and_then(|_| Quadratic::of_combinations(&quadratic, &rows));
+    Some(Swept { quadratic: Quadratic::of(&quadratic), difference, lack_of_fit_p, ..drawn })
 }
