@@ -64,6 +64,10 @@ pub enum Entry {
     Rejected(Rejected),
     /// A segment withdrawn.
     Void(Void),
+    /// A withdrawn segment counts again.
+    Restore(Void),
+    /// What a segment was tagged with was wrong.
+    Correct(Correction),
     /// A moment noted.
     Mark(Remark),
     /// Words.
@@ -188,6 +192,37 @@ pub enum Direction {
     Other,
 }
 
+impl Session {
+    /// Its segments as they stand in the end, corrected, in order; and whether each is void.
+    pub fn segments(&self) -> Vec<(std::borrow::Cow<'_, Segment>, bool)> {
+        use std::borrow::Cow;
+        let mut all: Vec<(Cow<'_, Segment>, bool)> = Vec::new();
+        let mut place: BTreeMap<u32, usize> = BTreeMap::new();
+        for entry in &self.entries {
+            match entry {
+                Entry::Segment(s) => {
+                    place.insert(s.id, all.len());
+                    all.push((Cow::Borrowed(s), false));
+                }
+                Entry::Void(v) | Entry::Restore(v) => {
+                    if let Some(i) = place.get(&v.segment) {
+                        all[*i].1 = matches!(entry, Entry::Void(_));
+                    }
+                }
+                Entry::Correct(c) => {
+                    if let Some(i) = place.get(&c.segment) {
+                        let segment = all[*i].0.to_mut();
+                        segment.configuration = c.configuration.clone().unwrap_or(std::mem::take(&mut segment.configuration));
+                        segment.direction = c.direction.unwrap_or(segment.direction);
+                    }
+                }
+                _ => {}
+            }
+        }
+        all
+    }
+}
+
 impl Direction {
     /// Its word in files and commands.
     pub const fn word(self) -> &'static str {
@@ -231,13 +266,28 @@ pub struct Rejected {
     pub why: Vec<String>,
 }
 
-/// A segment withdrawn.
+/// A segment withdrawn, or restored.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 pub struct Void {
     /// When.
     pub t: StreamTime,
     /// Which segment.
     pub segment: u32,
+}
+
+/// What a segment should have been tagged with; the segment's own line stays as it is.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Correction {
+    /// When.
+    pub t: StreamTime,
+    /// Which segment.
+    pub segment: u32,
+    /// What was fitted; none: as it stands.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub configuration: Option<String>,
+    /// Which way; none: as it stands.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub direction: Option<Direction>,
 }
 
 /// Words at a moment.

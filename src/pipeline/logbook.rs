@@ -10,7 +10,7 @@ use crate::config::{Air, Configuration, Setup};
 use crate::hold::Rule;
 use crate::hold::dwell::{Dwell, Interval};
 use crate::session::{
-    AirChange, AirSource, Change, ChannelStatistics, Direction, End, Entry, Rejected, Remark, Segment, SegmentAir,
+    AirChange, AirSource, Change, ChannelStatistics, Correction, Direction, End, Entry, Rejected, Remark, Segment, SegmentAir,
     Session, TapsChange, Void, Zero,
 };
 use crate::signal::Sample;
@@ -114,9 +114,9 @@ impl Logbook {
     fn recall(&mut self, entry: &Entry) {
         match entry {
             Entry::Segment(s) => self.remember(s),
-            Entry::Void(v) => {
-                self.segments.iter_mut().filter(|s| s.id == v.segment).for_each(|s| s.void = true);
-            }
+            Entry::Void(v) => self.segments.iter_mut().filter(|s| s.id == v.segment).for_each(|s| s.void = true),
+            Entry::Restore(v) => self.segments.iter_mut().filter(|s| s.id == v.segment).for_each(|s| s.void = false),
+            Entry::Correct(c) => self.retag(c),
             Entry::Zero(z) => {
                 self.next_zero = z.id + 1;
                 self.zero = Some(z.clone());
@@ -237,7 +237,10 @@ impl Logbook {
             }
             Command::SpanBegin => self.span_begin(at, out),
             Command::SpanEnd => self.span_end(at, out),
-            Command::Void(id) => self.void(at, id, out),
+            Command::Void(id) => self.void(at, (id, true), out),
+            Command::Restore(id) => self.void(at, (id, false), out),
+            Command::CorrectConfiguration(id, letter) => self.correct(at, id, (Some(letter), None), out),
+            Command::CorrectDirection(id, way) => self.correct(at, id, (None, Some(way)), out),
             Command::Zero => self.take_zero(at, out),
             Command::Configuration(letter) => self.fit(at, letter, out),
             Command::Direction(way) => {
@@ -409,13 +412,47 @@ impl Logbook {
         why
     }
 
-    fn void(&mut self, at: StreamTime, id: u32, out: &mut Vec<Event>) -> Result<(), Refusal> {
+    /// Withdraws a segment, or lets it count again.
+    fn void(&mut self, at: StreamTime, (id, void): (u32, bool), out: &mut Vec<Event>) -> Result<(), Refusal> {
         let segment = self.segments.iter_mut().find(|s| s.id == id).ok_or(Refusal::NoSuchSegment(id))?;
-        if std::mem::replace(&mut segment.void, true) {
-            return Err(Refusal::AlreadyVoid(id));
+        if std::mem::replace(&mut segment.void, void) == void {
+            return Err(if void { Refusal::AlreadyVoid(id) } else { Refusal::NotVoid(id) });
         }
-        self.write(at, Entry::Void(Void { t: at, segment: id }), out);
+        let line = Void { t: at, segment: id };
+        self.write(at, if void { Entry::Void(line) } else { Entry::Restore(line) }, out);
         Ok(())
+    }
+
+    fn correct(
+        &mut self,
+        at: StreamTime,
+        segment: u32,
+        (configuration, direction): (Option<String>, Option<Direction>),
+        out: &mut Vec<Event>,
+    ) -> Result<(), Refusal> {
+        if !self.segments.iter().any(|s| s.id == segment) {
+            return Err(Refusal::NoSuchSegment(segment));
+        }
+        configuration.iter().try_for_each(|letter| self.known(letter))?;
+        let correction = Correction { t: at, segment, configuration, direction };
+        self.retag(&correction);
+        self.write(at, Entry::Correct(correction), out);
+        Ok(())
+    }
+
+    fn retag(&mut self, correction: &Correction) {
+        for s in self.segments.iter_mut().filter(|s| s.id == correction.segment) {
+            s.configuration = correction.configuration.clone().unwrap_or(std::mem::take(&mut s.configuration));
+            s.direction = correction.direction.unwrap_or(s.direction);
+        }
+    }
+
+    fn known(&self, letter: &str) -> Result<(), Refusal> {
+        if self.configurations.iter().any(|c| c.letter == letter) {
+            return Ok(());
+        }
+        let known: Vec<&str> = self.configurations.iter().map(|c| c.letter.as_str()).collect();
+        Err(Refusal::NoSuchConfiguration { letter: letter.to_string(), known: known.join(", ") })
     }
 
     fn take_zero(&mut self, at: StreamTime, out: &mut Vec<Event>) -> Result<(), Refusal> {
@@ -444,10 +481,7 @@ impl Logbook {
     }
 
     fn fit(&mut self, at: StreamTime, letter: String, out: &mut Vec<Event>) -> Result<(), Refusal> {
-        if !self.configurations.iter().any(|c| c.letter == letter) {
-            let known: Vec<&str> = self.configurations.iter().map(|c| c.letter.as_str()).collect();
-            return Err(Refusal::NoSuchConfiguration { letter, known: known.join(", ") });
-        }
+        self.known(&letter)?;
         self.configuration.clone_from(&letter);
         self.write(at, Entry::Configuration(Change { t: at, to: letter }), out);
         Ok(())

@@ -9,6 +9,9 @@ pub enum Refusal {
     /// `void` of a void segment.
     #[error("segment {0} is void already")]
     AlreadyVoid(u32),
+    /// `restore` of a segment that counts.
+    #[error("segment {0} is not void: it counts")]
+    NotVoid(u32),
     /// `zero` on the move.
     #[error("no zero: the car moves at {0:.1} km/h; stop first")]
     Moving(f64),

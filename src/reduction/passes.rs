@@ -10,7 +10,8 @@ use crate::config::{Air, Channel};
 use crate::hold::statistics::standard_error;
 use crate::session::{Direction, Entry, Segment, Session};
 use crate::units::{KMH_PER_M_S, Quantity, StreamTime};
-use std::collections::{BTreeMap, BTreeSet};
+use std::borrow::Cow;
+use std::collections::BTreeMap;
 
 /// Below this q no coefficient is formed: it would be noise over noise, Pa.
 pub const LEAST_Q_PA: f64 = 5.0;
@@ -104,8 +105,8 @@ pub struct LeftOut {
 /// The passes of a session in time order, and what was left out.
 pub fn passes(index: usize, session: &Session) -> (Vec<Pass>, Vec<LeftOut>) {
     let zeros = Zeros::of(session);
-    let void: BTreeSet<u32> =
-        session.entries.iter().filter_map(|e| if let Entry::Void(v) = e { Some(v.segment) } else { None }).collect();
+    let standing: BTreeMap<u32, (Cow<'_, Segment>, bool)> =
+        session.segments().into_iter().map(|(s, void)| (s.id, (s, void))).collect();
     let mut left_out = Vec::new();
     let mut groups: Vec<((u32, &Segment), Vec<&Segment>)> = Vec::new();
     let mut run = 0;
@@ -115,10 +116,12 @@ pub fn passes(index: usize, session: &Session) -> (Vec<Pass>, Vec<LeftOut>) {
                 run += 1;
                 continue;
             }
-            Entry::Segment(segment) => segment,
+            Entry::Segment(segment) => segment.id,
             _ => continue,
         };
-        if let Some(why) = reason_to_leave_out(segment, &void) {
+        let Some((segment, void)) = standing.get(&segment) else { continue };
+        let segment: &Segment = segment;
+        if let Some(why) = reason_to_leave_out(segment, *void) {
             left_out.push(LeftOut { session: index, segment: segment.id, why });
             continue;
         }
@@ -136,8 +139,8 @@ pub fn passes(index: usize, session: &Session) -> (Vec<Pass>, Vec<LeftOut>) {
     (made, left_out)
 }
 
-fn reason_to_leave_out(segment: &Segment, void: &BTreeSet<u32>) -> Option<String> {
-    if void.contains(&segment.id) {
+fn reason_to_leave_out(segment: &Segment, void: bool) -> Option<String> {
+    if void {
         return Some("void".to_string());
     }
     if segment.target_kmh.is_none() {

@@ -2,7 +2,7 @@
 
 use super::{Message, Weight, text};
 use crate::pipeline::{Event, What};
-use crate::session::Entry;
+use crate::session::{Correction, Entry};
 
 /// The words for an event, if it is worth words. `on_disk`: its line is on a disk.
 pub fn message(event: &Event, on_disk: bool) -> Option<Message> {
@@ -27,6 +27,8 @@ fn of_entry(entry: &Entry, on_disk: bool) -> Option<(Weight, String)> {
         Entry::Rejected(r) => (Weight::Refused, format!("dwell not held: {}", remedy(&r.why))),
         Entry::Zero(z) => (Weight::Good, format!("zero {} taken", z.id)),
         Entry::Void(v) => (Weight::Good, format!("segment {} is void", v.segment)),
+        Entry::Restore(v) => (Weight::Good, format!("segment {} counts again", v.segment)),
+        Entry::Correct(c) => (Weight::Good, format!("segment {} is corrected: {}", c.segment, corrected(c))),
         Entry::Mark(m) => (Weight::Quiet, format!("mark {}", m.text)),
         Entry::Note(m) => (Weight::Quiet, format!("note: {}", m.text)),
         Entry::Configuration(c) => (Weight::Good, format!("configuration {}", c.to)),
@@ -39,6 +41,12 @@ fn of_entry(entry: &Entry, on_disk: bool) -> Option<(Weight, String)> {
         Entry::Fault(f) => (Weight::Refused, format!("port {}: {}", f.place, f.what)),
         Entry::Session(_) | Entry::End(_) => return None,
     })
+}
+
+fn corrected(c: &Correction) -> String {
+    let configuration = c.configuration.as_ref().map(|letter| format!("configuration {letter}"));
+    let direction = c.direction.map(|way| format!("direction {}", way.word()));
+    configuration.into_iter().chain(direction).collect::<Vec<_>>().join(", ")
 }
 
 /// Why a dwell was rejected, and what to do about it.

@@ -22,6 +22,12 @@ pub enum Command {
     SpanEnd,
     /// Withdraw a segment.
     Void(u32),
+    /// A withdrawn segment counts again.
+    Restore(u32),
+    /// A segment was tagged with the wrong configuration.
+    CorrectConfiguration(u32, String),
+    /// A segment was tagged with the wrong direction.
+    CorrectDirection(u32, crate::session::Direction),
     /// Average the channels at standstill.
     Zero,
     /// Another configuration is fitted.
@@ -54,7 +60,7 @@ pub enum DirectionWord {
 pub enum CommandError {
     /// Not one of the command words.
     #[error(
-        "unknown command `{0}`: expected take, span, void, zero, configuration, direction, target, mark, note, taps or air"
+        "unknown command `{0}`: expected take, span, void, restore, correct, zero, configuration, direction, target, mark, note, taps or air"
     )]
     Unknown(String),
     /// A known word with arguments that do not fit.
@@ -70,7 +76,15 @@ pub enum CommandError {
 impl Command {
     /// It decides what is kept; passed over where every dwell is kept anyway.
     pub fn decides_what_is_kept(&self) -> bool {
-        matches!(self, Self::Take | Self::TakeEvery | Self::SpanBegin | Self::SpanEnd | Self::Void(_))
+        matches!(self, Self::Take | Self::TakeEvery | Self::SpanBegin | Self::SpanEnd) || self.names_a_segment()
+    }
+
+    /// It is about a segment by its number, which is another where other dwells are kept.
+    fn names_a_segment(&self) -> bool {
+        matches!(
+            self,
+            Self::Void(_) | Self::Restore(_) | Self::CorrectConfiguration(..) | Self::CorrectDirection(..)
+        )
     }
 
     /// Reads the words after `@`.
@@ -96,6 +110,8 @@ impl Command {
                 _ => Err(needs("span", "begin or end")),
             },
             "void" => rest.parse().map(Self::Void).map_err(|_| needs("void", "a segment number")),
+            "restore" => rest.parse().map(Self::Restore).map_err(|_| needs("restore", "a segment number")),
+            "correct" => correction(rest).ok_or(needs("correct", "a segment number, then configuration or direction, then what it was")),
             "configuration" if !rest.is_empty() && !rest.contains(' ') => Ok(Self::Configuration(rest.to_string())),
             "configuration" => Err(needs("configuration", "one letter of the outing")),
             "direction" => direction(rest).map(Self::Direction).ok_or(needs("direction", "out, back, other or auto")),
@@ -110,6 +126,17 @@ impl Command {
             "air" => air(rest).map(Self::Air).ok_or(needs("air", "temperature °C, pressure hPa, humidity %")),
             other => Err(CommandError::Unknown(other.to_string())),
         }
+    }
+}
+
+fn correction(words: &str) -> Option<Command> {
+    let words: Vec<&str> = words.split_whitespace().collect();
+    let [id, what, to] = words[..] else { return None };
+    let id = id.parse().ok()?;
+    match (what, direction(to)) {
+        ("configuration", _) => Some(Command::CorrectConfiguration(id, to.to_string())),
+        ("direction", Some(DirectionWord::By(way))) => Some(Command::CorrectDirection(id, way)),
+        _ => None,
     }
 }
 
@@ -160,6 +187,9 @@ impl fmt::Display for Command {
             Self::SpanBegin => write!(f, "span begin"),
             Self::SpanEnd => write!(f, "span end"),
             Self::Void(id) => write!(f, "void {id}"),
+            Self::Restore(id) => write!(f, "restore {id}"),
+            Self::CorrectConfiguration(id, letter) => write!(f, "correct {id} configuration {letter}"),
+            Self::CorrectDirection(id, way) => write!(f, "correct {id} direction {}", way.word()),
             Self::Zero => write!(f, "zero"),
             Self::Configuration(letter) => write!(f, "configuration {letter}"),
             Self::Direction(DirectionWord::By(way)) => write!(f, "direction {}", way.word()),
