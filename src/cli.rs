@@ -75,6 +75,12 @@ struct Run {
     /// Times real time, or max
     #[arg(long, value_name = "N|max")]
     fast: Option<Pace>,
+    /// Draw with ASCII alone
+    #[arg(long)]
+    plain: bool,
+    /// A file of your own keys [default: keys.toml in the configuration directory, if there is one]
+    #[arg(long, value_name = "FILE")]
+    keys: Option<PathBuf>,
 }
 
 #[derive(Args, Debug, Default)]
@@ -244,6 +250,9 @@ impl Run {
             unattended: self.unattended,
             seconds: self.seconds,
             rehearsal,
+            rig: None,
+            keys: self.keys.clone(),
+            plain: self.plain,
         }
     }
 }
@@ -284,13 +293,18 @@ fn drive(words: &Drive) -> Outcome {
             Ok(source) => Feed::Record(Box::new(source), words.run.fast.unwrap_or(Pace::Times(1.0))),
             Err(trouble) => return trouble.into(),
         },
+        None if words.run.fast.is_some() => {
+            let hint = "add --stream RECORD, or leave --fast out: ports go at their own speed";
+            return Outcome::Misused(Trouble::new("--fast is for records").hint(hint));
+        }
         None => match ports(&setup) {
             Ok(feed) => feed,
             Err(troubles) => return Outcome::Problems(troubles),
         },
     };
     let name = words.outing.file_stem().map_or("outing".into(), |s| s.to_string_lossy().into_owned());
-    ended(outing::run(&setup, feed, &words.run.plan(&name, false)))
+    let plan = Plan { rig: files::rig_of(&words.outing), ..words.run.plan(&name, false) };
+    ended(outing::run(&setup, feed, &plan))
 }
 
 /// Opens every port of the rig; every one that cannot be opened is told.

@@ -6,6 +6,7 @@
 pub mod health;
 pub mod kept;
 pub mod logbook;
+pub mod plan;
 pub mod refusal;
 
 use crate::config::{Setup, Watch};
@@ -191,7 +192,12 @@ impl Pipeline {
         self.advance(at, out);
         self.samples.clear();
         match self.decoders[port].decode(line) {
-            Ok(values) => self.wiring[port].samples(at, values, &mut self.samples),
+            Ok(values) => {
+                self.wiring[port].samples(at, values, &mut self.samples);
+                if !self.eyes.is_empty() {
+                    self.wiring[port].raw(values).for_each(|(channel, raw)| self.eyes[channel].raw(raw));
+                }
+            }
             Err(why) => return self.rejected(port, at, line, why),
         }
         let no_fix = self.decoders[port].gps().no_fix;

@@ -19,6 +19,7 @@ pub mod probe;
 pub mod scatter;
 pub mod sweep;
 pub mod wind;
+pub mod workshop;
 pub mod zeros;
 
 use crate::config::{Air, Configuration};

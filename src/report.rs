@@ -6,4 +6,4 @@ mod text;
 
 pub use json::json;
 pub use tables::csv;
-pub use text::text;
+pub use text::{next_pass, text};

@@ -4,13 +4,17 @@
 //! a screen is tested as text. Speeds are km/h and pressures Pa in here; [`View::show`] says how they are shown.
 
 mod below;
+pub mod bench;
 mod canvas;
 mod digits;
 mod drive;
 mod figures;
+pub mod findings;
 pub mod keys;
+pub mod layby;
 pub mod messages;
 mod overlays;
+mod picture;
 mod rows;
 pub mod seen;
 pub mod text;
@@ -21,9 +25,15 @@ pub use theme::Theme;
 pub use crate::pipeline::health::Condition as PortState;
 
 use crate::config::Show;
+use crate::reduction::workshop::StepResponse;
 use crate::units::StreamTime;
+use bench::{Bench, BenchFace, Calibrating};
 use canvas::Canvas;
+use findings::Findings;
+use keys::Bindings;
+use layby::LaybyFace;
 use ratatui::buffer::Buffer;
+use std::sync::Arc;
 
 /// The cautions: shown at the first start, in the README, and before a drive alone.
 pub const SAFETY: [&str; 8] = [
@@ -46,13 +56,56 @@ pub struct Face {
     pub plain: bool,
     /// The driver is alone: nothing that invites reading.
     pub solo: bool,
-    /// What lies over the Drive screen.
+    /// Where the car is.
+    pub spot: Spot,
+    /// What is looked at beside the road.
+    pub layby: LaybyFace,
+    /// What is looked at in the workshop.
+    pub bench: BenchFace,
+    /// Keys that the person has put elsewhere.
+    pub bindings: Bindings,
+    /// What lies over the place.
     pub overlay: Overlay,
     /// The key that took or voided last and when it last came, to tell a held key from a second press.
     pub last_key: Option<(crossterm::event::KeyCode, StreamTime)>,
 }
 
-/// What lies over the Drive screen; it never stops the one key from taking, save where text is typed.
+/// The three places, named after where the car is.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum Spot {
+    /// In the workshop.
+    Bench,
+    /// Moving.
+    #[default]
+    Drive,
+    /// Parked beside the road.
+    Layby,
+}
+
+impl Spot {
+    /// The next one.
+    pub const fn next(self) -> Self {
+        match self {
+            Self::Bench => Self::Drive,
+            Self::Drive => Self::Layby,
+            Self::Layby => Self::Bench,
+        }
+    }
+    /// The one before.
+    pub const fn before(self) -> Self {
+        self.next().next()
+    }
+    /// Its name.
+    pub const fn word(self) -> &'static str {
+        match self {
+            Self::Bench => "Bench",
+            Self::Drive => "Drive",
+            Self::Layby => "Layby",
+        }
+    }
+}
+
+/// What lies over a place; over Drive it never stops the one key from taking, save where text is typed.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub enum Overlay {
     /// Nothing.
@@ -68,6 +121,18 @@ pub enum Overlay {
     Void(u32),
     /// The list of configurations and which one is marked.
     Configuration(usize),
+    /// "Leave Drive while the car moves?"
+    Away(Spot),
+    /// One segment looked into.
+    Segment(u32),
+    /// The list of configurations, to correct a segment's.
+    Correct(u32, usize),
+    /// A sensor against a reference.
+    Calibration(Calibrating),
+    /// A hose that holds a pressure, since then.
+    Leak(Option<StreamTime>),
+    /// A hose that passes a step on; the last one seen.
+    Step(Option<StepResponse>),
     /// A line of text being typed.
     Prompt(Prompt),
 }
@@ -88,24 +153,30 @@ pub struct Prompt {
 pub enum PromptKind {
     /// A note.
     Note,
+    /// A note on a segment.
+    NoteOn(u32),
     /// The air measured by hand.
     Air,
     /// Channels on taps.
     Taps,
 }
 
-/// Draws the Drive screen over the whole buffer. Pure; any size, down to one cell, is drawn without panic.
+/// Draws the place over the whole buffer. Pure; any size, down to one cell, is drawn without panic.
 pub fn render(view: &View, face: &Face, buffer: &mut Buffer) {
     let mut canvas = Canvas::new(buffer, face.theme, face.plain);
     if drive::too_small(&canvas) {
         drive::draw_small(view, face, &mut canvas);
     } else {
-        drive::draw(view, face, &mut canvas);
+        match face.spot {
+            Spot::Bench => bench::draw(view, face, &mut canvas),
+            Spot::Drive => drive::draw(view, face, &mut canvas),
+            Spot::Layby => layby::draw(view, face, &mut canvas),
+        }
         overlays::draw(view, face, &mut canvas);
     }
 }
 
-/// Everything the Drive screen draws.
+/// Everything that the three places draw.
 #[derive(Clone, Debug, PartialEq)]
 pub struct View {
     /// Title of the outing.
@@ -142,6 +213,12 @@ pub struct View {
     pub configurations: Vec<(String, String)>,
     /// Seconds since the last zero; none: never zeroed.
     pub zero_age_s: Option<f64>,
+    /// What to drive next, in words; none when all that was wanted is driven.
+    pub plan: Option<String>,
+    /// What the session says so far; none before the first segment.
+    pub findings: Option<Arc<Findings>>,
+    /// What the workshop sees; none while nobody looks.
+    pub bench: Option<Bench>,
     /// The stream has ended (a replay or rehearsal is over).
     pub ended: bool,
 }

@@ -193,6 +193,11 @@ pub enum Direction {
 }
 
 impl Session {
+    /// Its zeros, in order.
+    pub fn zeros(&self) -> impl Iterator<Item = &Zero> {
+        self.entries.iter().filter_map(|e| if let Entry::Zero(z) = e { Some(z) } else { None })
+    }
+
     /// Its segments as they stand in the end, corrected, in order; and whether each is void.
     pub fn segments(&self) -> Vec<(std::borrow::Cow<'_, Segment>, bool)> {
         use std::borrow::Cow;
@@ -212,7 +217,8 @@ impl Session {
                 Entry::Correct(c) => {
                     if let Some(i) = place.get(&c.segment) {
                         let segment = all[*i].0.to_mut();
-                        segment.configuration = c.configuration.clone().unwrap_or(std::mem::take(&mut segment.configuration));
+                        segment.configuration =
+                            c.configuration.clone().unwrap_or(std::mem::take(&mut segment.configuration));
                         segment.direction = c.direction.unwrap_or(segment.direction);
                     }
                 }

@@ -5,12 +5,14 @@
 #![expect(clippy::disallowed_methods, reason = "the shell reads the clock for everybody")]
 #![expect(clippy::disallowed_macros, reason = "the shell talks for everybody")]
 
+pub mod calibration;
 pub mod check;
 pub mod clock;
 pub mod engine;
 pub mod feed;
 pub mod files;
 pub mod journal;
+pub mod keyfile;
 pub mod listen;
 pub mod live;
 pub mod outing;
@@ -18,6 +20,7 @@ pub mod player;
 pub mod progress;
 pub mod recorder;
 pub mod reduce;
+pub mod reducer;
 pub mod rehold;
 pub mod serial;
 pub mod terminal;

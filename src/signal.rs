@@ -97,6 +97,11 @@ impl Wiring {
         Self { links: links.collect() }
     }
 
+    /// The fields of one frame that feed a channel, as they came: (channel, raw), for the eye.
+    pub fn raw<'w>(&'w self, values: &'w [Option<f64>]) -> impl Iterator<Item = (usize, f64)> + 'w {
+        self.links.iter().filter_map(|link| Some((link.channel, values[link.slot]?)))
+    }
+
     /// Appends the samples of one frame, in rig order.
     #[inline]
     pub fn samples(&self, at: StreamTime, values: &[Option<f64>], out: &mut Vec<Sample>) {

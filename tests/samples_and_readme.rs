@@ -173,6 +173,8 @@ fn the_screen_in_the_readme_is_the_real_one() {
         journal,
         on_disk: &on_disk,
         messages: &told[told.len() - 1..],
+        findings: None,
+        workshop: None,
         ended: false,
     };
     let mut buffer = Buffer::empty(Rect::new(0, 0, 80, 24));

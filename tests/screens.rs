@@ -9,7 +9,9 @@ use proptest::prelude::*;
 use ratatui::buffer::Buffer;
 use ratatui::layout::Rect;
 use scenes::{face, with};
-use steadytap::screen::{Face, Kept, Overlay, Prompt, PromptKind, Theme, View, WindowState, render};
+use steadytap::screen::layby::Pane;
+use steadytap::screen::{Face, Kept, Overlay, Prompt, PromptKind, Spot, Theme, View, WindowState, render};
+use steadytap::units::StreamTime;
 
 /// A frame as text, one line a row, blanks at the ends left out.
 pub fn text(view: &View, face: &Face, (columns, rows): (u16, u16)) -> String {
@@ -47,6 +49,16 @@ fn snapshot(name: &str, view: &View, face: &Face, sizes: &[((u16, u16), &str)]) 
     });
 }
 
+fn at(spot: Spot, pane: Pane) -> Face {
+    let mut face = Face { spot, ..face() };
+    face.layby.pane = pane;
+    face
+}
+
+fn with_tool(overlay: Overlay) -> Face {
+    Face { overlay, ..at(Spot::Bench, Pane::Warnings) }
+}
+
 macro_rules! snapshots {
     ($($claim:ident: $name:literal, $view:expr, $face:expr;)*) => { $(
         #[test]
@@ -77,6 +89,18 @@ snapshots! {
     configurations_are_listed: "configuration", scenes::off_slow(), with(Overlay::Configuration(1));
     a_note_is_typed_below_the_state: "note", scenes::steady(), with(scenes::note());
     other_units_keep_their_columns: "mph", scenes::mph(), face();
+    beside_the_road_the_decision_is_large: "layby", scenes::layby(), at(Spot::Layby, Pane::Warnings);
+    beside_the_road_are_the_segments: "layby-segments", scenes::layby(), at(Spot::Layby, Pane::Segments);
+    beside_the_road_is_the_picture: "layby-picture", scenes::layby(), at(Spot::Layby, Pane::Picture);
+    beside_the_road_without_a_pass_it_says_so: "layby-nothing", scenes::no_speed(), at(Spot::Layby, Pane::Warnings);
+    a_segment_is_looked_into: "segment", scenes::layby(), Face { overlay: Overlay::Segment(7), ..at(Spot::Layby, Pane::Segments) };
+    beside_the_road_in_ascii: "layby-plain", scenes::layby(), Face { plain: true, ..at(Spot::Layby, Pane::Picture) };
+    in_the_workshop_the_first_reason_stands_large: "bench", scenes::bench(), at(Spot::Bench, Pane::Warnings);
+    a_calibration_tells_its_curve_and_how_good_it_is: "calibration", scenes::bench(), with_tool(scenes::calibration());
+    a_leak_test_passes_or_fails_with_its_rate: "leak", scenes::bench(), with_tool(Overlay::Leak(Some(StreamTime::from_micros(729_000_000))));
+    a_hose_is_set_beside_what_the_rig_says: "hose", scenes::bench(), with_tool(scenes::step());
+    help_of_the_layby: "help-layby", scenes::layby(), Face { overlay: Overlay::Help, ..at(Spot::Layby, Pane::Warnings) };
+    leaving_drive_on_the_move_is_asked: "away", scenes::steady(), with(Overlay::Away(Spot::Layby));
     alone_there_is_nothing_to_read: "solo", scenes::held(Kept::OnDisk(12)), Face { solo: true, ..face() };
     alone_trouble_is_still_said: "solo-trouble", scenes::trouble(), Face { solo: true, ..face() };
     plain_draws_ascii: "plain", scenes::held(Kept::OnDisk(12)), Face { plain: true, ..face() };
@@ -84,7 +108,7 @@ snapshots! {
 
 #[test]
 fn at_the_smallest_size_everything_still_has_a_place() {
-    snapshot("trouble", &scenes::trouble(), &face(), &[((60, 18), "60x18")]);
+    snapshot("trouble", &scenes::trouble(), &face(), &[((60, 20), "60x20")]);
 }
 
 #[test]
@@ -170,8 +194,15 @@ fn missing_is_a_dash_and_never_a_nought() {
 #[test]
 fn plain_is_ascii_alone() {
     for view in scenes::all() {
-        let text = text(&view, &Face { plain: true, ..face() }, (100, 30));
-        assert!(text.is_ascii(), "{text}");
+        for (spot, pane) in [
+            (Spot::Drive, Pane::Warnings),
+            (Spot::Layby, Pane::Picture),
+            (Spot::Layby, Pane::Segments),
+            (Spot::Bench, Pane::Warnings),
+        ] {
+            let text = text(&view, &Face { plain: true, ..at(spot, pane) }, (100, 30));
+            assert!(text.is_ascii(), "{text}");
+        }
     }
 }
 
@@ -188,7 +219,7 @@ fn wrong_baud_is_told_in_full_words_at_every_size() {
 #[test]
 fn disk_trouble_has_a_line_of_its_own_at_every_size() {
     for channels in [1, 6, 20, 40] {
-        for size in [(60, 18), (80, 24), (120, 40)] {
+        for size in [(60, 20), (80, 24), (120, 40)] {
             let mut view = scenes::many(channels);
             view.journal.trouble = Some("no space left".into());
             let text = text(&view, &face(), size);
@@ -260,6 +291,12 @@ fn any_overlay() -> impl Strategy<Value = Overlay> {
         Just(Overlay::Quit),
         any::<u32>().prop_map(Overlay::Void),
         any::<u8>().prop_map(|at| Overlay::Configuration(at.into())),
+        any::<u8>().prop_map(|at| Overlay::Correct(at.into(), at.into())),
+        any::<u8>().prop_map(|id| Overlay::Segment(id.into())),
+        Just(scenes::calibration()),
+        Just(scenes::step()),
+        Just(Overlay::Leak(Some(StreamTime::ZERO))),
+        Just(Overlay::Away(Spot::Bench)),
         (word(), proptest::option::of(word()))
             .prop_map(|(text, complaint)| { Overlay::Prompt(Prompt { kind: PromptKind::Note, text, complaint }) }),
     ]
@@ -272,12 +309,16 @@ proptest! {
     fn any_view_at_any_size_draws_without_control_characters(
         view in any_view(),
         overlay in any_overlay(),
-        size in prop_oneof![(1u16..130, 1u16..50), Just((1, 1)), Just((500, 200)), Just((60, 18)), Just((80, 24))],
+        size in prop_oneof![(1u16..130, 1u16..50), Just((1, 1)), Just((500, 200)), Just((60, 20)), Just((80, 24))],
         (plain, solo) in any::<(bool, bool)>(),
+        (spot, pane, turned) in (0usize..3, 0usize..3, any::<usize>()),
         origin in prop_oneof![Just((0u16, 0u16)), (0u16..9, 0u16..9)],
     ) {
         let mut buffer = Buffer::empty(Rect::new(origin.0, origin.1, size.0, size.1));
-        render(&view, &Face { plain, solo, ..with(overlay) }, &mut buffer);
+        let mut face = Face { plain, solo, spot: [Spot::Bench, Spot::Drive, Spot::Layby][spot], ..with(overlay) };
+        face.layby.pane = [Pane::Warnings, Pane::Segments, Pane::Picture][pane];
+        (face.layby.configuration, face.layby.segment, face.layby.warning, face.bench.channel) = (turned, turned, turned, turned);
+        render(&view, &face, &mut buffer);
         for (i, cell) in buffer.content().iter().enumerate() {
             if ratatui::text::Span::raw(cell.symbol()).width() > 1 {
                 prop_assert!((i + 1) % usize::from(size.0) != 0, "a wide sign in the last column");
@@ -300,10 +341,12 @@ proptest! {
 #[test]
 fn a_frame_leaves_no_light_area_at_night() {
     for view in scenes::all() {
-        let mut buffer = Buffer::empty(Rect::new(0, 0, 80, 24));
-        render(&view, &Face { theme: Theme::Night, ..face() }, &mut buffer);
-        for cell in buffer.content() {
-            assert!(contrast::luminance(cell.bg) < 0.05, "ground {:?} under {:?}", cell.bg, cell.symbol());
+        for spot in [Spot::Bench, Spot::Drive, Spot::Layby] {
+            let mut buffer = Buffer::empty(Rect::new(0, 0, 80, 24));
+            render(&view, &Face { theme: Theme::Night, ..at(spot, Pane::Picture) }, &mut buffer);
+            for cell in buffer.content() {
+                assert!(contrast::luminance(cell.bg) < 0.05, "ground {:?} under {:?}", cell.bg, cell.symbol());
+            }
         }
     }
 }

@@ -10,8 +10,8 @@ use crate::config::{Air, Configuration, Setup};
 use crate::hold::Rule;
 use crate::hold::dwell::{Dwell, Interval};
 use crate::session::{
-    AirChange, AirSource, Change, ChannelStatistics, Correction, Direction, End, Entry, Rejected, Remark, Segment, SegmentAir,
-    Session, TapsChange, Void, Zero,
+    AirChange, AirSource, Change, ChannelStatistics, Correction, Direction, End, Entry, Rejected, Remark, Segment,
+    SegmentAir, Session, TapsChange, Void, Zero,
 };
 use crate::signal::Sample;
 use crate::stream::command::{Command, DirectionWord};

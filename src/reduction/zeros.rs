@@ -3,7 +3,7 @@
 //! A zero's own error is common to every pass that rests on it, and does not average out; so each correction says
 //! which zeros it is made of, and with what weight.
 
-use crate::session::{Entry, Session, Zero};
+use crate::session::{Session, Zero};
 use crate::units::StreamTime;
 
 /// A zero correction: its value, and the zeros it is made of.
@@ -24,8 +24,7 @@ pub struct Zeros<'a> {
 impl<'a> Zeros<'a> {
     /// Those of a session.
     pub fn of(session: &'a Session) -> Self {
-        let zeros = session.entries.iter().filter_map(|e| if let Entry::Zero(z) = e { Some(z) } else { None });
-        Self { list: zeros.collect() }
+        Self { list: session.zeros().collect() }
     }
 
     /// All of them.

@@ -93,7 +93,7 @@ fn verdicts(out: &mut String, r: &Reduction, unit: Unit) {
 }
 
 /// What to drive next, and what for.
-fn next_pass(next: &NextPass, r: &Reduction, unit: Unit) -> String {
+pub fn next_pass(next: &NextPass, r: &Reduction, unit: Unit) -> String {
     let drive = format!("Next: drive {} {} at {} km/h", next.configuration, next.direction.word(), next.target_kmh);
     let shown = |cp: f64| pressure(cp * r.at_q_pa, unit);
     match &next.why {

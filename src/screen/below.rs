@@ -1,4 +1,4 @@
-//! Below the channels: how every port is, and what happened last.
+//! Below the channels: how every port is, what happened last, and what to drive next.
 
 use super::canvas::Canvas;
 use super::figures::clock;
@@ -6,8 +6,19 @@ use super::theme::Role;
 use super::{Message, PortHealth, PortState, View, Weight};
 use ratatui::layout::Rect;
 
-/// A row a port where that leaves one for a message, else all ports in one row; messages in the rest.
+/// A message is news for this long, µs of stream time.
+const NEWS_US: i64 = 8_000_000;
+
+/// Ports first, then messages and the plan in the rest.
 pub(super) fn draw(view: &View, canvas: &mut Canvas, mut area: Rect) {
+    let used = draw_ports(view, canvas, area);
+    area.y += used;
+    area.height -= used;
+    draw_messages(view, canvas, area);
+}
+
+/// A row a port where there is room, else all in one; returns the rows used.
+pub(super) fn draw_ports(view: &View, canvas: &mut Canvas, area: Rect) -> u16 {
     let trouble = u16::from(view.journal.trouble.is_some());
     let every_port = view.ports.len() < usize::from(area.height.saturating_sub(trouble));
     let port_rows = if every_port { u16::try_from(view.ports.len()).unwrap_or(0) } else { 1 };
@@ -18,9 +29,7 @@ pub(super) fn draw(view: &View, canvas: &mut Canvas, mut area: Rect) {
     } else {
         draw_ports_in_one(&view.ports, canvas, area.y);
     }
-    area.y += port_rows;
-    area.height -= port_rows;
-    draw_messages(view, canvas, area);
+    port_rows
 }
 
 fn port_words(state: PortState) -> (&'static str, &'static str, Role) {
@@ -32,6 +41,12 @@ fn port_words(state: PortState) -> (&'static str, &'static str, Role) {
         PortState::Lost => ("LOST", "unplugged; it is looked for", Role::Trouble),
         PortState::NoFix => ("NO FIX", "it talks but has no fix", Role::Trouble),
     }
+}
+
+/// What is wrong with a port, and what to look at; none when all is well.
+pub(super) fn port_trouble(port: &PortHealth) -> Option<&'static str> {
+    let (_, meaning, role) = port_words(port.state);
+    (role == Role::Trouble || port.state == PortState::Waiting).then_some(meaning)
 }
 
 fn port_rates(port: &PortHealth) -> String {
@@ -91,10 +106,23 @@ fn draw_messages(view: &View, canvas: &mut Canvas, mut area: Rect) {
         area.y += 1;
         area.height -= 1;
     }
+    // News for a while, then what to drive next; with room both.
+    let news = view.messages.last().is_some_and(|m| view.now.since(m.at) < NEWS_US);
+    if area.height > 1 || (area.height == 1 && !news) {
+        area.height -= 1;
+        draw_plan(view, canvas, area.bottom());
+    }
     let skip = view.messages.len().saturating_sub(usize::from(area.height));
     for (y, message) in (area.y..).zip(view.messages.iter().skip(skip)) {
         draw_message(message, canvas, y);
     }
+}
+
+fn draw_plan(view: &View, canvas: &mut Canvas, y: u16) {
+    let area = canvas.area();
+    let used = canvas.text((area.x + 2, y), 6, "plan ", Role::Quiet);
+    let words = view.plan.as_deref().unwrap_or("all that was wanted is driven: park, and look at Layby");
+    canvas.text((area.x + 2 + used, y), area.width - 3 - used, words, Role::Base);
 }
 
 fn draw_disk(view: &View, canvas: &mut Canvas, y: u16) {

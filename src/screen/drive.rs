@@ -15,7 +15,7 @@ use crate::units::Quantity;
 use ratatui::layout::Rect;
 
 /// Smallest size that shows everything.
-const SMALLEST: (u16, u16) = (60, 18);
+const SMALLEST: (u16, u16) = (60, 20);
 /// Rows above the channels.
 const HEAD_ROWS: u16 = 9;
 /// Rows kept for ports and messages however many channels there are: trouble coming and going moves nothing.
@@ -69,7 +69,7 @@ pub(super) fn draw(view: &View, face: &Face, canvas: &mut Canvas) {
     draw_progress(view, canvas, area.y + 7);
     draw_tag(view, canvas, area.y + 8);
     let bottom = area.bottom() - 1;
-    keys::draw_line(canvas, bottom);
+    keys::draw_line(canvas, face, bottom);
     let room = Rect::new(area.x, area.y + HEAD_ROWS, area.width, area.height - HEAD_ROWS - 1);
     draw_room(view, canvas, room);
 }
@@ -275,7 +275,10 @@ pub(super) fn draw_small(view: &View, face: &Face, canvas: &mut Canvas) {
         Overlay::Help => Some("help is open: Esc".to_string()),
         Overlay::Quit => Some("leave? Enter or Esc".to_string()),
         Overlay::Void(id) => Some(format!("void {id}? Enter or Esc")),
-        Overlay::Configuration(_) => Some("configuration? letter or Esc".to_string()),
+        Overlay::Configuration(_) | Overlay::Correct(..) => Some("configuration? letter or Esc".to_string()),
+        Overlay::Away(_) => Some("the car moves: Tab leaves Drive, Esc".to_string()),
+        Overlay::Segment(id) => Some(format!("segment {id} is open: Esc")),
+        Overlay::Calibration(_) | Overlay::Leak(_) | Overlay::Step(_) => Some("a tool is open: Esc".to_string()),
         Overlay::Prompt(prompt) => Some(format!("text: {}", prompt.text)),
     };
     let needs = format!("steadytap needs {} × {}, this is {} × {}", SMALLEST.0, SMALLEST.1, area.width, area.height);

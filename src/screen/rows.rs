@@ -58,7 +58,10 @@ pub(super) fn draw(view: &View, canvas: &mut Canvas, room: Rect, (least_below, w
     }
     if shown < view.rows.len() && places > 0 {
         let at = cell(shown);
-        canvas.text((at.x + 2, at.y), at.width, &format!("+{} more", view.rows.len() - shown), Role::Strong);
+        let hidden = &view.rows[shown..];
+        let troubled = hidden.iter().any(|row| flag(row).is_some());
+        let (words, role) = if troubled { (" more, look at Bench ", Role::Trouble) } else { (" more", Role::Strong) };
+        canvas.text((at.x + 2, at.y), at.width, &format!("+{}{words}", hidden.len()), role);
     }
     rows
 }

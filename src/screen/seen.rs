@@ -1,11 +1,16 @@
-//! The view of a pipeline: every figure that the Drive screen draws, taken out of the instrument.
+//! The view of a pipeline: every figure that the screens draw, taken out of the instrument.
 
+use super::bench::{Bench, BenchRow};
+use super::figures::Figures;
+use super::findings::Findings;
 use super::{Held, Journal, Kept, Message, PortHealth, Row, Tag, View, Window, WindowState, text};
 use crate::hold::{State, Stretch};
 use crate::pipeline::Pipeline;
+use crate::reduction::plan::Why;
 use crate::session::Segment;
 use crate::units::{Quantity, StreamTime};
 use std::collections::BTreeSet;
+use std::sync::Arc;
 
 /// What the instrument's surroundings add to a view.
 pub struct Surroundings<'a> {
@@ -17,6 +22,10 @@ pub struct Surroundings<'a> {
     pub on_disk: &'a BTreeSet<u32>,
     /// What happened last.
     pub messages: &'a [Message],
+    /// What the session says so far.
+    pub findings: Option<Arc<Findings>>,
+    /// The channel that is looked at in the workshop; none while nobody is there.
+    pub workshop: Option<usize>,
     /// The stream is over.
     pub ended: bool,
 }
@@ -41,6 +50,9 @@ impl View {
             kept: u32::try_from(live.clone().count()).unwrap_or(u32::MAX),
             last_segment: live.map(|s| s.id).max(),
             configurations: setup.outing.configurations.iter().map(|c| (c.letter.clone(), c.name.clone())).collect(),
+            plan: plan(pipeline, around.findings.as_deref()),
+            bench: around.workshop.map(|channel| bench(pipeline, channel, now)),
+            findings: around.findings.clone(),
             zero_age_s: logbook.zero().map(|z| now.since(z.t1) as f64 / 1e6),
             journal: around.journal,
             messages: around.messages.to_vec(),
@@ -167,6 +179,62 @@ fn tag(pipeline: &Pipeline, now: StreamTime) -> Tag {
         pass: logbook.pass(window.target_kmh, stretch),
         wanted: outing.passes,
     }
+}
+
+/// What is still wanted comes first; then what would narrow the widest interval most.
+fn plan(pipeline: &Pipeline, findings: Option<&Findings>) -> Option<String> {
+    let (logbook, outing) = (pipeline.logbook(), &pipeline.setup().outing);
+    let fitted = logbook.configuration();
+    let words = |letter: &str, direction: &str, kmh: f64| {
+        let fit = if letter == fitted { String::new() } else { format!("park and fit {}, then ", text::safe(letter)) };
+        let figures = Figures::of(Quantity::Speed, &outing.show);
+        format!("{fit}drive {} {direction} at {} {}", text::safe(letter), figures.short(kmh), figures.unit())
+    };
+    if let Some(next) = crate::pipeline::plan::next(logbook.segments(), outing, fitted) {
+        let drive = words(&next.configuration, next.direction.word(), next.target_kmh);
+        return Some(format!("{drive}, pass {} of {}", next.pass, outing.passes));
+    }
+    let next = findings?.reduction.as_ref().ok()?.next.as_ref()?;
+    let drive = words(&next.configuration, next.direction.word(), next.target_kmh);
+    Some(match &next.why {
+        Why::NotDriven => format!("{drive}: it has no pass yet"),
+        Why::Narrows { tap, .. } => format!("{drive}: {} is undecided", text::safe(tap)),
+    })
+}
+
+/// What the workshop sees, with the traces of one channel.
+fn bench(pipeline: &Pipeline, marked: usize, now: StreamTime) -> Bench {
+    let setup = pipeline.setup();
+    let zero_of = |i: usize| pipeline.logbook().zero().and_then(|z| z.channels.get(&setup.rig.channels[i].name));
+    let row = |(i, channel): (usize, &crate::config::Channel)| {
+        let seen = row(pipeline, i, None, now);
+        let eye = pipeline.eye(i);
+        let (rate_per_s, noise) = eye.map_or((0.0, None), |e| e.rate_and_noise(now));
+        let newest = eye.and_then(|e| e.fine().next_back());
+        BenchRow {
+            channel: text::safe(&channel.name),
+            tap: pipeline.logbook().taps().get(&channel.name).map(|t| text::safe(t)).unwrap_or_default(),
+            from: text::safe(&format!("{}.{}", channel.port, channel.field)),
+            unit: text::safe(&channel.unit),
+            quantity: channel.quantity,
+            raw: newest.map(|s| s.raw),
+            value: newest.map(|s| s.value),
+            rate_per_s,
+            noise: [noise, zero_of(i).and_then(|s| s.sd)],
+            zero: zero_of(i).map(|s| s.mean).filter(|_| channel.quantity.inside() == "Pa"),
+            lag_s: channel.lag_s,
+            saturated: seen.saturated,
+            stale: seen.stale,
+            stuck: seen.stuck,
+        }
+    };
+    let zero = pipeline.logbook().zero_of(marked.min(setup.rig.channels.len() - 1));
+    let eye = pipeline.eye(marked);
+    let (fine, coarse) = eye.map_or((Vec::new(), Vec::new()), |eye| {
+        let fine = eye.fine().map(|s| [s.at.seconds(), s.raw, s.value - zero]).collect();
+        (fine, eye.coarse().map(|(t, value)| (t, value - zero)).collect())
+    });
+    Bench { rows: setup.rig.channels.iter().enumerate().map(row).collect(), fine, coarse }
 }
 
 fn ports(pipeline: &Pipeline, now: StreamTime) -> Vec<PortHealth> {

@@ -57,6 +57,10 @@ fn toml(path: &Path) -> Found {
         Some(Kind::Rig) => ("rig", config::check_rig(&source)),
         Some(Kind::Car) => ("car", config::check_car(&source)),
         Some(Kind::Outing) => return outing(path),
+        None if source.text.contains("\"keys ") => {
+            let errors = super::keyfile::read(path).err().into_iter().collect();
+            return Found { summary: "file of keys".to_string(), errors, warnings: Vec::new() };
+        }
         // It says what is wrong with the line that should say what the file is.
         None => ("", config::check_outing(&source)),
     };

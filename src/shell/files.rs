@@ -83,6 +83,12 @@ pub fn setup_and_warnings(outing: &Path) -> Result<(Setup, Vec<Trouble>), Vec<Tr
     }
 }
 
+/// The rig file that an outing names.
+pub fn rig_of(outing: &Path) -> Option<PathBuf> {
+    let head = config::outing_head(&source(outing).ok()?).ok()?;
+    Some(outing.parent().unwrap_or(Path::new("")).join(head.rig))
+}
+
 /// Problems of configuration files as a person is told them.
 pub fn troubles(problems: &[config::Problem]) -> Vec<Trouble> {
     problems.iter().map(trouble).collect()

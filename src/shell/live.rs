@@ -6,13 +6,18 @@
 use super::engine::{Arrival, Engine, Outcome};
 use super::feed::{Running, Sender};
 use super::outing::Plan;
+use super::reducer::Reducer;
 use super::{Trouble, terminal};
+use crate::config::Convert;
 use crate::screen::keys::{self, Action};
 use crate::screen::seen::Surroundings;
-use crate::screen::{Journal, Message, View, Weight, messages};
+use crate::screen::{Face, Journal, Message, Overlay, Spot, View, Weight, messages};
 use crate::units::StreamTime;
 use crossterm::event::{Event as TerminalEvent, EventStream};
 use futures_util::StreamExt;
+use std::path::PathBuf;
+use std::sync::Arc;
+use std::sync::atomic::{AtomicUsize, Ordering};
 use std::sync::mpsc::{Receiver, RecvTimeoutError, channel};
 use std::time::{Duration, Instant};
 use tokio::sync::watch;
@@ -34,12 +39,16 @@ const PATIENCE: Duration = Duration::from_secs(1);
 /// [`Trouble`] when the terminal cannot be used, or one of the threads broke (everything kept is on the disk then).
 pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trouble> {
     super::outing::stop_on_signals(running.sender.clone());
-    let desk = Desk::new(engine, running.clock, plan);
+    let face = terminal::face(plan)?;
+    let looked = Arc::new(AtomicUsize::new(NOBODY));
+    let desk = Desk::new(engine, running.clock, plan, looked.clone());
     let (publish, views) = watch::channel(desk.view());
     let keys_to = running.sender.clone();
     let (done, is_done) = channel();
+    let rig = plan.rig.clone();
     let screen = std::thread::spawn(move || {
-        let ended = terminal::guarded(|| screen(views, &keys_to));
+        let window = Window { views, face, looked, rig };
+        let ended = terminal::guarded(|| screen(window, &keys_to));
         keys_to.send(Arrival::Stop);
         let _ = done.send(());
         ended
@@ -59,9 +68,15 @@ pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trou
     drawn.map(|()| engine)
 }
 
+/// Nobody is in the workshop.
+const NOBODY: usize = usize::MAX;
+
 /// The engine and what is told about it.
 struct Desk {
     engine: Engine,
+    reducer: Reducer,
+    /// Channel that is looked at in the workshop.
+    looked: Arc<AtomicUsize>,
     clock: Option<super::clock::StreamClock>,
     shift_us: i64,
     seconds: Option<f64>,
@@ -71,10 +86,13 @@ struct Desk {
 }
 
 impl Desk {
-    fn new(engine: Engine, clock: Option<super::clock::StreamClock>, plan: &Plan) -> Self {
+    fn new(engine: Engine, clock: Option<super::clock::StreamClock>, plan: &Plan, looked: Arc<AtomicUsize>) -> Self {
         let shift_us = engine.shift_us();
         let (messages, outcomes) = (Vec::new(), Vec::new());
-        Self { engine, clock, shift_us, seconds: plan.seconds, messages, outcomes, ended: false }
+        let contents = engine.journal().contents();
+        let header = contents.header.unwrap_or_else(|| super::rehold::header(engine.pipeline().setup(), None));
+        let reducer = Reducer::start(header, contents.entries);
+        Self { engine, reducer, looked, clock, shift_us, seconds: plan.seconds, messages, outcomes, ended: false }
     }
 
     fn now(&self) -> StreamTime {
@@ -126,6 +144,7 @@ impl Desk {
     /// Turns outcomes into messages; true when something happened that must be seen at once.
     fn hear(&mut self) -> bool {
         let news = !self.outcomes.is_empty();
+        self.outcomes.iter().filter_map(|o| o.event.entry()).for_each(|entry| self.reducer.kept(entry));
         self.messages.extend(self.outcomes.drain(..).filter_map(|o| messages::message(&o.event, o.on_disk)));
         let extra = self.messages.len().saturating_sub(MESSAGES);
         self.messages.drain(..extra);
@@ -142,28 +161,48 @@ impl Desk {
             recording: self.engine.recorder().is_some_and(|r| r.trouble().is_none()),
         };
         let on_disk = &self.engine.on_disk;
-        let around = Surroundings { now: self.now(), journal, on_disk, messages: &self.messages, ended: self.ended };
+        let looked = self.looked.load(Ordering::Relaxed);
+        let around = Surroundings {
+            now: self.now(),
+            journal,
+            on_disk,
+            messages: &self.messages,
+            findings: self.reducer.findings(),
+            workshop: (looked != NOBODY).then_some(looked),
+            ended: self.ended,
+        };
         View::of(self.engine.pipeline(), around)
     }
 }
 
-/// Draws views and reads keys until the engine is gone or somebody leaves.
-fn screen(views: watch::Receiver<View>, keys_to: &Sender) -> Result<(), Trouble> {
-    let failed = |e: std::io::Error| Trouble::new(format!("the terminal cannot be used: {e}"));
-    let runtime = tokio::runtime::Builder::new_current_thread().enable_all().build().map_err(failed)?;
-    runtime.block_on(drawing(views, keys_to)).map_err(failed)
+/// What the screen's thread has.
+struct Window {
+    views: watch::Receiver<View>,
+    face: Face,
+    looked: Arc<AtomicUsize>,
+    /// The rig file, for a calibration; none where the rig is built in.
+    rig: Option<PathBuf>,
 }
 
-async fn drawing(mut views: watch::Receiver<View>, keys_to: &Sender) -> std::io::Result<()> {
+/// Draws views and reads keys until the engine is gone or somebody leaves.
+fn screen(window: Window, keys_to: &Sender) -> Result<(), Trouble> {
+    let failed = |e: std::io::Error| Trouble::new(format!("the terminal cannot be used: {e}"));
+    let runtime = tokio::runtime::Builder::new_current_thread().enable_all().build().map_err(failed)?;
+    runtime.block_on(drawing(window, keys_to)).map_err(failed)
+}
+
+async fn drawing(mut window: Window, keys_to: &Sender) -> std::io::Result<()> {
     let mut terminal = terminal::enter()?;
-    let mut face = terminal::face();
     let mut events = Some(EventStream::new());
     loop {
-        let view = views.borrow_and_update().clone();
-        terminal.draw(&view, &face)?;
+        let view = window.views.borrow_and_update().clone();
+        keys::look(&view, &mut window.face);
+        let looked = if window.face.spot == Spot::Bench { window.face.bench.channel } else { NOBODY };
+        window.looked.store(looked, Ordering::Relaxed);
+        terminal.draw(&view, &window.face)?;
         let drawn = tokio::time::Instant::now();
         let event = tokio::select! {
-            changed = views.changed() => {
+            changed = window.views.changed() => {
                 if changed.is_err() {
                     return Ok(());
                 }
@@ -172,19 +211,36 @@ async fn drawing(mut views: watch::Receiver<View>, keys_to: &Sender) -> std::io:
             event = next(&mut events) => event,
         };
         match event {
-            Some(TerminalEvent::Key(key)) => match keys::press(&view, &mut face, key) {
+            Some(TerminalEvent::Key(key)) => match keys::press(&view, &mut window.face, key) {
                 // Stamped by the engine: stream time is only known there.
                 Some(Action::Command(command)) => {
                     keys_to.send(Arrival::Command { at: StreamTime::ZERO, command });
                 }
                 Some(Action::Quit) => return Ok(()),
                 Some(Action::Suspend) => terminal.suspend()?,
+                Some(Action::Calibrate { channel, convert }) => window.calibrated(&channel, &convert),
                 Some(Action::Acknowledge) | None => {}
             },
-            Some(TerminalEvent::Paste(text)) => keys::paste(&mut face, &text),
+            Some(TerminalEvent::Paste(text)) => keys::paste(&mut window.face, &text),
             // A key is answered at once; a view may wait for its frame.
             Some(_) => {}
             None => tokio::time::sleep_until(drawn + FRAME).await,
+        }
+    }
+}
+
+impl Window {
+    /// Writes a calibration, and says in its box what came of it.
+    fn calibrated(&mut self, channel: &str, convert: &Convert) {
+        let told = match &self.rig {
+            None => "the rehearsal's rig is built in: nothing to write to".to_string(),
+            Some(path) => match super::calibration::write(path, channel, convert) {
+                Ok(()) => format!("written to {}; it counts from the next start on", path.display()),
+                Err(trouble) => trouble.what,
+            },
+        };
+        if let Overlay::Calibration(c) = &mut self.face.overlay {
+            c.told = Some(told);
         }
     }
 }

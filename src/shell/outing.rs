@@ -30,6 +30,12 @@ pub struct Plan {
     pub seconds: Option<f64>,
     /// The simulated van: its scripted trouble is no degradation.
     pub rehearsal: bool,
+    /// The rig file, which a calibration is written to; none where the rig is built in.
+    pub rig: Option<PathBuf>,
+    /// A file of keys instead of the one in the configuration directory.
+    pub keys: Option<PathBuf>,
+    /// Draw with ASCII alone.
+    pub plain: bool,
 }
 
 /// How a run ended.

@@ -70,8 +70,11 @@ pub fn guarded<T>(work: impl FnOnce() -> T) -> T {
     result
 }
 
-/// The face that the environment asks for.
-pub fn face() -> Face {
+/// The face that plan and environment ask for.
+///
+/// # Errors
+/// [`Trouble`] when the file of keys cannot be used.
+pub fn face(plan: &super::outing::Plan) -> Result<Face, Trouble> {
     let plain_locale = ["LC_ALL", "LC_CTYPE", "LANG"]
         .iter()
         .find_map(|name| std::env::var(name).ok().filter(|v| !v.is_empty()))
@@ -80,7 +83,8 @@ pub fn face() -> Face {
     let no_colour = dumb || std::env::var("NO_COLOR").is_ok_and(|v| !v.is_empty());
     let theme = if no_colour { Theme::NoColour } else { Theme::default() };
     let overlay = if first_start() { Overlay::Safety } else { Overlay::None };
-    Face { theme, plain: plain_locale || dumb, overlay, ..Face::default() }
+    let bindings = super::keyfile::bindings(plan.keys.as_deref())?;
+    Ok(Face { theme, plain: plan.plain || plain_locale || dumb, overlay, bindings, ..Face::default() })
 }
 
 /// Nobody has seen the cautions yet; from now on somebody has.

@@ -16,9 +16,31 @@ const STUCK_US: i64 = 5_000_000;
 /// Saturation stays visible for this long, µs.
 const SATURATED_US: i64 = 1_000_000;
 
+/// Newest samples that are kept for the workshop.
+const FINE: usize = 4096;
+/// One bin of the long trace, µs, and how many are kept: two minutes.
+const COARSE_STEP_US: i64 = 250_000;
+const COARSE: usize = 480;
+/// Time over which rate and noise are taken, µs.
+const RECENT_US: i64 = 2_000_000;
+
+/// One sample as the workshop looks at it.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Seen {
+    /// When it arrived.
+    pub at: StreamTime,
+    /// The field as it came.
+    pub raw: f64,
+    /// In the unit used inside.
+    pub value: f64,
+}
+
 /// The eye's view of one channel.
 #[derive(Clone, Debug)]
 pub struct Eye {
+    raw: f64,
+    fine: VecDeque<Seen>,
+    coarse: VecDeque<(i64, f64, u32)>,
     damping_us: i64,
     stale_us: i64,
     damped: Option<f64>,
@@ -32,6 +54,9 @@ impl Eye {
     /// The eye on a channel.
     pub fn new(channel: &Channel) -> Self {
         Self {
+            raw: f64::NAN,
+            fine: VecDeque::new(),
+            coarse: VecDeque::new(),
             damping_us: micros(channel.damping_s),
             stale_us: channel.stale_us(),
             damped: None,
@@ -40,6 +65,11 @@ impl Eye {
             saturated: None,
             trace: VecDeque::with_capacity(TRACE_POINTS + 1),
         }
+    }
+
+    /// The field that the next sample is made of.
+    pub fn raw(&mut self, raw: f64) {
+        self.raw = raw;
     }
 
     /// Takes in a sample that arrived at `at`.
@@ -58,19 +88,34 @@ impl Eye {
         if sample.saturated {
             self.saturated = Some(at);
         }
-        let step = at.micros().div_euclid(TRACE_STEP_US);
-        match self.trace.back_mut() {
-            Some((s, sum, n)) if *s == step => {
-                *sum += x;
-                *n += 1;
-            }
-            _ => {
-                self.trace.push_back((step, x, 1));
-                if self.trace.len() > TRACE_POINTS {
-                    self.trace.pop_front();
-                }
-            }
+        self.fine.push_back(Seen { at, raw: self.raw, value: x });
+        if self.fine.len() > FINE {
+            self.fine.pop_front();
         }
+        bin(&mut self.trace, (at.micros().div_euclid(TRACE_STEP_US), TRACE_POINTS), x);
+        bin(&mut self.coarse, (at.micros().div_euclid(COARSE_STEP_US), COARSE), x);
+    }
+
+    /// The newest samples, oldest first.
+    pub fn fine(&self) -> impl DoubleEndedIterator<Item = &Seen> {
+        self.fine.iter()
+    }
+
+    /// Means of a quarter second over the last two minutes: (s, value), oldest first.
+    pub fn coarse(&self) -> impl Iterator<Item = (f64, f64)> {
+        self.coarse
+            .iter()
+            .map(|(step, sum, n)| ((*step as f64 + 0.5) * COARSE_STEP_US as f64 / 1e6, sum / f64::from(*n)))
+    }
+
+    /// Samples a second and their standard deviation, over the last two seconds.
+    pub fn rate_and_noise(&self, now: StreamTime) -> (f64, Option<f64>) {
+        let recent: Vec<f64> =
+            self.fine().rev().take_while(|s| now.since(s.at) <= RECENT_US).map(|s| s.value).collect();
+        let n = recent.len() as f64;
+        let mean = recent.iter().sum::<f64>() / n;
+        let noise = (recent.iter().map(|x| (x - mean).powi(2)).sum::<f64>() / (n - 1.0)).sqrt();
+        (n / (RECENT_US as f64 / 1e6), (n > 1.0).then_some(noise))
     }
 
     /// The damped value; none when nothing ever came.
@@ -109,6 +154,22 @@ impl Eye {
             }
         }
         points
+    }
+}
+
+/// Adds a value to the newest of so many bins.
+fn bin(bins: &mut VecDeque<(i64, f64, u32)>, (step, most): (i64, usize), x: f64) {
+    match bins.back_mut() {
+        Some((s, sum, n)) if *s == step => {
+            *sum += x;
+            *n += 1;
+        }
+        _ => {
+            bins.push_back((step, x, 1));
+            if bins.len() > most {
+                bins.pop_front();
+            }
+        }
     }
 }
 

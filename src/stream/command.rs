@@ -81,10 +81,7 @@ impl Command {
 
     /// It is about a segment by its number, which is another where other dwells are kept.
     fn names_a_segment(&self) -> bool {
-        matches!(
-            self,
-            Self::Void(_) | Self::Restore(_) | Self::CorrectConfiguration(..) | Self::CorrectDirection(..)
-        )
+        matches!(self, Self::Void(_) | Self::Restore(_) | Self::CorrectConfiguration(..) | Self::CorrectDirection(..))
     }
 
     /// Reads the words after `@`.
@@ -111,7 +108,8 @@ impl Command {
             },
             "void" => rest.parse().map(Self::Void).map_err(|_| needs("void", "a segment number")),
             "restore" => rest.parse().map(Self::Restore).map_err(|_| needs("restore", "a segment number")),
-            "correct" => correction(rest).ok_or(needs("correct", "a segment number, then configuration or direction, then what it was")),
+            "correct" => correction(rest)
+                .ok_or(needs("correct", "a segment number, then configuration or direction, then what it was")),
             "configuration" if !rest.is_empty() && !rest.contains(' ') => Ok(Self::Configuration(rest.to_string())),
             "configuration" => Err(needs("configuration", "one letter of the outing")),
             "direction" => direction(rest).map(Self::Direction).ok_or(needs("direction", "out, back, other or auto")),

@@ -3,8 +3,9 @@
 use super::{scenes, text};
 use crossterm::event::{KeyCode, KeyEvent, KeyEventKind, KeyModifiers};
 use scenes::{face, with};
-use steadytap::screen::keys::{Action, Place, TABLE, paste, press};
-use steadytap::screen::{Face, Kept, Overlay, Prompt, PromptKind, View};
+use steadytap::screen::keys::{Action, Bindings, KeyRow, Place, TABLE, look, paste, press};
+use steadytap::screen::layby::Pane;
+use steadytap::screen::{Face, Kept, Overlay, Prompt, PromptKind, Spot, View};
 use steadytap::session::Direction;
 use steadytap::stream::command::{Command, DirectionWord, LONGEST_TEXT};
 use steadytap::units::StreamTime;
@@ -34,27 +35,59 @@ fn prompt(kind: PromptKind, text: &str) -> Overlay {
 }
 
 fn face_at(place: Place) -> Face {
-    with(match place {
-        Place::Drive => Overlay::None,
+    let mut face = with(match place {
+        Place::Bench | Place::Drive | Place::Layby => Overlay::None,
         Place::Help => Overlay::Help,
         Place::Quit => Overlay::Quit,
         Place::Void => Overlay::Void(12),
+        Place::Away => Overlay::Away(Spot::Layby),
         Place::Configuration => Overlay::Configuration(0),
+        Place::Segment => Overlay::Segment(7),
+        Place::Correct => Overlay::Correct(7, 0),
+        Place::Calibration => scenes::calibration(),
+        Place::Leak => Overlay::Leak(None),
+        Place::Step => Overlay::Step(None),
         Place::Prompt => prompt(PromptKind::Note, "gust"),
-    })
+    });
+    face.spot = match place {
+        Place::Bench | Place::Calibration | Place::Leak | Place::Step => Spot::Bench,
+        Place::Layby | Place::Segment | Place::Correct => Spot::Layby,
+        _ => Spot::Drive,
+    };
+    face.layby.pane = Pane::Segments;
+    (face.layby.segment, face.bench.channel) = (3, 2);
+    face
 }
+
+const PLACES: [Place; 14] = [
+    Place::Bench,
+    Place::Drive,
+    Place::Layby,
+    Place::Help,
+    Place::Quit,
+    Place::Void,
+    Place::Away,
+    Place::Configuration,
+    Place::Segment,
+    Place::Correct,
+    Place::Calibration,
+    Place::Leak,
+    Place::Step,
+    Place::Prompt,
+];
 
 #[test]
 fn every_row_of_the_key_table_acts_in_every_place_it_names() {
-    let view = scenes::held(Kept::OnDisk(12));
+    let view = View { last_segment: Some(12), ..scenes::bench() };
     for row in TABLE {
         for place in row.places {
+            assert!(PLACES.contains(place));
             for (code, control) in row.keys {
                 let before = face_at(*place);
                 let mut after = before.clone();
                 let action = press(&view, &mut after, key(*code, *control));
                 after.last_key = None;
-                assert!(action.is_some() || after != before, "{} in {place:?} does nothing", row.shown);
+                assert!(action.is_some() || after != before, "`{}` {} in {place:?} does nothing", row.name, row.does);
             }
         }
     }
@@ -65,20 +98,38 @@ fn no_key_stands_twice_in_one_place() {
     for (i, row) in TABLE.iter().enumerate() {
         for other in &TABLE[i + 1..] {
             let both = row.places.iter().any(|p| other.places.contains(p));
-            assert!(!(both && row.keys.iter().any(|k| other.keys.contains(k))), "{} and {}", row.shown, other.shown);
+            assert!(!(both && row.keys.iter().any(|k| other.keys.contains(k))), "{} and {}", row.does, other.does);
         }
     }
 }
 
 #[test]
 fn every_printed_key_stands_where_it_acts() {
-    let view = scenes::held(Kept::OnDisk(12));
-    for size in [(60, 18), (80, 24), (120, 40)] {
+    let view = scenes::bench();
+    let shown = |row: &KeyRow| Bindings::default().shown(row);
+    for size in [(60, 20), (80, 24), (120, 40)] {
         for row in TABLE.iter().filter(|row| !row.does.is_empty()) {
-            let place = if row.places.contains(&Place::Drive) { Place::Help } else { row.places[0] };
-            let box_text = text(&view, &face_at(place), size);
-            let both = box_text.lines().any(|l| l.contains(row.shown) && l.contains(row.does));
-            assert!(both, "{size:?} misses {} {}\n{box_text}", row.shown, row.does);
+            for place in row.places {
+                let mut face = face_at(*place);
+                if matches!(place, Place::Bench | Place::Drive | Place::Layby) {
+                    face.overlay = Overlay::Help;
+                } else if row.places.contains(&Place::Drive) {
+                    continue;
+                }
+                // A box may fold between words.
+                let frame = text(&view, &face, size);
+                let joined: String = frame
+                    .split(|c: char| c.is_whitespace() || c == '│')
+                    .filter(|w| !w.is_empty())
+                    .collect::<Vec<_>>()
+                    .join(" ");
+                assert!(
+                    joined.contains(&format!("{} {}", shown(row), row.does)),
+                    "{size:?} {place:?} misses {} {}\n{frame}",
+                    shown(row),
+                    row.does
+                );
+            }
         }
     }
 }
@@ -281,4 +332,82 @@ fn any_key_closes_the_cautions_and_acts_all_the_same() {
     let mut face = with(Overlay::Safety);
     assert_eq!(letter(&view, &mut face, 'x'), None);
     assert_eq!(face.overlay, Overlay::None);
+}
+
+#[test]
+fn drive_is_left_on_the_move_only_when_asked_twice_and_alone_never() {
+    let moving = scenes::steady();
+    let mut face = face();
+    tap(&moving, &mut face, KeyCode::Tab);
+    assert_eq!((face.spot, &face.overlay), (Spot::Drive, &Overlay::Away(Spot::Layby)));
+    tap(&moving, &mut face, KeyCode::Tab);
+    assert_eq!((face.spot, &face.overlay), (Spot::Layby, &Overlay::None));
+    let mut alone = Face { solo: true, ..super::face() };
+    tap(&moving, &mut alone, KeyCode::Tab);
+    assert_eq!((alone.spot, &alone.overlay), (Spot::Drive, &Overlay::None));
+    let mut parked = super::face();
+    tap(&scenes::layby(), &mut parked, KeyCode::Tab);
+    assert_eq!(parked.spot, Spot::Layby);
+    tap(&scenes::layby(), &mut parked, KeyCode::BackTab);
+    assert_eq!(parked.spot, Spot::Drive);
+}
+
+#[test]
+fn a_segment_is_corrected_voided_restored_and_noted_on() {
+    let view = scenes::layby();
+    let at = || face_at(Place::Segment);
+    let mut face = at();
+    letter(&view, &mut face, 'c');
+    assert_eq!(letter(&view, &mut face, 'b'), command(Command::CorrectConfiguration(7, "B".into())));
+    let way = view.findings.as_ref().unwrap().segments[6].direction;
+    assert_eq!(way, Direction::Out);
+    assert_eq!(letter(&view, &mut at(), 'd'), command(Command::CorrectDirection(7, Direction::Back)));
+    assert_eq!(letter(&view, &mut at(), 'u'), command(Command::Restore(7)));
+    let mut face = at();
+    letter(&view, &mut face, 'x');
+    assert_eq!(tap(&view, &mut face, KeyCode::Enter), command(Command::Void(7)));
+    let mut face = at();
+    letter(&view, &mut face, 'n');
+    "loose".chars().for_each(|c| drop(letter(&view, &mut face, c)));
+    assert_eq!(tap(&view, &mut face, KeyCode::Enter), command(Command::Note("segment 7: loose".into())));
+}
+
+#[test]
+fn a_calibration_waits_until_the_average_stands_still() {
+    let mut face = Face { bench: steadytap::screen::bench::BenchFace { channel: 0 }, ..face_at(Place::Calibration) };
+    let early = View { now: StreamTime::from_micros(749_000_000), ..scenes::bench() };
+    let mut view = early.clone();
+    view.bench.as_mut().unwrap().fine.truncate(100);
+    assert_eq!(tap(&early, &mut face, KeyCode::Enter), None);
+    let points = |face: &Face| match &face.overlay {
+        Overlay::Calibration(c) => (c.points.len(), c.points.last().map(|p| (p.raw.round(), p.reference))),
+        other => panic!("{other:?}"),
+    };
+    look(&view, &mut face);
+    assert_eq!(points(&face).0, 4, "a second is no average");
+    let mut moving = early.clone();
+    moving.bench.as_mut().unwrap().fine.iter_mut().enumerate().for_each(|(i, s)| s[1] += i as f64);
+    look(&moving, &mut face);
+    assert_eq!(points(&face).0, 4, "a figure that moves is no average");
+    look(&early, &mut face);
+    assert_eq!(points(&face), (5, Some((2048.0, 490.0))));
+    letter(&early, &mut face, 'x');
+    assert!(matches!(letter(&early, &mut face, 'w'), Some(Action::Calibrate { channel, .. }) if channel == "p1"));
+}
+
+#[test]
+fn keys_can_be_put_elsewhere_and_clashes_are_told() {
+    let own = Bindings::new([("take", vec!["F5", "Ctrl-t"]), ("mark", vec!["x"])]).expect("good keys");
+    let mut face = Face { bindings: own, ..face() };
+    let view = scenes::held(Kept::No);
+    assert_eq!(letter(&view, &mut face, ' '), None);
+    assert_eq!(tap(&view, &mut face, KeyCode::F(5)), command(Command::Take));
+    assert_eq!(press(&view, &mut face, key(KeyCode::Char('t'), true)), command(Command::Take));
+    assert_eq!(letter(&view, &mut face, 'x'), command(Command::Mark(String::new())));
+    let line = text(&view, &face, (80, 24));
+    assert!(line.lines().last().unwrap().contains("F5 take"), "{line}");
+    let wrong = |name: &str, key: &str| Bindings::new([(name, vec![key])]).unwrap_err().to_string();
+    assert!(wrong("tkae", "x").contains("there is no key named `tkae`"));
+    assert!(wrong("take", "Hyper").contains("`Hyper` is no key"));
+    assert!(wrong("take", "z").contains("both `take` and `zero`"));
 }

@@ -1,6 +1,10 @@
 //! Invented moments of an invented outing with a high-roof van.
 
+use std::sync::Arc;
 use steadytap::config::Show;
+use steadytap::reduction::workshop::{Point, StepResponse};
+use steadytap::screen::bench::{Bench, BenchRow, Calibrating};
+use steadytap::screen::findings::Findings;
 use steadytap::screen::*;
 use steadytap::units::{Quantity, StreamTime};
 
@@ -96,6 +100,9 @@ fn base() -> View {
         kept: 11,
         last_segment: Some(11),
         configurations: vec![("A".into(), "bare doors".into()), ("B".into(), "flaps 120 mm".into())],
+        plan: Some("drive B out at 100.0 km/h, pass 3 of 4".into()),
+        findings: None,
+        bench: None,
         zero_age_s: Some(742.0),
         ended: false,
     }
@@ -234,8 +241,69 @@ pub fn mph() -> View {
     view
 }
 
+/// Parked beside the road with a whole day driven.
+pub fn layby() -> View {
+    let mut view = off_slow();
+    view.window = Window { state: WindowState::TooSlow, speed_kmh: Some(0.0), ..view.window };
+    view.findings = Some(Arc::new(Findings::of(&crate::reduction_meaning::outing(), 1)));
+    (view.kept, view.plan) = (40, None);
+    view
+}
+
+/// In the workshop: five channels, one of them loud; the first one's traces stand still at a raw 2048.
+pub fn bench() -> View {
+    let mut view = layby();
+    let row = |channel: &str, tap: &str, quantity, raw: f64, value: f64| BenchRow {
+        channel: channel.into(),
+        tap: tap.into(),
+        from: format!("gauge.{channel}"),
+        unit: if quantity == Quantity::Speed { "km/h" } else { "Pa" }.into(),
+        quantity,
+        raw: Some(raw),
+        value: Some(value),
+        rate_per_s: 50.0,
+        noise: [Some(0.31), Some(0.30)],
+        zero: (quantity != Quantity::Speed).then_some(-2.4),
+        lag_s: 0.05,
+        saturated: false,
+        stale: false,
+        stuck: false,
+    };
+    let mut rows = vec![
+        row("p1", "base-high", Quantity::Pressure, 2048.0, -2.6),
+        row("p2", "base-low", Quantity::Pressure, 2051.5, 1.4),
+        row("p3", "roof-front", Quantity::Pressure, 2039.0, -8.8),
+        row("q", "", Quantity::DynamicPressure, 12.25, -1.1),
+        row("speed", "", Quantity::Speed, 0.011, 0.0),
+    ];
+    rows[2].noise[0] = Some(2.6);
+    let wobble = |i: i32| 0.2 * f64::from(i % 7 - 3);
+    view.bench = Some(Bench {
+        rows,
+        fine: (0..400).map(|i| [750.0 + 0.0105 * f64::from(i), 2048.0 + wobble(i), -0.2 + 0.1 * wobble(i)]).collect(),
+        coarse: (0..100).map(|i| (729.2 + 0.25 * f64::from(i), 250.0 * (-0.001 * f64::from(i)).exp())).collect(),
+    });
+    view
+}
+
+/// Four points of a straight sensor, 0.5 Pa a count.
+pub fn calibration() -> Overlay {
+    let point = |raw: f64, reference: f64| Point { raw, reference };
+    Overlay::Calibration(Calibrating {
+        points: vec![point(2048.0, 0.0), point(2248.2, 100.0), point(2547.9, 250.0), point(1847.9, -100.0)],
+        text: "490".into(),
+        ..Calibrating::default()
+    })
+}
+
+pub fn step() -> Overlay {
+    Overlay::Step(Some(StepResponse { from_to: [250.0, 0.0], lag_s: 0.12, resolution_s: 0.02 }))
+}
+
 pub fn all() -> Vec<View> {
     vec![
+        layby(),
+        bench(),
         no_speed(),
         off_slow(),
         off_fast(),
