@@ -216,7 +216,7 @@ pub const TABLE: &[KeyRow] = &[
     row("", (&[Place::Leak], &[bare(KeyCode::Enter)]), ("the pressure is held from now", None), begin_leak),
     row("", (&[Place::Prompt], &[bare(KeyCode::Enter)]), ("done", None), submit),
     row("", (TYPED, &[bare(KeyCode::Backspace)]), ("rubs out", None), rub_out),
-    row("", (TYPED, &[(KeyCode::Char('u'), true)]), ("empties", None), start_again),
+    row("", (TYPED, &[(KeyCode::Char('u'), true)]), UNPRINTED, start_again),
     row("", (BOXES, &[bare(KeyCode::Esc)]), ("backs out", None), back_out),
     row("", (NOT_ASKED, &[CTRL_C]), UNPRINTED, ask_quit),
     row("", (EVERYWHERE, &[(KeyCode::Char('z'), true)]), UNPRINTED, |_, _| Some(Action::Suspend)),

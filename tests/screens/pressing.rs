@@ -116,13 +116,14 @@ fn every_printed_key_stands_where_it_acts() {
                 } else if row.places.contains(&Place::Drive) {
                     continue;
                 }
-                // A box may fold between words.
+                // A box may fold between words, and has other things beside it.
                 let frame = text(&view, &face, size);
-                let joined: String = frame
-                    .split(|c: char| c.is_whitespace() || c == '│')
-                    .filter(|w| !w.is_empty())
-                    .collect::<Vec<_>>()
-                    .join(" ");
+                let inside = |line: &str| match (line.find('│'), line.rfind('│')) {
+                    (Some(a), Some(b)) => Some(line[a..b].to_string()),
+                    _ => line.contains('┌').then(|| line.to_string()),
+                };
+                let words: Vec<String> = frame.lines().filter_map(inside).collect();
+                let joined = words.join(" ").replace('│', " ").split_whitespace().collect::<Vec<_>>().join(" ");
                 assert!(
                     joined.contains(&format!("{} {}", shown(row), row.does)),
                     "{size:?} {place:?} misses {} {}\n{frame}",
