@@ -27,3 +27,4 @@ mod simulate_van;
 mod statistics;
 mod torn_session_recovers;
 mod units;
+mod workshop;

@@ -12,6 +12,7 @@ use steadytap::pneumatics::{Gas, Tube, settle_of_lag_s, with_leak};
 use steadytap::reduction::inference::{effective_dof, holm, passes_for, power, t_quantile, t_two_sided_p};
 use steadytap::reduction::probe::{corrected_cp, dynamic_pressure, mach_of, pair, speed_of, total_over_static};
 use steadytap::reduction::wind::{self, Leg};
+use steadytap::reduction::workshop::{self, Point};
 use steadytap::reduction::{air, contour, cores, force, model, sweep, zeros::Zeros};
 use steadytap::session::{ChannelStatistics, Entry, Session, Zero};
 use steadytap::signal::Scaler;
@@ -648,6 +649,38 @@ fn of_calibration(id: &str, i: &Value) -> Value {
                 .into_iter()
                 .map(|p| ratiometric(assumed).scale(actual * (0.2 * p / 1000.0 + 0.5)).0);
             json!({"p_reported_Pa": p.collect::<Vec<_>>()})
+        }
+        "cal-water" => {
+            json!({"rho_kg_m3": numbers(i, "t_C").into_iter().map(workshop::water_density).collect::<Vec<_>>()})
+        }
+        "cal-mano" => {
+            let pa = workshop::water_column(
+                1000.0 * number(i, "height_m"),
+                number(i, "t_C"),
+                number(i, "rho_air"),
+                number(i, "g"),
+            );
+            json!({"p_Pa": pa})
+        }
+        "cal-line" | "cal-quad" => {
+            // The raw figure is the voltage; the quadratic's is less its offset.
+            let offset = i["V_offset"].as_f64().unwrap_or(0.0);
+            let points: Vec<Point> = numbers(i, "V")
+                .into_iter()
+                .zip(numbers(i, "p_Pa"))
+                .map(|(v, reference)| Point { raw: v - offset, reference })
+                .collect();
+            let fit = workshop::calibrate(&points).expect("the points tell a curve");
+            let new: Vec<f64> = numbers(i, "V_new").into_iter().map(|v| v - offset).collect();
+            let t = t_quantile(0.975, points.len() as f64 - fit.coefficients.len() as f64).unwrap();
+            let pressures: Vec<f64> = new.iter().map(|v| fit.at(*v)).collect();
+            let half: Vec<f64> = new.iter().map(|v| fit.prediction_u95(*v).unwrap()).collect();
+            let u: Vec<f64> = half.iter().map(|u95| u95 / t).collect();
+            if id == "cal-line" {
+                return json!({"b0": fit.coefficients[0], "b1": fit.coefficients[1], "s": fit.residual_sd, "p_pred": pressures,
+                    "u_single_reading": u, "U95_single": half});
+            }
+            json!({"b": fit.coefficients, "s": fit.residual_sd, "p_quadratic": fit.straight_p, "p_pred": pressures, "u_single": u})
         }
         "cal-counts" => {
             let counts = scaler("Pa", Convert::Linear { gain: 1.0 / number(i, "scale_per_Pa"), offset: 0.0 });

@@ -165,6 +165,11 @@ fn all_keys() -> Vec<(f64, Command)> {
         (90.0, Command::Void(1)),
         (91.0, Command::Void(1)),
         (92.0, Command::Void(99)),
+        (92.5, Command::Restore(1)),
+        (92.6, Command::Restore(1)),
+        (93.0, Command::CorrectConfiguration(1, "C".to_string())),
+        (93.5, Command::CorrectConfiguration(1, "Q".to_string())),
+        (94.0, Command::CorrectDirection(1, Direction::Other)),
         (110.0, Command::Taps(taps.into())),
         (111.0, Command::Taps([("p1".to_string(), "no-such-tap".to_string())].into())),
         (112.0, Command::Configuration("C".to_string())),
@@ -184,7 +189,20 @@ fn every_key_replays_to_the_same_bytes() {
     assert!(refusals(&outcomes).len() >= 4, "{:?}", refusals(&outcomes));
     let kinds: std::collections::BTreeSet<String> =
         read(&driven).entries.iter().filter_map(|e| codec::encode(e).split('"').nth(3).map(str::to_string)).collect();
-    for kind in ["zero", "segment", "void", "mark", "note", "configuration", "direction", "taps", "air", "end"] {
+    for kind in [
+        "zero",
+        "segment",
+        "void",
+        "restore",
+        "correct",
+        "mark",
+        "note",
+        "configuration",
+        "direction",
+        "taps",
+        "air",
+        "end",
+    ] {
         assert!(kinds.contains(kind), "{kind} among {kinds:?}");
     }
     let found = rehold_to(&setup, &dir.path().join("a.record"), &again, true);

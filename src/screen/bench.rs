@@ -9,8 +9,10 @@ use super::figures::Figures;
 use super::layby::folded;
 use super::theme::Role;
 use super::{Face, View, below, keys};
+use crate::config::Air;
+use crate::reduction::air::density;
 use crate::reduction::workshop::{self, Calibration, Decay, LEAK_ALLOWED, Point, StepResponse};
-use crate::units::{Quantity, StreamTime};
+use crate::units::{PRESSURES, Quantity, STANDARD_GRAVITY, StreamTime, Unit};
 use ratatui::layout::Rect;
 
 /// Where the eye is in this place.
@@ -27,6 +29,8 @@ pub struct Bench {
     pub rows: Vec<BenchRow>,
     /// The marked channel's newest samples: s, raw, value less its zero.
     pub fine: Vec<[f64; 3]>,
+    /// The air as stated, for a water column.
+    pub air: Option<Air>,
     /// Its last two minutes by quarter seconds: s, value less its zero.
     pub coarse: Vec<(f64, f64)>,
 }
@@ -105,6 +109,16 @@ impl Calibrating {
         // Halves that differ by more than their own scatter allows are still moving.
         let allowed = 4.0 * sd * (2.0 / half as f64).sqrt() + 1e-9 * a.abs();
         ((a - b).abs() <= allowed.max(0.05 * sd)).then(|| mean(&recent))
+    }
+
+    /// What was typed, in a channel's unit: a figure in that unit, or millimetres of a water column with `mm` behind it.
+    pub fn typed(&self, unit: &str, air: Option<&Air>) -> Option<f64> {
+        let text = self.text.trim();
+        let figure = |text: &str| text.trim().parse::<f64>().ok().filter(|x| x.is_finite());
+        let Some(height) = text.strip_suffix("mm") else { return figure(text) };
+        let air = air.copied().unwrap_or(Air::STANDARD);
+        let pa = workshop::water_column(figure(height)?, air.temperature_c, density(&air), STANDARD_GRAVITY);
+        Unit::find(PRESSURES, unit).map(|unit| unit.from_inside(pa))
     }
 
     /// A pending point is taken once it stands still.
@@ -282,7 +296,13 @@ pub(super) fn calibration_lines(view: &View, face: &Face, c: &Calibrating) -> Ve
     let Some((bench, row)) = marked(view, face) else { return Vec::new() };
     let raw = bench.fine.last().map_or("—".to_string(), |s| shortest(s[1]));
     let mut lines = vec![
-        (format!("give a steady reference to {} and type what it is, in {}", row.channel, row.unit), Role::Base),
+        (
+            format!(
+                "give a steady reference to {} and type what it is, in {}; 35.2mm is a water column",
+                row.channel, row.unit
+            ),
+            Role::Base,
+        ),
         (format!("raw {raw}   reference > {}", c.text), Role::Strong),
     ];
     match (&c.pending, &c.told) {

@@ -234,7 +234,8 @@ fn bench(pipeline: &Pipeline, marked: usize, now: StreamTime) -> Bench {
         let fine = eye.fine().map(|s| [s.at.seconds(), s.raw, s.value - zero]).collect();
         (fine, eye.coarse().map(|(t, value)| (t, value - zero)).collect())
     });
-    Bench { rows: setup.rig.channels.iter().enumerate().map(row).collect(), fine, coarse }
+    let air = Some(pipeline.logbook().stated_air());
+    Bench { air, rows: setup.rig.channels.iter().enumerate().map(row).collect(), fine, coarse }
 }
 
 fn ports(pipeline: &Pipeline, now: StreamTime) -> Vec<PortHealth> {

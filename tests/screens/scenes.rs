@@ -281,6 +281,7 @@ pub fn bench() -> View {
     view.bench = Some(Bench {
         rows,
         fine: (0..400).map(|i| [750.0 + 0.0105 * f64::from(i), 2048.0 + wobble(i), -0.2 + 0.1 * wobble(i)]).collect(),
+        air: None,
         coarse: (0..100).map(|i| (729.2 + 0.25 * f64::from(i), 250.0 * (-0.001 * f64::from(i)).exp())).collect(),
     });
     view

@@ -131,7 +131,7 @@ pub(super) fn type_in(face: &mut Face, c: char) -> Option<Action> {
                 prompt.text.push(c);
             }
         }
-        Overlay::Calibration(c2) if matches!(c, '0'..='9' | '.' | '-' | '+' | 'e') && c2.text.len() < 16 => {
+        Overlay::Calibration(c2) if matches!(c, '0'..='9' | '.' | '-' | '+' | 'e' | 'm') && c2.text.len() < 16 => {
             c2.text.push(c)
         }
         _ => {}
@@ -320,10 +320,12 @@ pub(super) fn calibrate(_: &View, face: &mut Face) -> Option<Action> {
 }
 
 pub(super) fn reference(view: &View, face: &mut Face) -> Option<Action> {
+    let bench = view.bench.as_ref()?;
+    let unit = &bench.rows.get(face.bench.channel)?.unit;
     if let Overlay::Calibration(c) = &mut face.overlay {
-        match c.text.parse::<f64>().ok().filter(|x| x.is_finite()) {
+        match c.typed(unit, bench.air.as_ref()) {
             Some(value) => (c.pending, c.told) = (Some((value, view.now)), None),
-            None => c.told = Some("type what the reference shows first, as 250 or -98.07".to_string()),
+            None => c.told = Some("type what the reference shows first, as 250, -98.07 or 35.2mm".to_string()),
         }
         c.text.clear();
     }
