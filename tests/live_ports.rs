@@ -637,3 +637,65 @@ fn the_screen_on_live_ports_tells_a_wrong_speed_and_a_pulled_cable() {
     assert_eq!(status, 3, "{}", screen.contents());
     given_back(&sent, &screen);
 }
+
+/// The van's own passenger drives the day; the one beside the road goes through all places, corrects and restores a segment, and Layby
+/// says of every tap what the session reduces to.
+#[test]
+fn a_passenger_goes_through_all_places_and_layby_says_what_the_session_reduces_to() {
+    let mut terminal = Terminal::start(&["rehearse", "--fast", "max"], &[]);
+    terminal.wait_to_see(&["the stream is over"]);
+    let tab = |terminal: &mut Terminal, place: &str| {
+        terminal.press("\t");
+        terminal.wait_to_see(&[place]);
+    };
+    tab(&mut terminal, "LAYBY");
+    terminal.press("v");
+    terminal.wait_to_see(&["segments"]);
+    terminal.press("\r");
+    terminal.wait_to_see(&["configuration was another"]);
+    terminal.press("d");
+    wait_for("the correction", || terminal.screen().contains(" back ").then_some(()));
+    terminal.press("x");
+    terminal.wait_to_see(&["no longer counts"]);
+    terminal.press("\r");
+    terminal.wait_to_see(&["VOID"]);
+    terminal.press("\r");
+    terminal.wait_to_see(&["counts again"]);
+    terminal.press("u\x1b");
+    wait_for("the segment again", || (!terminal.screen().contains("VOID")).then_some(()));
+    tab(&mut terminal, "BENCH");
+    terminal.wait_to_see(&["gauge"]);
+    tab(&mut terminal, "too");
+    tab(&mut terminal, "LAYBY");
+    std::thread::sleep(Duration::from_millis(600));
+    let seen = terminal.screen();
+    terminal.press("q\r");
+    let (status, sent, _, _home) = terminal.end();
+    assert_eq!(status, 0);
+    let path = sent.lines().rev().find_map(|line| line.strip_prefix("session ")).unwrap().trim().to_string();
+    let session = read(Path::new(&path));
+    let kinds = |is: fn(&Entry) -> bool| session.entries.iter().filter(|e| is(e)).count();
+    assert_eq!(kinds(|e| matches!(e, Entry::Void(_))), 1);
+    assert_eq!(kinds(|e| matches!(e, Entry::Restore(_))), 1);
+    assert_eq!(kinds(|e| matches!(e, Entry::Correct(_))), 1);
+    let r = steadytap::reduction::reduce(&[session], &Default::default()).unwrap();
+    let mut rows = 0;
+    for c in r.comparisons.iter().filter(|c| c.target_kmh == r.at_kmh && c.configuration == "B") {
+        let word = match (c.verdict.word(), c.passes_needed) {
+            ("changed", _) => "changed".to_string(),
+            ("no-change", _) => "no change".to_string(),
+            (_, Some(n)) => format!("{n} more"),
+            _ => "undecided".to_string(),
+        };
+        let line = seen
+            .lines()
+            .find(|l| l.contains(&c.tap) && l.matches('±').count() == 2)
+            .unwrap_or_else(|| panic!("{}\n{seen}", c.tap));
+        let first = line.split('±').nth(1).unwrap();
+        assert!(first.contains(&word), "{} is {word}, Layby says {line}", c.tap);
+        let figure = format!("{:.1}", (c.delta.value * r.at_q_pa).abs());
+        assert!(line.split('±').next().unwrap().contains(&figure), "{figure} in {line}");
+        rows += 1;
+    }
+    assert_eq!(rows, 5, "{seen}");
+}

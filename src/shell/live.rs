@@ -132,8 +132,10 @@ impl Desk {
         match arrival {
             Arrival::Stop => return true,
             Arrival::End => {
+                self.hear();
                 self.ended = true;
-                let (at, text) = (self.now(), "the stream is over: q leaves and prints the reduction".to_string());
+                let (at, text) =
+                    (self.now(), "the stream is over: Tab shows Layby, q leaves and prints the reduction".to_string());
                 self.messages.push(Message { at, weight: Weight::Quiet, text });
             }
             arrival => self.engine.take(arrival, &mut self.outcomes),
