@@ -84,6 +84,11 @@ impl Quadratic {
         (c.transpose() * &self.covariance * &c)[(0, 0)].max(0.0).sqrt()
     }
 
+    /// Half-width of the 95 % band at a setting, by the scatter of the passes; none where it is not finite.
+    pub fn u95(&self, x: f64) -> Option<f64> {
+        Some(self.t() * self.se(x)).filter(|u| u.is_finite())
+    }
+
     fn t(&self) -> f64 {
         t_quantile(1.0 - ALPHA / 2.0, self.dof as f64).unwrap_or(f64::INFINITY)
     }
