@@ -42,7 +42,7 @@ fn cps(letter: usize) -> [f64; 4] {
     [high, -0.18, -0.45, 0.30]
 }
 
-fn outing() -> Session {
+pub fn outing() -> Session {
     let mut made = setup(TAPS, &LETTERS);
     let height = |name: &str| Channel {
         name: name.to_string(),

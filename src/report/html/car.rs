@@ -44,23 +44,25 @@ pub(super) fn section(sheet: &Sheet<'_>) -> Markup {
         r.levels.iter().position(same).map(|i| (sheet.level(i), false))
     };
     let baseline = sheet.fitted(&r.baseline);
-    figures.push((format!("{baseline}: pressures"), false, arrows(&taps, level)));
+    figures.push((format!("{baseline}: pressures"), arrows(&taps, level)));
     for group in sheet.groups().iter().filter(|g| g.target_kmh == target) {
         let change = |tap: &str| {
             let i = group.of.iter().find(|i| r.comparisons[**i].tap == tap)?;
             Some((sheet.change(*i), r.comparisons[*i].verdict != Verdict::Changed))
         };
         let title = format!("{} against {baseline}: differences", sheet.fitted(group.configuration));
-        figures.push((title, true, arrows(&taps, change)));
+        figures.push((title, arrows(&taps, change)));
     }
-    figures.retain(|(_, _, arrows)| !arrows.is_empty());
+    figures.retain(|(_, arrows)| !arrows.is_empty());
     html! {
         section aria-labelledby="car" {
             h2 #car { "On the car" }
             @if !figures.is_empty() {
-                p.soft { "The car from its side, front to the left, from passes driven at " (target) " km/h, pressures " (sheet.at()) ". Taps stand where the car file \
-                          has them; the wheels are for orientation (the wheelbase is the file's, their size is not)." }
-                div.figures { @for (title, difference, arrows) in &figures { (drawing(sheet, title, *difference, arrows)) } }
+                p.soft { "From passes driven at " (target) " km/h, pressures " (sheet.at()) ". The car from its side, front to the left; taps stand where the car file has them. \
+                          A head away from the body is suction, or a pressure that fell (blue); a head on the body is pressure, or one that rose (orange). Broken and open: \
+                          not told from no change. A ring: the tap faces sideways, with a dot for an arrow away from the body, a cross for one onto it." }
+                p.soft { (outline_words(sheet)) " The wheels are for orientation: the wheelbase is the car file's, their size is not." }
+                div.figures { @for (title, arrows) in &figures { (drawing(sheet, title, arrows)) } }
             }
             (levels(sheet))
         }
@@ -99,14 +101,14 @@ impl View {
     }
 }
 
-fn drawing(sheet: &Sheet<'_>, title: &str, difference: bool, arrows: &[Arrow<'_>]) -> Markup {
+fn drawing(sheet: &Sheet<'_>, title: &str, arrows: &[Arrow<'_>]) -> Markup {
     let taps = sheet.taps();
     let wheelbase = sheet.car().map_or(0.0, |c| c.wheelbase_m);
     let points: Vec<[f64; 2]> = taps.iter().map(|t| [t.at[0], t.at[2]]).collect();
     let view = View::over(&points, wheelbase);
     let largest = arrows.iter().map(|a| a.figure.value.abs()).fold(0.0, f64::max);
     let body = html! {
-        (outline(sheet, &view, &points))
+        (outline(sheet, &view, &points, wheelbase))
         (line([10.0, view.road], [WIDE - 10.0, view.road], "axis"))
         @for x in [0.0, wheelbase] { (circle(view.at([x, WHEEL_M]), WHEEL_M * view.scale, "wheel")) }
         @for arrow in arrows { (drawn(arrow, &view, largest)) }
@@ -116,31 +118,38 @@ fn drawing(sheet: &Sheet<'_>, title: &str, difference: bool, arrows: &[Arrow<'_>
     let longest = format!("{} {}", sheet.pa(largest), sheet.unit.name);
     let caption = html! {
         strong { (title) } ". "
-        @if difference {
-            "Head away from the body: the pressure fell (blue); head on the body: it rose (orange). Broken and open: not told from no change. "
-        } @else {
-            "Head away from the body: suction (blue); head on the body: pressure (orange). "
-        }
-        "A ring: the tap faces sideways, a dot in it is an arrow away from the body, a cross one onto it. The longest arrow is " (longest) "."
+        "The longest arrow is " (longest) "."
         ol { @for a in arrows { li value=(a.number) { (safe(&a.tap.name)) " " (a.figure) } } }
     };
     // Arrows under the floor need room, the words under the road too.
     figure(&picture(view.road + 24.0, &format!("Side view of the car, {title}"), &body), &caption)
 }
 
-/// The contour, or a broken line round the taps where the car file has none.
-fn outline(sheet: &Sheet<'_>, view: &View, points: &[[f64; 2]]) -> Markup {
+/// The contour's taps, where the car file has three or more of them.
+fn ring_of(sheet: &Sheet<'_>) -> Vec<[f64; 2]> {
     let taps = sheet.taps();
     let names = sheet.car().map_or(&[][..], |c| &c.contour);
-    let ring: Vec<Place> = names
-        .iter()
-        .filter_map(|name| taps.iter().find(|t| &t.name == name))
-        .map(|t| view.at([t.at[0], t.at[2]]))
-        .collect();
+    let places = names.iter().filter_map(|name| taps.iter().find(|t| &t.name == name));
+    places.map(|t| [t.at[0], t.at[2]]).collect()
+}
+
+fn outline_words(sheet: &Sheet<'_>) -> &'static str {
+    if ring_of(sheet).len() > 2 {
+        "The outline joins the taps of the contour."
+    } else {
+        "The broken line goes round taps and wheels and is not the body: the car file has no contour."
+    }
+}
+
+/// The contour, or a broken line round taps and wheels where the car file has none.
+fn outline(sheet: &Sheet<'_>, view: &View, points: &[[f64; 2]], wheelbase_m: f64) -> Markup {
+    let ring: Vec<Place> = ring_of(sheet).into_iter().map(|p| view.at(p)).collect();
     if ring.len() > 2 {
         return shape(&ring, "body");
     }
-    let mut round: Vec<Place> = hull(points).into_iter().map(|p| view.at(p)).collect();
+    let mut points = points.to_vec();
+    points.extend([[-WHEEL_M, WHEEL_M], [wheelbase_m + WHEEL_M, WHEEL_M]]);
+    let mut round: Vec<Place> = hull(&points).into_iter().map(|p| view.at(p)).collect();
     round.extend(round.first().copied());
     curve(&round, "edge")
 }

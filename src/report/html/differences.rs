@@ -21,6 +21,8 @@ pub(super) fn section(sheet: &Sheet<'_>) -> Markup {
         section aria-labelledby="differences" {
             h2 #differences { "Differences from the baseline" }
             @if let Some(axis) = axis(sheet) {
+                p.soft { "◆ changed, ● no change beyond " (sheet.sought()) ", ○ undecided. The bar is the 95 % interval; an arrow at its end says that it goes on. The shaded \
+                          band is " (sheet.sought()) ", the change sought." }
                 div.figures { @for group in sheet.groups() { (of_group(sheet, &group, &axis)) } }
             }
             (table(
@@ -61,10 +63,7 @@ fn of_group(sheet: &Sheet<'_>, group: &Group<'_>, axis: &Axis) -> Markup {
         (line([axis.at(0.0), TOP], [axis.at(0.0), bottom], "axis"))
         @for (k, i) in group.of.iter().enumerate() { (bar(sheet, *i, axis, TOP + ROW * k as f64)) }
     };
-    let caption = html! {
-        strong { (title) } ". ◆ changed, ● no change beyond " (sheet.sought()) ", ○ undecided; the bar is the 95 % interval, an arrow at its end says that it \
-        goes on; the shaded band is " (sheet.sought()) ", the change sought."
-    };
+    let caption = html! { strong { (title) } };
     figure(&picture(bottom + 34.0, &format!("Pressure differences with their intervals: {title}"), &body), &caption)
 }
 

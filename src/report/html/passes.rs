@@ -31,11 +31,16 @@ pub(super) fn section(sheet: &Sheet<'_>) -> Markup {
                 @if sessions == 1 { (wind(sheet)) (drift(sheet)) }
             }
             (table_of_passes(sheet, sessions > 1))
-            (table_of_wind(sheet))
-            (table_of_drift(sheet))
             (each_tap(sheet))
+            (folded("The wind, pair by pair", &table_of_wind(sheet)))
+            (folded("The zeros, channel by channel", &table_of_drift(sheet)))
         }
     }
+}
+
+/// A long table that opens when asked for; on paper it is open.
+fn folded(summary: &str, table: &Markup) -> Markup {
+    html! { @if !table.0.is_empty() { details.paper { summary { (summary) } (table) } } }
 }
 
 fn minutes(t_s: f64) -> f64 {

@@ -163,9 +163,9 @@ pub(super) fn short(name: &str, most: usize) -> String {
 /// A table in a box of its own that scrolls sideways: the page itself never does.
 pub(super) fn table(caption: &str, heads: &[&str], rows: &[Markup]) -> Markup {
     html! {
+        p.caption aria-hidden="true" { (caption) }
         div.scroll tabindex="0" role="region" aria-label=(caption) {
-            table {
-                caption { (caption) }
+            table aria-label=(caption) {
                 thead { tr { @for head in heads { th scope="col" { (head) } } } }
                 tbody { @for row in rows { tr { (row) } } }
             }

@@ -89,8 +89,10 @@ fn rear_face(sheet: &Sheet<'_>, group: &Group<'_>) -> Markup {
     let cd = Figure::new(&b.cd, Look::of("", 4), format!("/base_drag/{i}/cd_base_contribution"), lacks);
     let power = Figure::new(&b.power_w, Look::of("W", 0), format!("/base_drag/{i}/power_w"), lacks);
     html! {
-        p { "For the rear face alone this is a drag coefficient of " (cd) " and a power of " (power) " " (sheet.at()) ", with "
-            (super::tables::base_area(sheet)) "; negative is a saving." }
+        p {
+            "For the rear face alone that is a change of the drag coefficient of " (cd) " and of the power it takes of " (power) " " (sheet.at())
+            "; negative is a saving (" (super::tables::base_area(sheet)) ")."
+        }
     }
 }
 
