@@ -1,7 +1,7 @@
 //! Curves: a swept part's Cp over its setting, and Cp along the contour.
 
 use super::figure::plain;
-use super::sheet::{Sheet, figure};
+use super::sheet::{Sheet, figure, short};
 use super::svg::{Axis, MARKS, Place, WIDE, curve, line, mark, picture, shape};
 use crate::config::Tap;
 use crate::reduction::sweep::{Interval, SweepRow};
@@ -12,6 +12,8 @@ use maud::{Markup, html};
 const TOP: f64 = 22.0;
 const BOTTOM: f64 = 190.0;
 const FIELD: Place = [52.0, WIDE - 12.0];
+/// Characters of a parameter's name in the picture.
+const NAME: usize = 32;
 /// Points of a drawn curve.
 const STEPS: usize = 48;
 
@@ -55,7 +57,7 @@ fn swept(row: &SweepRow) -> Markup {
     let body = html! {
         @if !ring.is_empty() { (shape(&ring, "band")) }
         (y.beside(FIELD, "Cp"))
-        (x.below([TOP, BOTTOM], &parameter(row)))
+        (x.below([TOP, BOTTOM], &short(&parameter(row), NAME)))
         g.blue { @if !line_of.is_empty() { (curve(&line_of.iter().map(at).collect::<Vec<_>>(), "stroke")) } }
         (marked(row, &x))
         g.orange { @for (setting, cp) in &row.levels { (mark(0, at(&[*setting, *cp]), "solid")) } }

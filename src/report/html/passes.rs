@@ -296,7 +296,7 @@ fn of_tap(sheet: &Sheet<'_>, tap: &str) -> Option<Markup> {
         sheet.r.passes.iter().enumerate().filter_map(|(i, p)| Some((i + 1, p, cp(p)?))).collect();
     let bottom = TOP + 1.4 * PANEL;
     let y = Axis::over(all.iter().map(|a| a.2), [bottom, TOP])?;
-    let x = Axis::over(all.iter().map(|a| a.0 as f64), FIELD)?;
+    let x = Axis::counting(sheet.r.passes.len(), FIELD);
     let body = html! {
         (y.beside(FIELD, "Cp"))
         (x.below([TOP, bottom], "pass"))

@@ -94,6 +94,7 @@ pub(super) struct Axis {
     high: f64,
     from: f64,
     to: f64,
+    least_step: f64,
 }
 
 impl Axis {
@@ -105,7 +106,12 @@ impl Axis {
             return None;
         }
         let room = if high > low { 0.06 * (high - low) } else { 0.1 * high.abs().max(0.01) };
-        Some(Self { low: low - room, high: high + room, from, to })
+        Some(Self { low: low - room, high: high + room, from, to, least_step: 0.0 })
+    }
+
+    /// Over the whole numbers from 1 to `last`, marked as such.
+    pub(super) fn counting(last: usize, [from, to]: Place) -> Self {
+        Self { low: 0.5, high: last as f64 + 0.5, from, to, least_step: 1.0 }
     }
 
     /// Place of a value; one outside lies at the end.
@@ -121,7 +127,7 @@ impl Axis {
 
     /// Round values on the axis, with their words.
     pub(super) fn ticks(&self) -> Vec<(f64, String)> {
-        let rough = (self.high - self.low) / TICKS;
+        let rough = ((self.high - self.low) / TICKS).max(self.least_step);
         let power = 10f64.powf(rough.log10().floor());
         let step = [1.0, 2.0, 5.0, 10.0].into_iter().map(|s| s * power).find(|s| *s >= rough).unwrap_or(rough);
         let decimals = (-step.log10().floor()).clamp(0.0, 12.0) as usize;
