@@ -38,9 +38,9 @@ pub(super) fn section(sheet: &Sheet<'_>) -> Markup {
     }
 }
 
-/// A long table that opens when asked for; on paper it is open.
+/// A long table that opens when asked for.
 fn folded(summary: &str, table: &Markup) -> Markup {
-    html! { @if !table.0.is_empty() { details.paper { summary { (summary) } (table) } } }
+    html! { @if !table.0.is_empty() { details { summary { (summary) } (table) } } }
 }
 
 fn minutes(t_s: f64) -> f64 {
