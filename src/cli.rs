@@ -137,6 +137,9 @@ struct Reduce {
     /// Session files of one car and baseline
     #[arg(required = true)]
     sessions: Vec<PathBuf>,
+    /// One page of HTML with pictures, tables and methods; - is standard output
+    #[arg(long, value_name = "FILE")]
+    report: Option<PathBuf>,
     /// Tables in long form; - is standard output
     #[arg(long, value_name = "FILE")]
     csv: Option<PathBuf>,
@@ -391,6 +394,7 @@ fn told(found: &rehold::Found, record: &Path) -> Outcome {
 fn reduce_sessions(words: Reduce) -> Outcome {
     let task = reduce::Task {
         sessions: words.sessions,
+        report: words.report,
         csv: words.csv,
         json: words.json,
         at_kmh: words.at,

@@ -16,13 +16,14 @@
 //! | --- | --- | --- | --- |
 //! | 0 | [`units`] | text, trade units | stream time, SI and km/h |
 //! | 0 | [`pneumatics`] | a tube and a volume | delay, bandwidth, settling |
+//! | 0 | [`text`] | foreign strings | strings that are safe to show |
 //! | 1 | [`config`] | rig, car and outing files | a checked [`config::Setup`] |
 //! | 2 | [`session`] | entries, plain data | checksummed lines, and back, damage told |
 //! | 3 | [`stream`] | bytes, record lines | frames, rejected lines, commands |
 //! | 4 | [`signal`] | frames | scaled, lag-shifted samples; what the eye sees |
 //! | 5 | [`hold`] | samples | off, settling, steady, held; full dwells |
 //! | 6 | [`reduction`] | sessions | coefficients, comparisons, verdicts |
-//! | 7 | [`report`] | a reduction | text, CSV, JSON |
+//! | 7 | [`report`] | a reduction | text, CSV, JSON, HTML |
 //! | 8 | [`pipeline`] | inputs, one at a time | events and session entries: live, replay, re-hold |
 //! | 9 | [`screen`] | a pipeline | a drawn frame (observer) |
 //! | 9 | [`simulate`] | a seed | the bytes the ports of an invented van would send |
@@ -47,4 +48,5 @@ pub mod shell;
 pub mod signal;
 pub mod simulate;
 pub mod stream;
+pub mod text;
 pub mod units;

@@ -20,6 +20,7 @@ mod reduction_outings;
 mod reduction_plumbing;
 mod reduction_poor_inputs;
 mod reduction_probe;
+mod report_html;
 mod same_bytes_same_session;
 mod samples_and_readme;
 mod screens;

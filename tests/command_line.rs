@@ -230,6 +230,9 @@ fn nothing_is_overwritten_and_nothing_half_written() {
     desk.refuses("rehold van.record van-outing.toml --csv ./van.record --session x.session", 1, &["overwrite"]);
     desk.refuses("reduce van.session --csv van.session", 1, &["overwrite", "van.session"]);
     desk.refuses("reduce van.session --json ./van.session", 1, &["overwrite"]);
+    desk.refuses("reduce van.session --report ./van.session", 1, &["overwrite"]);
+    desk.refuses("reduce van.session --csv x.csv --json x.json --report nowhere/x.html", 1, &["nowhere/x.html"]);
+    desk.refuses("reduce van.session --csv x --report x", 1, &["two outputs have this name"]);
     desk.refuses("rehold van.record van-outing.toml --csv nowhere/x.csv", 1, &["nowhere/x.csv"]);
     desk.refuses("rehold van.record van-outing.toml --session nowhere/x.session", 1, &["nowhere/x.session"]);
     desk.change("van-outing.toml", "tolerance_kmh = 2.0", "tolerance_kmh = 2.5");

@@ -4,7 +4,7 @@ use std::path::{Path, PathBuf};
 
 /// Rooms from the ground up; `screen` and `simulate` observe and are imported by the shell and the command line alone.
 const LAYERS: [&[&str]; 12] = [
-    &["units", "pneumatics"],
+    &["units", "pneumatics", "text"],
     &["config"],
     &["session"],
     &["stream"],

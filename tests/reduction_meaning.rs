@@ -7,6 +7,7 @@ use crate::reduction_outings::{BINS, Chance, Series, p, segment, session, setup,
 use steadytap::config::{AxleHeight, Channel, Core, Parameter, RideHeight};
 use steadytap::reduction::compare::Estimate;
 use steadytap::reduction::force::Component;
+use steadytap::reduction::sweep::Quadratic;
 use steadytap::reduction::{Options, Reduction, air, reduce};
 use steadytap::session::{Direction, Entry, Session};
 use steadytap::units::Quantity;
@@ -244,4 +245,17 @@ fn a_sweep_finds_its_curve_its_best_setting_and_where_it_gets_worth_knowing() {
     assert!(low < 101.5 && 101.5 < high && high - low < 20.0 && open == [false; 2], "{crossing:?}");
     let still = r.sweeps.iter().find(|s| s.tap == "tap-2").expect("a sweep");
     assert!(still.crossing.is_none());
+}
+
+/// A curve that rises and falls again crosses a level twice: both the setting and its interval are of the first time. 4 x (1 − x) = 0.75 at ¼ and ¾, by hand.
+#[test]
+fn a_crossing_lies_in_its_interval() {
+    for sign in [1.0, -1.0] {
+        let covariance = nalgebra::DMatrix::from_diagonal_element(3, 3, 1e-6);
+        let curve = Quadratic { b: [0.0, 4.0 * sign, -4.0 * sign], covariance, dof: 20 };
+        let at = curve.crossing(0.75 * sign, [0.0, 1.0]).expect("it gets there");
+        assert!((at - 0.25).abs() < 1e-12, "{at}");
+        let ([low, high], _) = curve.crossing_interval(0.75 * sign, [0.0, 1.0]).expect("a band");
+        assert!(low < at && at < high, "{at} in {low} to {high}");
+    }
 }

@@ -11,7 +11,7 @@ use steadytap::units::{StreamTime, micros};
 
 const BOTH: [Direction; 2] = [Direction::Out, Direction::Back];
 
-fn day() -> Day {
+pub fn day() -> Day {
     Day {
         taps: 3,
         letters: vec!["A", "B"],

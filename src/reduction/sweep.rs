@@ -84,11 +84,16 @@ impl Quadratic {
         (c.transpose() * &self.covariance * &c)[(0, 0)].max(0.0).sqrt()
     }
 
+    /// Half-width of the 95 % band at a setting, by the scatter of the passes; none where it is not finite.
+    pub fn u95(&self, x: f64) -> Option<f64> {
+        Some(self.t() * self.se(x)).filter(|u| u.is_finite())
+    }
+
     fn t(&self) -> f64 {
         t_quantile(1.0 - ALPHA / 2.0, self.dof as f64).unwrap_or(f64::INFINITY)
     }
 
-    /// The setting in a range where the curve has a value, if it has one there.
+    /// The lowest setting of a range at which the curve has a value, if it has it there.
     pub fn crossing(&self, level: f64, range: [f64; 2]) -> Option<f64> {
         let [c, b, a] = [self.b[0] - level, self.b[1], self.b[2]];
         let root = b * b - 4.0 * a * c;
@@ -97,7 +102,8 @@ impl Quadratic {
         }
         // The pair of roots without cancellation.
         let q = -0.5 * (b + b.signum() * root.sqrt());
-        [q / a, c / q].into_iter().find(|x| x.is_finite() && (range[0]..=range[1]).contains(x))
+        let within = |x: &f64| x.is_finite() && (range[0]..=range[1]).contains(x);
+        [q / a, c / q].into_iter().filter(within).min_by(f64::total_cmp)
     }
 
     /// Standard error of a crossing by the delta method.

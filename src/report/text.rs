@@ -112,12 +112,12 @@ pub fn next_pass(next: &NextPass, r: &Reduction, unit: Unit) -> String {
 }
 
 /// The first target: the speed at which `resolve_pa` is meant.
-fn first_target(r: &Reduction) -> f64 {
+pub(super) fn first_target(r: &Reduction) -> f64 {
     // resolve = (Pa, Cp) at one speed in ISA air; that speed follows from their ratio.
     crate::reduction::probe::speed_of(crate::reduction::air::ISA_DENSITY, r.resolve.0 / r.resolve.1).round()
 }
 
-fn verdict(c: &Comparison, r: &Reduction, unit: Unit) -> (String, String) {
+pub(super) fn verdict(c: &Comparison, r: &Reduction, unit: Unit) -> (String, String) {
     let x = pressure(r.resolve.1 * r.at_q_pa, unit);
     let words = match c.verdict {
         Verdict::Changed if c.delta.value.abs() < r.resolve.1 => format!("changed, by less than {x} {}", unit.name),
@@ -147,7 +147,7 @@ fn pressure(pa: f64, unit: Unit) -> String {
 }
 
 /// Fixed decimals, unless the figure is so large that it must be nonsense: then its order of magnitude, in as little room.
-fn fixed(x: f64, decimals: usize, signed: bool) -> String {
+pub(super) fn fixed(x: f64, decimals: usize, signed: bool) -> String {
     if !x.is_finite() {
         return "?".to_string();
     }
@@ -160,7 +160,7 @@ fn fixed(x: f64, decimals: usize, signed: bool) -> String {
 }
 
 /// Decimals that show about a tenth of a pascal.
-fn decimals(unit: Unit) -> usize {
+pub(super) fn decimals(unit: Unit) -> usize {
     (1.0 + unit.scale.log10()).round().clamp(0.0, 5.0) as usize
 }
 
@@ -306,7 +306,7 @@ fn meanings(out: &mut String, r: &Reduction) {
 }
 
 /// Where a change becomes worth knowing; an interval that leaves the tested range is open.
-fn reaches(c: &Crossing, unit: &str) -> String {
+pub(super) fn reaches(c: &Crossing, unit: &str) -> String {
     let interval =
         c.interval.map_or("no interval: the curve interpolates".to_string(), |([low, high], [below, above])| {
             let low = if below { "open below".to_string() } else { format!("{low:.1}") };

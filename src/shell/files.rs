@@ -106,15 +106,24 @@ pub fn trouble(problem: &config::Problem) -> Trouble {
 /// # Errors
 /// [`Trouble`] when it cannot be read or its first line cannot be believed.
 pub fn session(path: &Path) -> Result<Session, Trouble> {
+    session_and_sum(path).map(|(session, _)| session)
+}
+
+/// A session file, and the CRC-32C of its bytes.
+///
+/// # Errors
+/// As [`session`].
+pub fn session_and_sum(path: &Path) -> Result<(Session, u32), Trouble> {
     let bytes = read(path, LARGEST_SESSION)?;
     let contents = codec::read(&bytes);
     let why = contents.damage.first().filter(|d| d.line == 1).map(|d| d.what.to_string());
-    contents.session().ok_or_else(|| {
+    let session = contents.session().ok_or_else(|| {
         let why = why.unwrap_or_else(|| "it is empty".to_string());
         Trouble::new(format!("this is no session, or its first line is damaged: {why}"))
             .at(format!("{}:1", path.display()))
             .hint("a session begins with {\"kind\":\"session\",\"schema\":\"steadytap.session/1\"")
-    })
+    })?;
+    Ok((session, codec::sum(&bytes)))
 }
 
 /// Refuses an output that is one of the inputs: it would be lost.
@@ -146,21 +155,67 @@ pub fn write(path: &Path, bytes: &[u8]) -> Result<(), Trouble> {
         };
     }
     // A device or a pipe is written to, never replaced; so is what a link points to.
-    if std::fs::symlink_metadata(path).is_ok_and(|m| !m.is_file()) {
+    if !replaced(path) {
         return OpenOptions::new().write(true).truncate(true).open(path).and_then(|mut f| f.write_all(bytes)).map_err(
             |e| Trouble::new(format!("it cannot be written to: {e}")).at(path.display()).hint("give another place"),
         );
     }
-    let mut partial = path.as_os_str().to_owned();
-    partial.push(format!(".{}.partial", std::process::id()));
-    let partial = PathBuf::from(partial);
-    let written = File::create(&partial)
-        .and_then(|mut file| file.write_all(bytes).and_then(|()| file.sync_all()))
-        .and_then(|()| std::fs::rename(&partial, path));
-    written.map_err(|e| {
-        let _ = std::fs::remove_file(&partial);
-        Trouble::new(format!("the file cannot be written: {e}")).at(path.display()).hint("give another place")
-    })
+    Staged::new(path, bytes)?.put()
+}
+
+/// Writes several files and streams, or none of the files: all are written under other names before the first gets its own.
+///
+/// # Errors
+/// [`Trouble`] when one cannot be written.
+pub fn write_all(outputs: &[(&Path, Vec<u8>)]) -> Result<(), Trouble> {
+    let (files, streams): (Vec<_>, Vec<_>) =
+        outputs.iter().partition(|(path, _)| *path != Path::new("-") && replaced(path));
+    if let Some((path, _)) = files.iter().enumerate().find(|(i, f)| files[..*i].iter().any(|g| g.0 == f.0)).map(|f| f.1)
+    {
+        return Err(Trouble::new("two outputs have this name").at(path.display()).hint("give each a name of its own"));
+    }
+    let staged: Vec<Staged<'_>> =
+        files.into_iter().map(|(path, bytes)| Staged::new(path, bytes)).collect::<Result<_, _>>()?;
+    streams.into_iter().try_for_each(|(path, bytes)| write(path, bytes))?;
+    staged.into_iter().try_for_each(Staged::put)
+}
+
+/// A file of this name would be replaced as a whole: it is none yet, or a plain one.
+fn replaced(path: &Path) -> bool {
+    std::fs::symlink_metadata(path).map_or(true, |m| m.is_file())
+}
+
+/// A whole file under another name, gone again unless it is put in its place.
+struct Staged<'a> {
+    path: &'a Path,
+    partial: PathBuf,
+}
+
+impl<'a> Staged<'a> {
+    fn new(path: &'a Path, bytes: &[u8]) -> Result<Self, Trouble> {
+        let mut partial = path.as_os_str().to_owned();
+        partial.push(format!(".{}.partial", std::process::id()));
+        let staged = Self { path, partial: PathBuf::from(partial) };
+        File::create(&staged.partial)
+            .and_then(|mut file| file.write_all(bytes).and_then(|()| file.sync_all()))
+            .map_err(|e| staged.trouble(&e))?;
+        Ok(staged)
+    }
+
+    fn put(self) -> Result<(), Trouble> {
+        std::fs::rename(&self.partial, self.path).map_err(|e| self.trouble(&e))
+    }
+
+    fn trouble(&self, e: &io::Error) -> Trouble {
+        Trouble::new(format!("the file cannot be written: {e}")).at(self.path.display()).hint("give another place")
+    }
+}
+
+impl Drop for Staged<'_> {
+    fn drop(&mut self) {
+        // Gone already where it was put in its place.
+        let _ = std::fs::remove_file(&self.partial);
+    }
 }
 
 /// Writes a whole new file; an existing one is never touched.

@@ -1,17 +1,19 @@
-//! `reduce`: sessions in, the reduction out as text, CSV and JSON.
+//! `reduce`: sessions in, the reduction out as text, CSV, JSON and HTML.
 
 use super::{Trouble, files};
 use crate::config::Show;
 use crate::reduction::{self, Options, Reduction, ReductionError};
-use crate::report;
+use crate::report::{self, Inputs};
 use crate::session::Session;
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 /// What to reduce, and where the results go.
 #[derive(Clone, Debug, Default)]
 pub struct Task {
     /// Session files, one or more.
     pub sessions: Vec<PathBuf>,
+    /// Where the page of HTML goes.
+    pub report: Option<PathBuf>,
     /// Where the tables go.
     pub csv: Option<PathBuf>,
     /// Where the JSON goes.
@@ -36,20 +38,23 @@ pub fn text(sessions: &[Session], show: &Show) -> Result<String, ReductionError>
 /// # Errors
 /// [`Trouble`] when a session cannot be read, they do not belong together, or an output cannot be written.
 pub fn reduce(task: &Task) -> Result<Vec<String>, Trouble> {
-    files::spares(task.csv.as_deref(), &task.sessions)?;
-    files::spares(task.json.as_deref(), &task.sessions)?;
+    for output in [&task.report, &task.csv, &task.json] {
+        files::spares(output.as_deref(), &task.sessions)?;
+    }
     let mut degraded = Vec::new();
-    let mut sessions = Vec::new();
+    let (mut sessions, mut inputs) = (Vec::new(), Vec::new());
     for path in &task.sessions {
-        let session = files::session(path)?;
-        for damage in &session.damage {
-            degraded.push(format!("{}:{}: left out: {}", path.display(), damage.line, damage.what));
-        }
+        let (session, sum) = files::session_and_sum(path)?;
+        let damage: Vec<String> = session.damage.iter().map(|d| format!("{}: left out: {}", d.line, d.what)).collect();
+        degraded.extend(damage.iter().map(|damage| format!("{}:{damage}", path.display())));
+        let file = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
+        inputs.push(report::Input { file, sum, header: session.header.clone(), damage });
         sessions.push(session);
     }
     let options = Options { at_kmh: task.at_kmh, baseline: task.baseline.clone() };
     let reduction = reduction::reduce(&sessions, &options).map_err(|e| explain(&e, task))?;
-    write(task, &reduction, &sessions[0].header.setup.outing.show)?;
+    let inputs = report::Inputs { version: env!("CARGO_PKG_VERSION").to_string(), sessions: inputs };
+    files::write_all(&outputs(task, &reduction, &inputs))?;
     Ok(degraded)
 }
 
@@ -58,17 +63,21 @@ fn explain(error: &ReductionError, task: &Task) -> Trouble {
     Trouble::new(error.to_string()).at(names.join(", "))
 }
 
-/// The table goes to standard output unless one of the others does.
-fn write(task: &Task, reduction: &Reduction, show: &Show) -> Result<(), Trouble> {
-    let to_stdout = |path: &Option<PathBuf>| path.as_deref() == Some(std::path::Path::new("-"));
-    if !to_stdout(&task.csv) && !to_stdout(&task.json) {
-        files::write(std::path::Path::new("-"), report::text(reduction, show).as_bytes())?;
-    }
+/// What goes where. The table goes to standard output unless one of the others does.
+fn outputs<'a>(task: &'a Task, reduction: &Reduction, inputs: &Inputs) -> Vec<(&'a Path, Vec<u8>)> {
+    let mut all: Vec<(&Path, Vec<u8>)> = Vec::new();
     if let Some(path) = &task.csv {
-        files::write(path, &report::csv(reduction))?;
+        all.push((path, report::csv(reduction)));
     }
     if let Some(path) = &task.json {
-        files::write(path, report::json(reduction).as_bytes())?;
+        all.push((path, report::json(reduction).into_bytes()));
     }
-    Ok(())
+    if let Some(path) = &task.report {
+        all.push((path, report::html(reduction, inputs).into_bytes()));
+    }
+    if !all.iter().any(|(path, _)| *path == Path::new("-")) {
+        let show = &inputs.sessions[0].header.setup.outing.show;
+        all.push((Path::new("-"), report::text(reduction, show).into_bytes()));
+    }
+    all
 }
