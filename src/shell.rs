@@ -7,6 +7,8 @@
 
 pub mod check;
 pub mod clock;
+pub mod cues;
+pub mod ear;
 pub mod engine;
 pub mod feed;
 pub mod files;
@@ -20,6 +22,7 @@ pub mod recorder;
 pub mod reduce;
 pub mod rehold;
 pub mod serial;
+pub mod speaker;
 pub mod terminal;
 pub mod watch;
 

@@ -24,6 +24,7 @@ mod same_bytes_same_session;
 mod samples_and_readme;
 mod screens;
 mod simulate_van;
+mod sound;
 mod statistics;
 mod torn_session_recovers;
 mod units;

@@ -3,9 +3,11 @@
 //! The engine publishes views; the terminal draws the newest when it can, at most twenty times a second. A terminal that is not
 //! drained stops the drawing and nothing else.
 
+use super::ear::Ear;
 use super::engine::{Arrival, Engine, Outcome};
 use super::feed::{Running, Sender};
 use super::outing::Plan;
+use super::speaker::Speaker;
 use super::{Trouble, terminal};
 use crate::screen::keys::{self, Action};
 use crate::screen::seen::Surroundings;
@@ -13,6 +15,7 @@ use crate::screen::{Journal, Message, View, Weight, messages};
 use crate::units::StreamTime;
 use crossterm::event::{Event as TerminalEvent, EventStream};
 use futures_util::StreamExt;
+use std::collections::BTreeMap;
 use std::sync::mpsc::{Receiver, RecvTimeoutError, channel};
 use std::time::{Duration, Instant};
 use tokio::sync::watch;
@@ -34,12 +37,14 @@ const PATIENCE: Duration = Duration::from_secs(1);
 /// [`Trouble`] when the terminal cannot be used, or one of the threads broke (everything kept is on the disk then).
 pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trouble> {
     super::outing::stop_on_signals(running.sender.clone());
-    let desk = Desk::new(engine, running.clock, plan);
+    let speaker = Speaker::start(&BTreeMap::new(), false)?;
+    speaker.mute(plan.mute);
+    let desk = Desk::new(engine, running.clock, plan, Ear::new(speaker.clone()));
     let (publish, views) = watch::channel(desk.view());
     let keys_to = running.sender.clone();
     let (done, is_done) = channel();
     let screen = std::thread::spawn(move || {
-        let ended = terminal::guarded(|| screen(views, &keys_to));
+        let ended = terminal::guarded(|| screen(views, &keys_to, &speaker));
         keys_to.send(Arrival::Stop);
         let _ = done.send(());
         ended
@@ -68,13 +73,14 @@ struct Desk {
     messages: Vec<Message>,
     outcomes: Vec<Outcome>,
     ended: bool,
+    ear: Ear,
 }
 
 impl Desk {
-    fn new(engine: Engine, clock: Option<super::clock::StreamClock>, plan: &Plan) -> Self {
+    fn new(engine: Engine, clock: Option<super::clock::StreamClock>, plan: &Plan, ear: Ear) -> Self {
         let shift_us = engine.shift_us();
         let (messages, outcomes) = (Vec::new(), Vec::new());
-        Self { engine, clock, shift_us, seconds: plan.seconds, messages, outcomes, ended: false }
+        Self { engine, clock, shift_us, seconds: plan.seconds, messages, outcomes, ended: false, ear }
     }
 
     fn now(&self) -> StreamTime {
@@ -106,6 +112,7 @@ impl Desk {
         self.engine.finish(&mut self.outcomes);
         self.hear();
         publish.send_replace(self.view());
+        self.ear.close();
         self.engine
     }
 
@@ -125,20 +132,29 @@ impl Desk {
 
     /// Turns outcomes into messages; true when something happened that must be seen at once.
     fn hear(&mut self) -> bool {
-        let news = !self.outcomes.is_empty();
+        self.ear.hear(&self.outcomes, self.engine.pipeline());
+        self.ear.disk(self.trouble());
+        let sound = self.ear.news().map(|(weight, text)| Message { at: self.now(), weight, text });
+        let news = !self.outcomes.is_empty() || sound.is_some();
+        self.messages.extend(sound);
         self.messages.extend(self.outcomes.drain(..).filter_map(|o| messages::message(&o.event, o.on_disk)));
         let extra = self.messages.len().saturating_sub(MESSAGES);
         self.messages.drain(..extra);
         news
     }
 
+    /// What is wrong with session or record.
+    fn trouble(&self) -> Option<String> {
+        let recorder = || self.engine.recorder().and_then(|r| r.trouble());
+        self.engine.journal().trouble().or_else(recorder).map(crate::screen::text::safe)
+    }
+
     fn view(&self) -> View {
         let journal = self.engine.journal();
         let name = journal.path().file_name().map(|n| n.to_string_lossy().into_owned()).unwrap_or_default();
-        let trouble = journal.trouble().or_else(|| self.engine.recorder().and_then(|r| r.trouble()));
         let journal = Journal {
             file: crate::screen::text::safe(&name),
-            trouble: trouble.map(crate::screen::text::safe),
+            trouble: self.trouble(),
             recording: self.engine.recorder().is_some_and(|r| r.trouble().is_none()),
         };
         let on_disk = &self.engine.on_disk;
@@ -148,13 +164,13 @@ impl Desk {
 }
 
 /// Draws views and reads keys until the engine is gone or somebody leaves.
-fn screen(views: watch::Receiver<View>, keys_to: &Sender) -> Result<(), Trouble> {
+fn screen(views: watch::Receiver<View>, keys_to: &Sender, speaker: &Speaker) -> Result<(), Trouble> {
     let failed = |e: std::io::Error| Trouble::new(format!("the terminal cannot be used: {e}"));
     let runtime = tokio::runtime::Builder::new_current_thread().enable_all().build().map_err(failed)?;
-    runtime.block_on(drawing(views, keys_to)).map_err(failed)
+    runtime.block_on(drawing(views, keys_to, speaker)).map_err(failed)
 }
 
-async fn drawing(mut views: watch::Receiver<View>, keys_to: &Sender) -> std::io::Result<()> {
+async fn drawing(mut views: watch::Receiver<View>, keys_to: &Sender, speaker: &Speaker) -> std::io::Result<()> {
     let mut terminal = terminal::enter()?;
     let mut face = terminal::face();
     let mut events = Some(EventStream::new());
@@ -179,7 +195,8 @@ async fn drawing(mut views: watch::Receiver<View>, keys_to: &Sender) -> std::io:
                 }
                 Some(Action::Quit) => return Ok(()),
                 Some(Action::Suspend) => terminal.suspend()?,
-                Some(Action::Acknowledge) | None => {}
+                Some(Action::Acknowledge) => speaker.acknowledge(),
+                None => {}
             },
             Some(TerminalEvent::Paste(text)) => keys::paste(&mut face, &text),
             // A key is answered at once; a view may wait for its frame.

@@ -30,6 +30,8 @@ pub struct Plan {
     pub seconds: Option<f64>,
     /// The simulated van: its scripted trouble is no degradation.
     pub rehearsal: bool,
+    /// No sound.
+    pub mute: bool,
 }
 
 /// How a run ended.

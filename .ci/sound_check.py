@@ -1,0 +1,283 @@
+"""Plays cues and outings against a private sound server and compares what its monitor hears with the written sounds."""
+
+import array
+import math
+import os
+import pty
+import re
+import select
+import shutil
+import signal
+import statistics
+import subprocess
+import sys
+import threading
+import time
+import wave
+
+BIN, HERE, TMP = sys.argv[1:4]
+RATE = 48000
+SOCKET = f"{TMP}/native"
+ENV = dict(os.environ, PULSE_SERVER=f"unix:{SOCKET}", HOME=TMP, XDG_RUNTIME_DIR=TMP, PULSE_RUNTIME_PATH=f"{TMP}/pulse")
+ENV.pop("DISPLAY", None)
+QUIET = 0.005
+CHILDREN = []
+PASSED = 0
+
+
+def ok(words):
+    global PASSED
+    PASSED += 1
+    print(f"ok: {words}", flush=True)
+
+
+def check(holds, words):
+    if not holds:
+        sys.exit(f"FAILED: {words}")
+
+
+def start_server():
+    words = ["pulseaudio", "-n", "--daemonize=no", "--exit-idle-time=-1", "--use-pid-file=no"]
+    words += ["-L", "module-null-sink sink_name=null rate=48000 channels=1 format=float32le"]
+    words += ["-L", f"module-native-protocol-unix auth-anonymous=1 socket={SOCKET}"]
+    server = subprocess.Popen(words, env=ENV, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL)
+    CHILDREN.append(server)
+    for _ in range(100):
+        if os.path.exists(SOCKET):
+            keep_awake()
+            return server
+        time.sleep(0.05)
+    sys.exit("FAILED: the private sound server did not start")
+
+
+def keep_awake():
+    """Silence without end: a null sink that sleeps wakes late and swallows the beginning of a sound, which no loudspeaker does."""
+    words = ["pacat", "--raw", f"--rate={RATE}", "--channels=1", "--latency-msec=10"]
+    silence = open("/dev/zero", "rb")
+    CHILDREN.append(subprocess.Popen(words, env=ENV, stdin=silence, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL))
+
+
+class Monitor:
+    """Records the null sink; every sample has the time at which it arrived here."""
+
+    def __init__(self):
+        words = ["parec", "-d", "null.monitor", "--format=float32le", f"--rate={RATE}", "--channels=1", "--raw"]
+        words += ["--latency-msec=5", "--process-time-msec=5"]
+        self.process = subprocess.Popen(words, env=ENV, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL, bufsize=0)
+        CHILDREN.append(self.process)
+        self.samples, self.chunks, self.rest = array.array("f"), [], b""
+        threading.Thread(target=self.read, daemon=True).start()
+        # A null sink that has slept renders two seconds ahead before it listens to anybody.
+        for _ in range(100):
+            time.sleep(0.1)
+            if len(self.samples) > RATE:
+                return
+        sys.exit("FAILED: the monitor gives nothing")
+
+    def read(self):
+        while block := self.process.stdout.read(65536):
+            now = time.time()
+            block = self.rest + block
+            whole = len(block) // 4 * 4
+            self.rest = block[whole:]
+            self.chunks.append((len(self.samples), now))
+            self.samples.frombytes(block[:whole])
+
+    def arrived(self, sample):
+        """When the block with this sample arrived."""
+        return max((start, at) for start, at in self.chunks if start <= sample)[1]
+
+    def stop(self):
+        time.sleep(0.3)
+        self.process.terminate()
+        self.process.wait()
+        CHILDREN.remove(self.process)
+        return self
+
+
+def written(word):
+    with wave.open(f"{TMP}/wav/{word}.wav") as file:
+        check(file.getframerate() == RATE and file.getnchannels() == 1, f"{word}.wav is 48 kHz mono")
+        return array.array("f", (s / 32768 for s in array.array("h", file.readframes(file.getnframes()))))
+
+
+def onsets(samples):
+    """First samples of notes: sound after 20 ms of quiet."""
+    found, last = [], -RATE
+    for i, sample in enumerate(samples):
+        if abs(sample) > QUIET:
+            if i - last > RATE // 50:
+                found.append(i)
+            last = i
+    return found
+
+
+def difference(heard, at, template):
+    """Largest difference from a template, wherever its beginning is best laid near `at`.
+
+    A null sink that is rewound for a new stream may lose the first milliseconds of its monitor, in the soft rise: not compared.
+    """
+    points = range(RATE // 50, RATE * 3 // 50, 37)
+
+    def apart(begin):
+        return sum(abs(heard[begin + i] - template[i]) for i in points)
+
+    begins = [b for b in range(at - RATE // 60, at + 3) if b >= 0 and b + len(template) <= len(heard)]
+    if not begins:
+        return math.inf
+    begin = min(begins, key=apart)
+    return max(abs(heard[begin + i] - template[i]) for i in range(RATE // 60, len(template), 3))
+
+
+def recognised(monitor, templates):
+    """Every cue in a recording: (word, its first sample, largest difference)."""
+    found, after = [], 0
+    for at in onsets(monitor.samples):
+        if at < after:
+            continue
+        best = min((difference(monitor.samples, at, t), w) for w, t in templates.items())
+        if best[0] < 0.02:
+            found.append((best[1], at, best[0]))
+            after = at + len(templates[best[1]]) - RATE // 100
+        else:
+            found.append(("?", at, best[0]))
+    return found
+
+
+def amplitude(samples, hz):
+    """Goertzel with a Hann window."""
+    n, turn, s1, s2 = len(samples), 2 * math.pi * hz / RATE, 0.0, 0.0
+    for i, x in enumerate(samples):
+        s1, s2 = x * (0.5 - 0.5 * math.cos(2 * math.pi * i / n)) + 2 * math.cos(turn) * s1 - s2, s1
+    return math.sqrt(max(0.0, s1 * s1 + s2 * s2 - 2 * math.cos(turn) * s1 * s2)) * 4 / n
+
+
+def pitch(samples):
+    return max(range(440, 1100, 2), key=lambda hz: amplitude(samples, hz) + amplitude(samples, 2 * hz))
+
+
+def every_cue(templates):
+    monitor, said, latencies = Monitor(), [], []
+    for _ in range(3):
+        run = subprocess.Popen([BIN, "cues"], env=ENV, stdout=subprocess.PIPE, text=True)
+        said += [(time.time(), line.split()[0]) for line in run.stdout]
+        check(run.wait() == 0, "`cues` plays and exits 0")
+    monitor.stop()
+    heard = recognised(monitor, templates)
+    check([w for w, _, _ in heard] == [w for _, w in said], f"every cue is heard once, in order: {heard}")
+    for (word, at, off), (when, _) in zip(heard, said):
+        latencies.append((monitor.arrived(at) - when) * 1000)
+    for (word, at, off), _ in list(zip(heard, said))[: len(templates)]:
+        part = monitor.samples[at : at + len(templates[word])]
+        notes = onsets(part)
+        hz = [pitch(part[n + RATE // 50 : n + RATE // 20]) for n in notes]
+        level = max(map(abs, part))
+        rms = math.sqrt(sum(s * s for s in part) / len(part))
+        check(500 <= min(hz) and max(hz) <= 1000, f"{word}: fundamentals {hz} Hz")
+        check(0.3 <= level <= 0.81, f"{word}: peak {level:.2f}")
+        print(f"    {word:8} notes at {[round(n * 1000 / RATE) for n in notes]} ms, {hz} Hz, peak {level:.2f}, rms {20 * math.log10(rms):.1f} dBFS, off by {off:.4f}")
+    ok(f"{len(heard)} cues are heard whole and in order")
+    middle, worst = statistics.median(latencies), max(latencies)
+    check(middle < 40 and worst < 150, f"latency median {middle:.1f} ms, largest {worst:.1f} ms")
+    ok(f"from say to the monitor: median {middle:.1f} ms, largest {worst:.1f} ms")
+
+
+class Outing:
+    """A replayed outing on a screen of its own."""
+
+    def __init__(self, name, words, traced=False):
+        self.text, self.trace, self.session = b"", f"{TMP}/{name}.strace", f"{TMP}/{name}.session"
+        command = [BIN, "drive", f"{HERE}/configs/van-outing.toml", "--session", self.session, *words]
+        if traced:
+            command = ["strace", "-f", "-qq", "-ttt", "-T", "-e", "trace=fdatasync", "-o", self.trace, *command]
+        self.pid, self.terminal = pty.fork()
+        if self.pid == 0:
+            os.execvpe(command[0], command, dict(ENV, TERM="xterm-256color", COLUMNS="120", LINES="40"))
+        threading.Thread(target=self.read, daemon=True).start()
+
+    def read(self):
+        try:
+            while block := os.read(self.terminal, 65536):
+                self.text += block
+        except OSError:
+            pass
+
+    def wait_for(self, words, seconds):
+        end = time.time() + seconds
+        while time.time() < end:
+            if words in self.text:
+                return True
+            time.sleep(0.02)
+        return False
+
+    def end(self):
+        return os.waitstatus_to_exitcode(os.waitpid(self.pid, 0)[1])
+
+    def segments(self):
+        with open(self.session) as file:
+            return sum('"kind":"segment"' in line for line in file)
+
+
+def kept_comes_after_the_disk(templates):
+    traced = shutil.which("strace") is not None
+    monitor = Monitor()
+    record = f"{HERE}/sample-streams/van-short.record"
+    outing = Outing("kept", ["--stream", record, "--fast", "4", "--for", "100"], traced)
+    status = outing.end()
+    check(status in (0, 3), f"the outing ends with {status}")
+    monitor.stop()
+    heard = [(w, monitor.arrived(at)) for w, at, _ in recognised(monitor, templates)]
+    kept = [at for word, at in heard if word == "kept"]
+    segments = outing.segments()
+    check(segments > 0 and len(kept) == segments, f"{segments} segments, heard: {heard}")
+    ok(f"a replayed outing: {segments} segments kept, as many kept sounds; {' '.join(w for w, _ in heard)}")
+    if not traced:
+        return print("    strace is not installed: that kept comes after fdatasync is not seen here")
+    pattern = re.compile(r"^\d+ +(\d+\.\d+) .*fdatasync.*= 0 <(\d+\.\d+)>")
+    with open(outing.trace) as file:
+        synced = [float(m[1]) + float(m[2]) for m in map(pattern.match, file) if m]
+    delays = [(at - max([s for s in synced if s <= at], default=-math.inf)) * 1000 for at in kept]
+    # A cue that sounds already is heard to its end first, and a silence stands between two.
+    check(max(delays) < 700, f"kept sounds {delays} ms after the last fdatasync")
+    ok(f"kept sounds {', '.join(f'{d:.1f}' for d in delays)} ms after the fdatasync of its line returned 0")
+
+
+def server_lost_and_found(server, templates):
+    record = f"{HERE}/sample-streams/van-short.record"
+    outing = Outing("lost", ["--stream", record, "--fast", "4", "--for", "130"])
+    check(outing.wait_for(b"settling", 20) or outing.wait_for(b"SETTLING", 5), "the outing runs")
+    server.send_signal(signal.SIGKILL)
+    server.wait()
+    CHILDREN.remove(server)
+    os.unlink(SOCKET)
+    killed = time.time()
+    check(outing.wait_for(b"no sound", 4), "the loss of the server is told on the screen")
+    told = time.time() - killed
+    check(outing.wait_for(b"\x07", 4), "the bell rings")
+    start_server()
+    monitor = Monitor()
+    check(outing.wait_for(b"sound is back", 8), "the server is found again")
+    found = time.time() - killed
+    check(outing.end() in (0, 3), "the outing ends well")
+    monitor.stop()
+    heard = [w for w, _, _ in recognised(monitor, templates)]
+    check("kept" in heard and outing.segments() >= 2, f"heard afterwards: {heard}")
+    ok(f"server killed: told and rung after {told:.1f} s, found again {found:.1f} s after the kill; then {' '.join(heard)}; {outing.segments()} segments kept")
+
+
+def main():
+    words = [name[:-4] for name in os.listdir(f"{TMP}/wav")]
+    templates = {word: written(word) for word in words}
+    check(len(templates) == 10, "ten sounds are written")
+    server = start_server()
+    every_cue(templates)
+    kept_comes_after_the_disk(templates)
+    server_lost_and_found(server, templates)
+    print(f"{PASSED} passed, 0 failed")
+
+
+try:
+    main()
+finally:
+    for child in CHILDREN:
+        child.kill()
