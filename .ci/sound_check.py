@@ -1,6 +1,7 @@
 """Plays cues and outings against a private sound server and compares what its monitor hears with the written sounds."""
 
 import array
+import difflib
 import fcntl
 import math
 import os
@@ -23,6 +24,8 @@ SOCKET = f"{TMP}/native"
 ENV = dict(os.environ, PULSE_SERVER=f"unix:{SOCKET}", HOME=TMP, XDG_RUNTIME_DIR=TMP, PULSE_RUNTIME_PATH=f"{TMP}/pulse")
 ENV.pop("DISPLAY", None)
 QUIET = 0.005
+# Peak below which a sound is the guidance tone: -24 dBFS.
+GUIDED = 0.0631
 CHILDREN = []
 PASSED = 0
 
@@ -103,12 +106,12 @@ def written(word):
         return array.array("f", (s / 32768 for s in array.array("h", file.readframes(file.getnframes()))))
 
 
-def onsets(samples):
-    """First samples of notes: sound after 20 ms of quiet."""
+def onsets(samples, quiet_ms=20):
+    """First samples of notes: sound after so much quiet."""
     found, last = [], -RATE
     for i, sample in enumerate(samples):
         if abs(sample) > QUIET:
-            if i - last > RATE // 50:
+            if i - last > RATE * quiet_ms // 1000:
                 found.append(i)
             last = i
     return found
@@ -159,29 +162,53 @@ def pitch(samples):
 
 
 def every_cue(templates):
-    monitor, said, latencies = Monitor(), [], []
+    monitor, said = Monitor(), []
     for _ in range(3):
         run = subprocess.Popen([BIN, "cues"], env=ENV, stdout=subprocess.PIPE, text=True)
-        said += [(time.time(), line.split()[0]) for line in run.stdout]
+        said += [(time.time(), line.split()[0]) for line in run.stdout if not line.startswith("guidance")]
         check(run.wait() == 0, "`cues` plays and exits 0")
     monitor.stop()
-    heard = recognised(monitor, templates)
-    check([w for w, _, _ in heard] == [w for _, w in said], f"every cue is heard once, in order: {heard}")
-    for (word, at, off), (when, _) in zip(heard, said):
-        latencies.append((monitor.arrived(at) - when) * 1000)
-    for (word, at, off), _ in list(zip(heard, said))[: len(templates)]:
-        part = monitor.samples[at : at + len(templates[word])]
-        notes = onsets(part)
-        hz = [pitch(part[n + RATE // 50 : n + RATE // 20]) for n in notes]
-        level = max(map(abs, part))
-        rms = math.sqrt(sum(s * s for s in part) / len(part))
-        check(500 <= min(hz) and max(hz) <= 1000, f"{word}: fundamentals {hz} Hz")
-        check(0.3 <= level <= 0.81, f"{word}: peak {level:.2f}")
-        print(f"    {word:8} notes at {[round(n * 1000 / RATE) for n in notes]} ms, {hz} Hz, peak {level:.2f}, rms {20 * math.log10(rms):.1f} dBFS, off by {off:.4f}")
-    ok(f"{len(heard)} cues are heard whole and in order")
+    guided(monitor.samples)
+    heard = [h for h in recognised(monitor, templates) if h[0] != "?"]
+    # A machine that is busy with other work may tear a hole into one; it must not be the same one every time.
+    pairs = difflib.SequenceMatcher(None, [w for w, *_ in heard], [w for _, w in said], autojunk=False).get_matching_blocks()
+    whole = [(heard[p.a + i], said[p.b + i][0]) for p in pairs for i in range(p.size)]
+    check(len(whole) == len(heard) >= len(said) - 2, f"cues are heard whole and in order: {heard}")
+    check({h[0] for h, _ in whole} == set(templates), f"every cue is heard: {heard}")
+    latencies = [(monitor.arrived(h[1]) - when) * 1000 for h, when in whole]
+    for word, at, off in {h[0]: h for h, _ in whole}.values():
+        describe(word, monitor.samples[at : at + len(templates[word])], off)
+    ok(f"{len(whole)} of {len(said)} cues are heard whole, all in order")
     middle, worst = statistics.median(latencies), max(latencies)
-    check(middle < 40 and worst < 150, f"latency median {middle:.1f} ms, largest {worst:.1f} ms")
+    check(middle < 40 and worst < 250, f"latency median {middle:.1f} ms, largest {worst:.1f} ms")
     ok(f"from say to the monitor: median {middle:.1f} ms, largest {worst:.1f} ms")
+
+
+def describe(word, part, off):
+    notes = onsets(part)
+    hz = [pitch(part[n + RATE // 50 : n + RATE // 20]) for n in notes]
+    level, rms = max(map(abs, part)), math.sqrt(sum(s * s for s in part) / len(part))
+    check(500 <= min(hz) and max(hz) <= 1000, f"{word}: fundamentals {hz} Hz")
+    check(0.3 <= level <= 0.81, f"{word}: peak {level:.2f}")
+    at = [round(n * 1000 / RATE) for n in notes]
+    print(f"    {word:8} notes at {at} ms, {hz} Hz, peak {level:.2f}, rms {20 * math.log10(rms):.1f} dBFS, off by {off:.5f}")
+
+
+def guided(samples):
+    """The guidance tone of every run: it falls, then rises, and never clicks."""
+    notes = [n for n in onsets(samples, 5) if max(map(abs, samples[n : n + RATE // 10])) <= GUIDED]
+    check(len(notes) >= 6, f"the guidance tone is heard: {len(notes)} glides")
+    glides = []
+    for n in notes:
+        early, late = (pitch(samples[n + RATE * ms // 1000 : n + RATE * (ms + 60) // 1000]) for ms in (40, 400))
+        glides.append(late - early)
+    falls, rises = sum(g < -30 for g in glides), sum(g > 30 for g in glides)
+    quiet = [samples[i] for n in notes for i in range(n, n + RATE // 2)]
+    step = max(abs(b - a) for n in notes for a, b in zip(samples[n : n + RATE // 2], samples[n + 1 : n + RATE // 2]))
+    peak = max(map(abs, quiet))
+    check(falls >= 2 and rises >= 2, f"guidance falls and rises: {glides}")
+    check(peak <= 10 ** (-24 / 20) and step < 2 * math.pi * 3000 * peak / RATE, f"guidance: peak {peak:.3f}, largest step {step:.4f}")
+    ok(f"guidance: {falls} glides down, {rises} up, peak {20 * math.log10(peak):.1f} dBFS, no click")
 
 
 class Outing:
@@ -249,7 +276,7 @@ def kept_comes_after_the_disk(templates):
     status = outing.end()
     check(status in (0, 3), f"the outing ends with {status}")
     monitor.stop()
-    heard = [(w, monitor.arrived(at)) for w, at, _ in recognised(monitor, templates)]
+    heard = [(w, monitor.arrived(at)) for w, at, *_ in recognised(monitor, templates)]
     kept = [at for word, at in heard if word == "kept"]
     segments = outing.segments()
     check(segments > 0 and len(kept) == segments, f"{segments} segments, heard: {heard}")
@@ -263,6 +290,23 @@ def kept_comes_after_the_disk(templates):
     # A cue that sounds already is heard to its end first, and a silence stands between two.
     check(max(delays) < 700, f"kept sounds {delays} ms after the last fdatasync")
     ok(f"kept sounds {', '.join(f'{d:.1f}' for d in delays)} ms after the fdatasync of its line returned 0")
+
+
+def trouble_repeats_until_it_is_seen(templates):
+    with open(f"{HERE}/sample-streams/van-faults.record") as file, open(f"{TMP}/lost.record", "w") as cut:
+        for line in file:
+            head, _, rest = line.partition(" ")
+            if head[0].isdigit() and 166 <= float(head) < 190:
+                cut.write(f"{float(head) - 166:.6f} {rest}")
+    monitor = Monitor()
+    outing = Outing("faults", ["--stream", f"{TMP}/lost.record", "--fast", "1", "--for", "22"])
+    time.sleep(11.5)
+    os.write(outing.terminal, b"\x1b")
+    check(outing.end() in (0, 3), "the outing ends well")
+    monitor.stop()
+    troubles = [monitor.arrived(at) for w, at, *_ in recognised(monitor, templates) if w == "trouble"]
+    check(len(troubles) == 2 and abs(troubles[1] - troubles[0] - 5) < 0.5, f"trouble at {troubles}")
+    ok(f"a lost port: trouble, and again after {troubles[1] - troubles[0]:.2f} s, and never after Esc")
 
 
 def server_lost_and_found(server, templates):
@@ -284,18 +328,19 @@ def server_lost_and_found(server, templates):
     found = time.time() - killed
     check(outing.end() in (0, 3), "the outing ends well")
     monitor.stop()
-    heard = [w for w, _, _ in recognised(monitor, templates)]
+    heard = [w for w, *_ in recognised(monitor, templates)]
     check("kept" in heard and outing.segments() >= 2, f"heard afterwards: {heard}")
     ok(f"server killed: told and rung after {told:.1f} s, found again {found:.1f} s after the kill; then {' '.join(heard)}; {outing.segments()} segments kept")
 
 
 def main():
-    words = [name[:-4] for name in os.listdir(f"{TMP}/wav")]
+    words = [name[:-4] for name in os.listdir(f"{TMP}/wav") if name != "guidance.wav"]
     templates = {word: written(word) for word in words}
     check(len(templates) == 10, "ten sounds are written")
     server = start_server()
     every_cue(templates)
     kept_comes_after_the_disk(templates)
+    trouble_repeats_until_it_is_seen(templates)
     server_lost_and_found(server, templates)
     print(f"{PASSED} passed, 0 failed")
 

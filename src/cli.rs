@@ -173,7 +173,7 @@ struct Cues {
     /// Write them into this directory instead, as 48 kHz 16-bit WAV files; no other file is overwritten
     #[arg(long, value_name = "DIR")]
     write: Option<PathBuf>,
-    /// Only this one: window, steady, held, kept, refused, slow, fast, next, done or trouble
+    /// Only this one: window, steady, held, kept, refused, slow, fast, next, done, trouble or guidance
     #[arg(long, value_name = "WORD")]
     only: Option<String>,
     /// A WAV file of at most 5 s in place of a sound

@@ -4,12 +4,14 @@ use proptest::prelude::*;
 use std::collections::BTreeMap;
 use std::f64::consts::{PI, TAU};
 use std::path::PathBuf;
-use steadytap::session::Direction;
+use steadytap::hold::State;
+use steadytap::pipeline::What;
+use steadytap::session::{Direction, Entry};
 use steadytap::shell::speaker::wav::{self, Wave};
 use steadytap::sound::guidance::{self, Guidance};
 use steadytap::sound::pattern::{Note, length_ms, notes_of};
 use steadytap::sound::queue::Queue;
-use steadytap::sound::{Cue, off_speed, synthesise};
+use steadytap::sound::{Cue, cue_for, off_speed, synthesise};
 
 const RATE: u32 = 48_000;
 
@@ -158,6 +160,57 @@ fn a_sound_has_the_same_length_and_level_at_any_rate() {
 
 fn length_ms_of(cue: Cue) -> u32 {
     length_ms(&notes_of(cue))
+}
+
+// ---------------------------------------------------------------- what makes a sound
+
+/// A whole outing with its lost port, and a command that cannot be done at its end.
+fn outing() -> Vec<steadytap::shell::engine::Outcome> {
+    use steadytap::shell::engine::Arrival;
+    use steadytap::simulate::{Moment, Outing};
+    let (setup, desk) = (crate::same_bytes_same_session::van(), tempfile::tempdir().expect("a directory"));
+    let moments: Vec<Moment> = Outing::new(3).collect();
+    let mut arrivals = crate::same_bytes_same_session::arrivals(&setup, &moments, usize::MAX);
+    let at = moments.last().expect("an outing").at();
+    arrivals.push(Arrival::Command { at, command: steadytap::stream::command::Command::Void(999) });
+    crate::same_bytes_same_session::drive(&setup, &desk.path().join("heard.session"), arrivals)
+}
+
+#[test]
+fn kept_is_heard_for_segments_on_the_disk_and_for_nothing_else() {
+    let (mut kept, mut segments) = (0, 0);
+    for outcome in outing() {
+        let entry = outcome.event.entry();
+        let segment = matches!(entry, Some(Entry::Segment(_)));
+        assert!(outcome.on_disk);
+        assert_eq!(cue_for(&outcome.event, true) == Some(Cue::Kept), segment);
+        assert_ne!(cue_for(&outcome.event, false), Some(Cue::Kept), "{:?}", outcome.event);
+        if entry.is_some() {
+            assert_eq!(cue_for(&outcome.event, false), Some(Cue::Trouble), "an entry is not on the disk");
+        }
+        kept += usize::from(cue_for(&outcome.event, outcome.on_disk) == Some(Cue::Kept));
+        segments += usize::from(segment);
+    }
+    assert!(kept >= 26 && kept == segments, "{kept} kept sounds, {segments} segments");
+}
+
+#[test]
+fn every_thing_that_matters_is_heard_once() {
+    let outcomes = outing();
+    let heard = |cue: Cue| outcomes.iter().filter(|o| cue_for(&o.event, o.on_disk) == Some(cue)).count();
+    let happened = |what: &dyn Fn(&What) -> bool| outcomes.iter().filter(|o| what(&o.event.what)).count();
+    let entry = |kind: &dyn Fn(&Entry) -> bool| happened(&|w| matches!(w, What::Entry(e) if kind(e)));
+    let refused = happened(&|w| matches!(w, What::Refused(_)));
+    let rejected = entry(&|e| matches!(e, Entry::Rejected(_)));
+    let lost = entry(&|e| matches!(e, Entry::Fault(f) if f.what == "lost"));
+    assert!(refused >= 1 && lost >= 1);
+    assert_eq!(heard(Cue::Refused), refused + rejected);
+    assert_eq!(heard(Cue::Trouble), lost);
+    assert_eq!(heard(Cue::Held), happened(&|w| matches!(w, What::Dwell { why, .. } if why.is_empty())));
+    assert_eq!(heard(Cue::Window), happened(&|w| matches!(w, What::Window(State::Settling(_)))));
+    let steady = heard(Cue::Steady);
+    assert!(steady >= 26 && steady <= heard(Cue::Window) && steady <= heard(Cue::Held) + heard(Cue::Window));
+    println!("window {}, steady {steady}, held {}, trouble {lost}", heard(Cue::Window), heard(Cue::Held));
 }
 
 // ---------------------------------------------------------------- told apart

@@ -5,6 +5,7 @@ use super::speaker::bank::{Bank, cue_named};
 use super::speaker::{Speaker, Status, wav};
 use super::{Trouble, files};
 use crate::sound::Cue;
+use crate::sound::guidance::Guidance;
 use std::collections::BTreeMap;
 use std::path::{Path, PathBuf};
 use std::time::Duration;
@@ -27,22 +28,33 @@ const PAUSE: Duration = Duration::from_millis(600);
 /// How long looking for a way to play, or playing one, may take.
 const PATIENCE: Duration = Duration::from_secs(10);
 
+/// The word of the guidance tone, which is no cue.
+const GUIDANCE: &str = "guidance";
+const GUIDANCE_MEANS: &str = "beside the window: a quiet tone, falling while too slow, rising while too fast";
+/// Where the speed is while the tone is learnt: too slow, too fast.
+const GUIDED_AT: [f64; 2] = [-0.4, 0.4];
+/// How long each is heard.
+const GUIDED: Duration = Duration::from_millis(2000);
+/// Time between two renewals.
+const RENEWED: Duration = Duration::from_millis(250);
+
 /// Plays the cues, or writes them.
 ///
 /// # Errors
 /// [`Trouble`] when a word names no cue, or a file cannot be used or written.
 pub fn cues(task: &Task) -> Result<Ending, Trouble> {
-    let cues = match &task.only {
-        Some(word) => vec![cue_named(word)?],
-        None => Cue::ALL.to_vec(),
+    let (cues, guided) = match task.only.as_deref() {
+        Some(GUIDANCE) => (Vec::new(), true),
+        Some(word) => (vec![cue_named(word)?], false),
+        None => (Cue::ALL.to_vec(), true),
     };
     match &task.write {
-        Some(directory) => write(&cues, directory, &task.replacements),
-        None => play(&cues, &task.replacements),
+        Some(directory) => write((&cues, guided), directory, &task.replacements),
+        None => play((&cues, guided), &task.replacements),
     }
 }
 
-fn play(cues: &[Cue], replacements: &BTreeMap<String, PathBuf>) -> Result<Ending, Trouble> {
+fn play((cues, guided): (&[Cue], bool), replacements: &BTreeMap<String, PathBuf>) -> Result<Ending, Trouble> {
     let speaker = Speaker::start(replacements, false)?;
     speaker.wait_until_quiet(PATIENCE);
     for cue in cues {
@@ -53,6 +65,10 @@ fn play(cues: &[Cue], replacements: &BTreeMap<String, PathBuf>) -> Result<Ending
         if matches!(speaker.status(), Status::Playing(_)) {
             std::thread::sleep(PAUSE);
         }
+    }
+    if guided {
+        println!("{GUIDANCE:8} {GUIDANCE_MEANS}");
+        guide(&speaker);
     }
     let status = speaker.status();
     speaker.close(PATIENCE);
@@ -66,7 +82,24 @@ fn play(cues: &[Cue], replacements: &BTreeMap<String, PathBuf>) -> Result<Ending
     })
 }
 
-fn write(cues: &[Cue], directory: &Path, replacements: &BTreeMap<String, PathBuf>) -> Result<Ending, Trouble> {
+/// First too slow, then too fast.
+fn guide(speaker: &Speaker) {
+    let turns = GUIDED.as_millis() / RENEWED.as_millis();
+    for place in GUIDED_AT {
+        for _ in (0..turns).filter(|_| matches!(speaker.status(), Status::Playing(_))) {
+            speaker.guide(Some(place));
+            std::thread::sleep(RENEWED);
+        }
+        speaker.guide(None);
+        std::thread::sleep(RENEWED);
+    }
+}
+
+fn write(
+    (cues, guided): (&[Cue], bool),
+    directory: &Path,
+    replacements: &BTreeMap<String, PathBuf>,
+) -> Result<Ending, Trouble> {
     std::fs::create_dir_all(directory).map_err(|e| {
         Trouble::new(format!("the directory cannot be made: {e}"))
             .at(directory.display())
@@ -75,13 +108,25 @@ fn write(cues: &[Cue], directory: &Path, replacements: &BTreeMap<String, PathBuf
     let mut bank = Bank::new(replacements)?;
     bank.prepare(RATE_HZ);
     for cue in cues {
-        let path = directory.join(format!("{}.wav", cue.word()));
-        let bytes = wav::encode(&bank.sound(*cue), RATE_HZ);
-        // The same sound under the same name is there already; another one is never overwritten.
-        if std::fs::read(&path).ok().as_deref() != Some(&bytes) {
-            files::write_new(&path, &bytes)?;
-        }
-        println!("{}", path.display());
+        write_sound(directory, cue.word(), &bank.sound(*cue))?;
+    }
+    if guided {
+        let n = (GUIDED.as_secs_f64() * f64::from(RATE_HZ)) as usize;
+        let mut tone = Guidance::default();
+        let pauses = GUIDED_AT.into_iter().flat_map(|place| [(Some(place), n), (None, n / 4)]);
+        let samples: Vec<f32> = pauses.flat_map(|(place, n)| tone.block(place, RATE_HZ, n)).collect();
+        write_sound(directory, GUIDANCE, &samples)?;
     }
     Ok(Ending::Done)
+}
+
+fn write_sound(directory: &Path, word: &str, samples: &[f32]) -> Result<(), Trouble> {
+    let path = directory.join(format!("{word}.wav"));
+    let bytes = wav::encode(samples, RATE_HZ);
+    // The same sound under the same name is there already; another one is never overwritten.
+    if std::fs::read(&path).ok().as_deref() != Some(&bytes) {
+        files::write_new(&path, &bytes)?;
+    }
+    println!("{}", path.display());
+    Ok(())
 }
