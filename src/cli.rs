@@ -9,7 +9,7 @@ use crate::pneumatics::{self, Gas, Tube};
 use crate::shell::feed::Feed;
 use crate::shell::outing::{self, Ending, Plan};
 use crate::shell::player::{Pace, Source};
-use crate::shell::{Trouble, check, files, listen, reduce, rehold, serial};
+use crate::shell::{Trouble, check, cues, files, listen, reduce, rehold, serial};
 use crate::simulate;
 use clap::{Args, Parser, Subcommand};
 use std::path::{Path, PathBuf};
@@ -23,7 +23,6 @@ use std::path::{Path, PathBuf};
     after_help = "\
 Examples:
   steadytap                                  a whole outing on a simulated van, no hardware
-  steadytap listen                           what is plugged in and talking
   steadytap drive outing.toml                the live screen on the rig's serial ports
   steadytap reduce outing.session            what the passes say
 Exit status: 0 done, 1 a problem in the input, 2 wrong usage, 3 done but something was degraded."
@@ -56,6 +55,8 @@ enum Word {
     Reduce(Reduce),
     /// The pneumatic response of a tube and a sensor's volume: delay, bandwidth, the settling time it asks for
     Hose(Hose),
+    /// Plays every sound with its meaning, or writes them as WAV files
+    Cues(Cues),
 }
 
 #[derive(Args, Debug, Default)]
@@ -81,6 +82,9 @@ struct Run {
     /// A file of your own keys [default: keys.toml in the configuration directory, if there is one]
     #[arg(long, value_name = "FILE")]
     keys: Option<PathBuf>,
+    /// No sound; without a screen there is none anyway
+    #[arg(long)]
+    mute: bool,
 }
 
 #[derive(Args, Debug, Default)]
@@ -173,6 +177,26 @@ struct Hose {
     pressure: f64,
 }
 
+#[derive(Args, Debug)]
+struct Cues {
+    /// Write them into this directory instead, as 48 kHz 16-bit WAV files; no other file is overwritten
+    #[arg(long, value_name = "DIR")]
+    write: Option<PathBuf>,
+    /// Only this one: window, steady, held, kept, refused, slow, fast, next, done, trouble or guidance
+    #[arg(long, value_name = "WORD")]
+    only: Option<String>,
+    /// A WAV file of at most 5 s in place of a sound
+    #[arg(long, value_name = "WORD=FILE", value_parser = replacement)]
+    replace: Vec<(String, PathBuf)>,
+}
+
+fn replacement(text: &str) -> Result<(String, PathBuf), String> {
+    match text.split_once('=') {
+        Some((word, file)) if !word.is_empty() && !file.is_empty() => Ok((word.to_string(), PathBuf::from(file))),
+        _ => Err(format!("`{text}` is not WORD=FILE, such as kept=bell.wav")),
+    }
+}
+
 fn number(text: &str) -> Result<f64, String> {
     text.parse::<f64>().ok().filter(|v| v.is_finite() && *v < 1e6).ok_or_else(|| format!("`{text}` is no number"))
 }
@@ -216,6 +240,11 @@ pub fn run(words: impl IntoIterator<Item = std::ffi::OsString>) -> u8 {
         Word::Rehold(words) => rehold_record(words),
         Word::Reduce(words) => reduce_sessions(words),
         Word::Hose(words) => hose(&words),
+        Word::Cues(words) => ended(cues::cues(&cues::Task {
+            write: words.write,
+            only: words.only,
+            replacements: words.replace.into_iter().collect(),
+        })),
     };
     match outcome {
         Outcome::Done => 0,
@@ -256,6 +285,7 @@ impl Run {
             rig: None,
             keys: self.keys.clone(),
             plain: self.plain,
+            mute: self.mute,
         }
     }
 }

@@ -26,8 +26,9 @@
 //! | 7 | [`report`] | a reduction | text, CSV, JSON, HTML |
 //! | 8 | [`pipeline`] | inputs, one at a time | events and session entries: live, replay, re-hold |
 //! | 9 | [`screen`] | a pipeline | a drawn frame (observer) |
+//! | 9 | [`sound`] | an event, the speed | a cue, its samples, the guidance tone (observer) |
 //! | 9 | [`simulate`] | a seed | the bytes the ports of an invented van would send |
-//! | 10 | [`shell`] | the world: ports, files, clock, terminal | inputs for the pipeline; the only I/O |
+//! | 10 | [`shell`] | the world: ports, files, clock, terminal, sound | inputs for the pipeline; the only I/O |
 //! | 11 | [`cli`] | words | a command and its exit status |
 //!
 //! Nothing below the shell reads a clock, a file, an environment variable or a random source: the same
@@ -47,6 +48,7 @@ pub mod session;
 pub mod shell;
 pub mod signal;
 pub mod simulate;
+pub mod sound;
 pub mod stream;
 pub mod text;
 pub mod units;

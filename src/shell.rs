@@ -8,6 +8,8 @@
 pub mod calibration;
 pub mod check;
 pub mod clock;
+pub mod cues;
+pub mod ear;
 pub mod engine;
 pub mod feed;
 pub mod files;
@@ -23,6 +25,7 @@ pub mod reduce;
 pub mod reducer;
 pub mod rehold;
 pub mod serial;
+pub mod speaker;
 pub mod terminal;
 pub mod watch;
 

@@ -25,6 +25,7 @@ mod same_bytes_same_session;
 mod samples_and_readme;
 mod screens;
 mod simulate_van;
+mod sound;
 mod starting_points;
 mod statistics;
 mod torn_session_recovers;

@@ -2,7 +2,7 @@
 
 use std::path::{Path, PathBuf};
 
-/// Rooms from the ground up; `screen` and `simulate` observe and are imported by the shell and the command line alone.
+/// Rooms from the ground up; `screen`, `simulate` and `sound` observe and are imported by the shell and the command line alone.
 const LAYERS: [&[&str]; 12] = [
     &["units", "pneumatics", "text"],
     &["config"],
@@ -13,7 +13,7 @@ const LAYERS: [&[&str]; 12] = [
     &["reduction"],
     &["report"],
     &["pipeline"],
-    &["screen", "simulate"],
+    &["screen", "simulate", "sound"],
     &["shell"],
     &["cli"],
 ];

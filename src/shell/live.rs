@@ -3,10 +3,12 @@
 //! The engine publishes views; the terminal draws the newest when it can, at most twenty times a second. A terminal that is not
 //! drained stops the drawing and nothing else.
 
+use super::ear::Ear;
 use super::engine::{Arrival, Engine, Outcome};
 use super::feed::{Running, Sender};
 use super::outing::Plan;
 use super::reducer::Reducer;
+use super::speaker::Speaker;
 use super::{Trouble, terminal};
 use crate::config::Convert;
 use crate::screen::keys::{self, Action};
@@ -15,6 +17,7 @@ use crate::screen::{Face, Journal, Message, Overlay, Spot, View, Weight, message
 use crate::units::StreamTime;
 use crossterm::event::{Event as TerminalEvent, EventStream};
 use futures_util::StreamExt;
+use std::collections::BTreeMap;
 use std::path::PathBuf;
 use std::sync::Arc;
 use std::sync::atomic::{AtomicUsize, Ordering};
@@ -41,13 +44,15 @@ pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trou
     super::outing::stop_on_signals(running.sender.clone());
     let face = terminal::face(plan)?;
     let looked = Arc::new(AtomicUsize::new(NOBODY));
-    let desk = Desk::new(engine, running.clock, plan, looked.clone());
+    let speaker = Speaker::start(&BTreeMap::new(), false)?;
+    speaker.mute(plan.mute);
+    let desk = Desk::new(engine, running.clock, plan, (looked.clone(), Ear::new(speaker.clone())));
     let (publish, views) = watch::channel(desk.view());
     let keys_to = running.sender.clone();
     let (done, is_done) = channel();
     let rig = plan.rig.clone();
     let screen = std::thread::spawn(move || {
-        let window = Window { views, face, looked, rig };
+        let window = Window { views, face, looked, rig, speaker };
         let ended = terminal::guarded(|| screen(window, &keys_to));
         keys_to.send(Arrival::Stop);
         let _ = done.send(());
@@ -83,16 +88,22 @@ struct Desk {
     messages: Vec<Message>,
     outcomes: Vec<Outcome>,
     ended: bool,
+    ear: Ear,
 }
 
 impl Desk {
-    fn new(engine: Engine, clock: Option<super::clock::StreamClock>, plan: &Plan, looked: Arc<AtomicUsize>) -> Self {
+    fn new(
+        engine: Engine,
+        clock: Option<super::clock::StreamClock>,
+        plan: &Plan,
+        (looked, ear): (Arc<AtomicUsize>, Ear),
+    ) -> Self {
         let shift_us = engine.shift_us();
         let (messages, outcomes) = (Vec::new(), Vec::new());
         let contents = engine.journal().contents();
         let header = contents.header.unwrap_or_else(|| super::rehold::header(engine.pipeline().setup(), None));
         let reducer = Reducer::start(header, contents.entries);
-        Self { engine, reducer, looked, clock, shift_us, seconds: plan.seconds, messages, outcomes, ended: false }
+        Self { engine, reducer, looked, clock, shift_us, seconds: plan.seconds, messages, outcomes, ended: false, ear }
     }
 
     fn now(&self) -> StreamTime {
@@ -124,6 +135,7 @@ impl Desk {
         self.engine.finish(&mut self.outcomes);
         self.hear();
         publish.send_replace(self.view());
+        self.ear.close();
         self.engine
     }
 
@@ -145,21 +157,30 @@ impl Desk {
 
     /// Turns outcomes into messages; true when something happened that must be seen at once.
     fn hear(&mut self) -> bool {
-        let news = !self.outcomes.is_empty();
+        self.ear.hear(&self.outcomes, self.engine.pipeline());
+        self.ear.disk(self.trouble());
         self.outcomes.iter().filter_map(|o| o.event.entry()).for_each(|entry| self.reducer.kept(entry));
+        let sound = self.ear.news().map(|(weight, text)| Message { at: self.now(), weight, text });
+        let news = !self.outcomes.is_empty() || sound.is_some();
+        self.messages.extend(sound);
         self.messages.extend(self.outcomes.drain(..).filter_map(|o| messages::message(&o.event, o.on_disk)));
         let extra = self.messages.len().saturating_sub(MESSAGES);
         self.messages.drain(..extra);
         news
     }
 
+    /// What is wrong with session or record.
+    fn trouble(&self) -> Option<String> {
+        let recorder = || self.engine.recorder().and_then(|r| r.trouble());
+        self.engine.journal().trouble().or_else(recorder).map(crate::screen::text::safe)
+    }
+
     fn view(&self) -> View {
         let journal = self.engine.journal();
         let name = journal.path().file_name().map(|n| n.to_string_lossy().into_owned()).unwrap_or_default();
-        let trouble = journal.trouble().or_else(|| self.engine.recorder().and_then(|r| r.trouble()));
         let journal = Journal {
             file: crate::screen::text::safe(&name),
-            trouble: trouble.map(crate::screen::text::safe),
+            trouble: self.trouble(),
             recording: self.engine.recorder().is_some_and(|r| r.trouble().is_none()),
         };
         let on_disk = &self.engine.on_disk;
@@ -184,6 +205,7 @@ struct Window {
     looked: Arc<AtomicUsize>,
     /// The rig file, for a calibration; none where the rig is built in.
     rig: Option<PathBuf>,
+    speaker: Speaker,
 }
 
 /// Draws views and reads keys until the engine is gone or somebody leaves.
@@ -221,7 +243,8 @@ async fn drawing(mut window: Window, keys_to: &Sender) -> std::io::Result<()> {
                 Some(Action::Quit) => return Ok(()),
                 Some(Action::Suspend) => terminal.suspend()?,
                 Some(Action::Calibrate { channel, convert }) => window.calibrated(&channel, &convert),
-                Some(Action::Acknowledge) | None => {}
+                Some(Action::Acknowledge) => window.speaker.acknowledge(),
+                None => {}
             },
             Some(TerminalEvent::Paste(text)) => keys::paste(&mut window.face, &text),
             // A key is answered at once; a view may wait for its frame.

@@ -36,6 +36,8 @@ pub struct Plan {
     pub keys: Option<PathBuf>,
     /// Draw with ASCII alone.
     pub plain: bool,
+    /// No sound.
+    pub mute: bool,
 }
 
 /// How a run ended.
