@@ -199,7 +199,7 @@ impl Pipeline {
     fn line(&mut self, port: usize, at: StreamTime, line: &[u8], out: &mut Vec<Event>) {
         self.advance(at, out);
         let values = match self.decoders[port].decode(line) {
-            Ok(values) if self.matters[port] || !self.hold.idle() || self.logbook.collecting() => values,
+            Ok(values) if self.matters[port] || !self.hold.idle(at) || self.logbook.collecting() => values,
             Ok(_) => return self.health[port].good(at, self.decoders[port].gps().no_fix),
             Err(why) => return self.rejected(port, at, line, why),
         };

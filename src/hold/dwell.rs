@@ -4,7 +4,7 @@
 //! on its way: at the first input that arrives the longest lag after its end. Without lags that is the completing sample.
 
 use super::statistics::{Accumulator, Place};
-use super::{Change, Rule, State};
+use super::{Change, Rule, State, Stretch};
 use crate::signal::Sample;
 use crate::units::StreamTime;
 use std::collections::VecDeque;
@@ -183,10 +183,11 @@ impl Hold {
         }
     }
 
-    /// Whether no sample of any moment can lie in a dwell now, or in one that begins later.
+    /// Whether no sample that arrives at `at` can lie in a dwell, not even in one that begins later.
     #[inline]
-    pub fn idle(&self) -> bool {
-        self.state == State::Off && self.dwells.is_empty() && self.recent.is_none()
+    pub fn idle(&self, at: StreamTime) -> bool {
+        let before = |stretch: &Stretch| at < self.rule.dwell_start(stretch.t0, 0);
+        self.dwells.is_empty() && self.recent.is_none() && self.state.stretch().is_none_or(before)
     }
 
     /// Which dwell of the running stretch is to be begun for a moment; none when the stretch cannot reach it.
