@@ -4,6 +4,8 @@
 //! output, talk to standard error.
 #![expect(clippy::disallowed_macros, reason = "this room talks to the person at the shell")]
 
+mod manual;
+
 use crate::config::{self, Setup};
 use crate::pneumatics::{self, Gas, Tube};
 use crate::shell::feed::Feed;
@@ -11,21 +13,19 @@ use crate::shell::outing::{self, Ending, Plan};
 use crate::shell::player::{Pace, Source};
 use crate::shell::{Trouble, check, cues, files, listen, reduce, rehold, serial};
 use crate::simulate;
-use clap::{Args, Parser, Subcommand};
+use clap::{Args, CommandFactory, Parser, Subcommand};
 use std::path::{Path, PathBuf};
 
 /// Tells, before you drive home, whether a body change moved the air pressures, by how much, and how sure you may be.
 #[derive(Parser, Debug)]
 #[command(
     name = "steadytap",
-    version,
-    about,
+    version = manual::version(),
+    about = "Decides on the road, with honest uncertainty, whether a body change moved the air pressures",
     after_help = "\
 Examples:
-  steadytap                                  a whole outing on a simulated van, no hardware
-  steadytap drive outing.toml                the live screen on the rig's serial ports
-  steadytap reduce outing.session            what the passes say
-Exit status: 0 done, 1 a problem in the input, 2 wrong usage, 3 done but something was degraded."
+  steadytap                         a whole outing on a simulated van, no hardware
+  steadytap reduce outing.session   what the passes say; more: steadytap manual | man -l -"
 )]
 struct Words {
     #[command(subcommand)]
@@ -53,10 +53,17 @@ enum Word {
     Rehold(Rehold),
     /// Coefficients, differences and verdicts of sessions
     Reduce(Reduce),
-    /// The pneumatic response of a tube and a sensor's volume: delay, bandwidth, the settling time it asks for
+    /// The response of a tube and a sensor's volume: delay, bandwidth, settling time
     Hose(Hose),
     /// Plays every sound with its meaning, or writes them as WAV files
     Cues(Cues),
+    /// Completions for a shell, on standard output
+    Completions {
+        /// The shell
+        shell: clap_complete::Shell,
+    },
+    /// The manual as a man page, on standard output
+    Manual,
 }
 
 #[derive(Args, Debug, Default)]
@@ -245,6 +252,8 @@ pub fn run(words: impl IntoIterator<Item = std::ffi::OsString>) -> u8 {
             only: words.only,
             replacements: words.replace.into_iter().collect(),
         })),
+        Word::Completions { shell } => printed(&manual::completions(Words::command(), shell)),
+        Word::Manual => printed(&manual::page(Words::command())),
     };
     match outcome {
         Outcome::Done => 0,

@@ -9,7 +9,7 @@ pub mod logbook;
 pub mod plan;
 pub mod refusal;
 
-use crate::config::{Setup, Watch};
+use crate::config::{Channel, Setup, Watch};
 use crate::hold::dwell::{Dwell, Hold};
 use crate::hold::{Rule, State};
 use crate::reduction::air;
@@ -116,6 +116,9 @@ pub struct Pipeline {
     eyes: Vec<Eye>,
     /// Health by port.
     health: Vec<Health>,
+    /// By port: its samples matter even where no window is near, to the window, the logbook or the eye.
+    matters: Vec<bool>,
+    /// Room for the samples of a frame.
     samples: Vec<Sample>,
     now: StreamTime,
 }
@@ -132,19 +135,24 @@ impl Pipeline {
         let angles = rig.channels.iter().map(|c| c.quantity == Quantity::Track).collect();
         let longest_lag = rig.channels.iter().map(crate::config::Channel::lag_us).max().unwrap_or(0);
         let eyes = if seen { rig.channels.iter().map(Eye::new).collect() } else { Vec::new() };
+        let standing = match outing.watch {
+            Watch::Channel(_) => None,
+            Watch::Airspeed(_) => rig.channels.iter().position(|c| c.quantity == Quantity::Speed),
+        };
+        let matters =
+            |(i, c): (usize, &Channel)| seen || i == watched || Some(i) == standing || logbook::remembered(c.quantity);
+        let names: Vec<_> = rig.channels.iter().enumerate().filter(|c| matters(*c)).map(|(_, c)| &c.port).collect();
         Self {
+            matters: rig.ports.iter().map(|p| names.contains(&&p.name)).collect(),
             decoders,
             wiring,
             hold: Hold::new(rule, angles, longest_lag),
             watched,
-            standing: match outing.watch {
-                Watch::Channel(_) => None,
-                Watch::Airspeed(_) => rig.channels.iter().position(|c| c.quantity == Quantity::Speed),
-            },
+            standing,
             logbook: Logbook::new(setup, before),
             eyes,
             health: rig.ports.iter().map(|_| Health::default()).collect(),
-            samples: Vec::new(),
+            samples: vec![Sample::default(); rig.channels.len()],
             now: StreamTime::ZERO,
             setup: setup.clone(),
         }
@@ -179,6 +187,7 @@ impl Pipeline {
         self.health[port].heard(at);
     }
 
+    #[inline]
     fn advance(&mut self, at: StreamTime, out: &mut Vec<Event>) {
         self.now = at;
         while let Some(dwell) = self.hold.due(at) {
@@ -190,35 +199,40 @@ impl Pipeline {
     #[inline]
     fn line(&mut self, port: usize, at: StreamTime, line: &[u8], out: &mut Vec<Event>) {
         self.advance(at, out);
-        self.samples.clear();
-        match self.decoders[port].decode(line) {
-            Ok(values) => {
-                self.wiring[port].samples(at, values, &mut self.samples);
-                if !self.eyes.is_empty() {
-                    self.wiring[port].raw(values).for_each(|(channel, raw)| self.eyes[channel].raw(raw));
-                }
-            }
+        let values = match self.decoders[port].decode(line) {
+            Ok(values) if self.matters[port] || !self.hold.idle(at) || self.logbook.collecting() => values,
+            Ok(_) => return self.health[port].good(at, self.decoders[port].gps().no_fix),
             Err(why) => return self.rejected(port, at, line, why),
+        };
+        let count = self.wiring[port].samples(at, values, &mut self.samples);
+        if !self.eyes.is_empty() {
+            self.wiring[port].raw(values).for_each(|(channel, raw)| self.eyes[channel].raw(raw));
         }
         let no_fix = self.decoders[port].gps().no_fix;
         self.health[port].good(at, no_fix);
-        for i in 0..self.samples.len() {
-            if self.samples[i].channel == self.watched {
-                let sample = self.samples[i];
-                self.watch(at, &sample, out);
-            }
+        if let Some(watched) = self.samples[..count].iter().find(|s| s.channel == self.watched).copied() {
+            self.watch(at, &watched, out);
         }
-        for sample in &self.samples {
-            self.hold.sample(sample);
-            self.logbook.sample(at, sample);
-            if self.standing == Some(sample.channel) {
+        let samples = &self.samples[..count];
+        self.hold.frame(samples);
+        match self.standing {
+            None => self.logbook.frame(at, samples),
+            Some(standing) => self.log_standing(at, standing, count),
+        }
+        if !self.eyes.is_empty() {
+            self.samples[..count].iter().for_each(|s| self.eyes[s.channel].push(at, s));
+        }
+        self.advance(at, out);
+    }
+
+    /// Samples one by one, those behind the ground speed with what it tells.
+    fn log_standing(&mut self, at: StreamTime, standing: usize, count: usize) {
+        for sample in &self.samples[..count] {
+            self.logbook.frame(at, std::slice::from_ref(sample));
+            if sample.channel == standing {
                 self.logbook.speed(at, sample.value, STANDING_KMH);
             }
         }
-        if !self.eyes.is_empty() {
-            self.samples.iter().for_each(|s| self.eyes[s.channel].push(at, s));
-        }
-        self.advance(at, out);
     }
 
     fn watch(&mut self, at: StreamTime, sample: &Sample, out: &mut Vec<Event>) {

@@ -9,7 +9,7 @@ use crate::config::{Channel, Convert, Rig};
 use crate::units::{StreamTime, Unit};
 
 /// One value of one channel.
-#[derive(Clone, Copy, Debug, PartialEq)]
+#[derive(Clone, Copy, Debug, Default, PartialEq)]
 pub struct Sample {
     /// Index of the channel in the rig.
     pub channel: usize,
@@ -102,15 +102,18 @@ impl Wiring {
         self.links.iter().filter_map(|link| Some((link.channel, values[link.slot]?)))
     }
 
-    /// Appends the samples of one frame, in rig order.
+    /// Fills in the samples of one frame, in rig order, and says how many; `out` has room for all channels of the rig.
     #[inline]
-    pub fn samples(&self, at: StreamTime, values: &[Option<f64>], out: &mut Vec<Sample>) {
+    pub fn samples(&self, at: StreamTime, values: &[Option<f64>], out: &mut [Sample]) -> usize {
+        let mut count = 0;
         for link in &self.links {
-            if let Some(raw) = values[link.slot] {
+            if let (Some(raw), Some(place)) = (values[link.slot], out.get_mut(count)) {
                 let (value, saturated) = link.scaler.scale(raw);
                 let t = at.plus(-link.scaler.lag_us);
-                out.push(Sample { channel: link.channel, t, value, saturated });
+                *place = Sample { channel: link.channel, t, value, saturated };
+                count += 1;
             }
         }
+        count
     }
 }

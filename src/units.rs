@@ -5,6 +5,9 @@
 //! field's figure becomes one of these. Factors: NIST SP 811 (2008) appendix B.8 and the exact definitions
 //! behind it (1 lb = 0.45359237 kg, 1 in = 0.0254 m, g₀ = 9.80665 m/s²).
 
+pub mod eight;
+
+use eight::Eight;
 use serde::{Deserialize, Deserializer, Serialize, Serializer};
 use std::fmt;
 
@@ -56,6 +59,38 @@ impl StreamTime {
         let number =
             |part: &[u8]| part.iter().try_fold(0i64, |n, c| c.is_ascii_digit().then(|| n * 10 + i64::from(c - b'0')));
         Some(Self(number(&text[..dot])? * 1_000_000 + number(&text[dot + 1..])?))
+    }
+
+    /// The stream time that `line` begins with, up to its first blank, and where that blank is.
+    ///
+    /// ```
+    /// use steadytap::units::StreamTime;
+    /// assert_eq!(StreamTime::leading(b"12.345678 gauge 1"), Some((StreamTime::from_micros(12_345_678), 9)));
+    /// ```
+    #[inline(always)]
+    pub fn leading(line: &[u8]) -> Option<(Self, usize)> {
+        let (seconds, end) = Self::short(line).unwrap_or((Self::ZERO, 0));
+        if line.get(end) == Some(&b' ') {
+            return Some((seconds, end));
+        }
+        Self::any(line)
+    }
+
+    #[cold]
+    fn any(line: &[u8]) -> Option<(Self, usize)> {
+        let blank = line.iter().take(20).position(|c| *c == b' ')?;
+        Some((Self::parse(&line[..blank])?, blank))
+    }
+
+    /// The same of up to seven digits before the point, whatever stands behind the six decimals.
+    #[inline(always)]
+    fn short(line: &[u8]) -> Option<(Self, usize)> {
+        let seconds = Eight::new(line);
+        let point = seconds.others().first();
+        let decimals = Eight::new(line.get(point + 1..)?);
+        let fits = point > 0 && seconds.byte(point) == b'.' && decimals.others().first() == 6;
+        let us = || i64::from(seconds.number(point)) * 1_000_000 + i64::from(decimals.number(6));
+        fits.then(|| (Self(us()), point + 7))
     }
 }
 
@@ -229,6 +264,7 @@ impl Unit {
         units.iter().copied().find(|u| u.name == name)
     }
     /// A figure in this unit, in the unit used inside.
+    #[inline]
     pub fn to_inside(self, figure: f64) -> f64 {
         figure * self.scale + self.shift
     }

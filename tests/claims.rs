@@ -8,6 +8,7 @@
 
 mod bad_configs;
 mod command_line;
+mod finish;
 mod holds;
 mod layers;
 mod lines;

@@ -17,7 +17,7 @@ use steadytap::shell::recorder::Recorder;
 use steadytap::shell::rehold::header;
 use steadytap::simulate::{Fault, FaultKind, Moment, Outing, STARTED, Scenario};
 use steadytap::stream::command::Command;
-use steadytap::stream::record::{Reader, Told, unescape};
+use steadytap::stream::record::{Reader, Told};
 use steadytap::units::StreamTime;
 
 fn root() -> PathBuf {
@@ -97,9 +97,7 @@ fn replay(record: &[u8], chunk: usize) -> (Pipeline, Vec<Event>) {
     let mut events = Vec::new();
     for piece in record.chunks(chunk) {
         reader.push(piece, &mut |told| match told {
-            Told::Line { at, port, escaped } => {
-                pipeline.step(Input::Line { port, at, line: &unescape(escaped) }, &mut events);
-            }
+            Told::Line { at, port, line } => pipeline.step(Input::Line { port, at, line: &line }, &mut events),
             Told::Event { at, port, word } => pipeline.step(Input::Port { port, at, word: &word }, &mut events),
             Told::Command { at, words } => {
                 let command = Command::parse(&words).expect("a command that was recorded");

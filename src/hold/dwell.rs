@@ -4,7 +4,7 @@
 //! on its way: at the first input that arrives the longest lag after its end. Without lags that is the completing sample.
 
 use super::statistics::{Accumulator, Place};
-use super::{Change, Rule, State};
+use super::{Change, Rule, State, Stretch};
 use crate::signal::Sample;
 use crate::units::StreamTime;
 use std::collections::VecDeque;
@@ -43,12 +43,15 @@ impl Interval {
         self.start <= t && t < self.end
     }
 
-    /// Adds a sample that lies in it.
+    /// Adds samples of one moment that lies in it.
     #[inline]
-    pub fn push(&mut self, sample: &Sample) {
-        let us = sample.t.since(self.start);
-        let bin = usize::try_from(us / self.bin_us).unwrap_or(0);
-        self.channels[sample.channel].push(Place { us, bin }, sample.value, sample.saturated);
+    pub fn push(&mut self, samples: &[Sample]) {
+        let Some(first) = samples.first() else { return };
+        let us = first.t.since(self.start);
+        let place = Place { us, bin: usize::try_from(us / self.bin_us).unwrap_or(0) };
+        for sample in samples {
+            self.channels[sample.channel].push(place, sample.value, sample.saturated);
+        }
     }
 
     /// Its length, µs.
@@ -109,7 +112,7 @@ impl Hold {
         self.rule.targets_kmh.len() - 1
     }
 
-    /// Takes in a watched sample; its own statistics go through [`Hold::sample`] afterwards.
+    /// Takes in a watched sample; its own statistics go through [`Hold::frame`] afterwards.
     #[inline]
     pub fn watch(&mut self, t: StreamTime, kmh: f64) -> Change {
         let change = self.state.step(&self.rule, t, kmh);
@@ -126,7 +129,7 @@ impl Hold {
         if let (Some(stretch), Some(recent)) = (&change.opened, &mut self.recent) {
             let from = self.rule.dwell_start(stretch.t0, 0);
             let early: Vec<Sample> = recent.drain(..).filter(|s| s.t >= from).collect();
-            early.iter().for_each(|s| self.sample(s));
+            self.frame(&early);
         }
         let (from, to) = change.completed;
         if from < to {
@@ -152,23 +155,39 @@ impl Hold {
         self.dwells.get_mut(at)
     }
 
-    /// Adds any channel's sample to the dwell it lies in.
+    /// Adds the samples of a frame, of any channels, to the dwells they lie in.
     #[inline]
-    pub fn sample(&mut self, sample: &Sample) {
-        if let Some(dwell) = self.dwells.iter_mut().find(|d| d.interval.contains(sample.t)) {
-            dwell.interval.push(sample);
-        } else if let Some(k) = self.running(sample.t)
+    pub fn frame(&mut self, samples: &[Sample]) {
+        for moment in samples.chunk_by(|a, b| a.t == b.t) {
+            self.moment(moment);
+        }
+    }
+
+    /// Adds samples of one moment, one or more.
+    #[inline]
+    fn moment(&mut self, samples: &[Sample]) {
+        let t = samples[0].t;
+        if let Some(dwell) = self.dwells.iter_mut().find(|d| d.interval.contains(t)) {
+            dwell.interval.push(samples);
+        } else if let Some(k) = self.running(t)
             && let Some(dwell) = self.dwell(k)
         {
-            dwell.interval.push(sample);
+            dwell.interval.push(samples);
         }
-        // Kept though a dwell has it: the stretch may turn out to have ended before it, and another to have begun.
+        // Kept though a dwell has them: the stretch may turn out to have ended before them, and another to have begun.
         if let Some(recent) = &mut self.recent {
-            recent.push_back(*sample);
-            while recent.front().is_some_and(|s| sample.t.since(s.t) > 2 * self.longest_lag_us) {
+            recent.extend(samples);
+            while recent.front().is_some_and(|s| t.since(s.t) > 2 * self.longest_lag_us) {
                 recent.pop_front();
             }
         }
+    }
+
+    /// Whether no sample that arrives at `at` can lie in a dwell, not even in one that begins later.
+    #[inline]
+    pub fn idle(&self, at: StreamTime) -> bool {
+        let before = |stretch: &Stretch| at < self.rule.dwell_start(stretch.t0, 0);
+        self.dwells.is_empty() && self.recent.is_none() && self.state.stretch().is_none_or(before)
     }
 
     /// Which dwell of the running stretch is to be begun for a moment; none when the stretch cannot reach it.

@@ -62,8 +62,9 @@ impl Accumulator {
         self.n += 1;
         self.sum += d;
         self.square += d * d;
-        self.min = self.min.min(value);
-        self.max = self.max.max(value);
+        // Samples are finite: no need of what `f64::min` does about NaN.
+        self.min = if value < self.min { value } else { self.min };
+        self.max = if value > self.max { value } else { self.max };
         let s = place.us as f64;
         self.time[0] += s;
         self.time[1] += s * s;

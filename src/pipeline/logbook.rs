@@ -29,6 +29,11 @@ struct ChannelFacts {
     stale_us: i64,
 }
 
+/// Whether the newest value of such a channel counts outside of dwells: the air, and the way they drive.
+pub fn remembered(quantity: Quantity) -> bool {
+    matches!(quantity, Quantity::Temperature | Quantity::Barometer | Quantity::Humidity | Quantity::Track)
+}
+
 struct Standing {
     since: StreamTime,
     samples: VecDeque<Sample>,
@@ -151,10 +156,25 @@ impl Logbook {
 
     // ---------------------------------------------------------------- what comes in
 
-    /// A sample of any channel, arrived at `at`.
+    /// The samples of a frame, arrived at `at`.
     #[inline]
-    pub fn sample(&mut self, at: StreamTime, sample: &Sample) {
-        self.latest[sample.channel] = Some((at, sample.value));
+    pub fn frame(&mut self, at: StreamTime, samples: &[Sample]) {
+        for sample in samples.iter().filter(|s| remembered(self.channels[s.channel].quantity)) {
+            self.latest[sample.channel] = Some((at, sample.value));
+        }
+        if self.collecting() {
+            samples.iter().for_each(|sample| self.collect(at, sample));
+        }
+    }
+
+    /// Whether every sample counts now: for a zero, or for a span.
+    #[inline]
+    pub fn collecting(&self) -> bool {
+        self.standing.is_some() || self.span.is_some()
+    }
+
+    /// Keeps a sample for a zero, and for the span that is running.
+    fn collect(&mut self, at: StreamTime, sample: &Sample) {
         if let Some(standing) = &mut self.standing {
             let oldest = at.plus(-self.dwell_us - self.longest_lag_us);
             standing.samples.push_back(*sample);
@@ -165,7 +185,7 @@ impl Logbook {
         if let Some(span) = &mut self.span
             && span.contains(sample.t)
         {
-            span.push(sample);
+            span.push(std::slice::from_ref(sample));
         }
     }
 
@@ -466,7 +486,9 @@ impl Logbook {
             return Err(Refusal::StandLonger { have_s, need_s });
         }
         let mut interval = Interval::new(start, at, &self.angles);
-        standing.samples.iter().filter(|s| s.t >= start && s.t < at).for_each(|s| interval.push(s));
+        for sample in standing.samples.iter().filter(|s| s.t >= start && s.t < at) {
+            interval.push(std::slice::from_ref(sample));
+        }
         let zero = Zero {
             id: self.next_zero,
             t0: start,

@@ -13,6 +13,8 @@ use std::path::Path;
 
 /// Bytes read at once.
 const BLOCK: usize = 256 * 1024;
+/// Bytes of it that are looked at together.
+const PART: usize = 4 * 1024;
 /// Bytes without one good line after which a file is taken for something else.
 const PROOF: u64 = 1024 * 1024;
 
@@ -87,8 +89,14 @@ impl Source {
     /// What was read ahead must be of a record before anything is made of it; a pipe may bring its lines later.
     fn look_ahead(&self) -> Result<(), Trouble> {
         let mut reader = Reader::new(None);
-        reader.push(&self.block[..self.ahead], &mut |_| ());
         let whole = self.size == Some(self.ahead as u64);
+        // One good line is enough: of a block that begins as a record does the rest is not read twice.
+        for part in self.block[..self.ahead].chunks(PART) {
+            reader.push(part, &mut |_| ());
+            if reader.tally.good > 0 {
+                break;
+            }
+        }
         if whole {
             reader.finish();
         }
@@ -207,9 +215,7 @@ impl Source {
 /// What a record's line is for the engine, and when; none for a command that is not understood.
 fn arrival(told: &Told<'_>) -> Option<(StreamTime, Arrival)> {
     Some(match told {
-        Told::Line { at, port, escaped } => {
-            (*at, Arrival::Line { port: *port, at: *at, line: record::unescape(escaped).into_owned() })
-        }
+        Told::Line { at, port, line } => (*at, Arrival::Line { port: *port, at: *at, line: line.to_vec() }),
         Told::Event { at, port, word } => (*at, Arrival::Port { port: *port, at: *at, word: word.to_string() }),
         Told::Command { at, words } => (*at, Arrival::Command { at: *at, command: Command::parse(words).ok()? }),
     })

@@ -8,7 +8,7 @@ use crate::pipeline::{Event, Input, Pipeline, What};
 use crate::session::codec;
 use crate::session::{Entry, Header, SCHEMA};
 use crate::stream::command::Command;
-use crate::stream::record::{self, Told};
+use crate::stream::record::Told;
 use crate::units::StreamTime;
 use std::path::{Path, PathBuf};
 
@@ -44,7 +44,7 @@ struct Run<'a> {
     as_driven: bool,
     events: Vec<Event>,
     table: Option<csv::Writer<Vec<u8>>>,
-    session: String,
+    session: Option<String>,
     found: Found,
 }
 
@@ -65,7 +65,7 @@ pub fn rehold(setup: &Setup, task: &Task) -> Result<Found, Trouble> {
         as_driven: task.as_driven,
         events: Vec::new(),
         table: task.csv.as_ref().map(|_| table()),
-        session: String::new(),
+        session: task.session.as_ref().map(|_| String::new()),
         found: Found::default(),
     };
     if !task.as_driven {
@@ -88,9 +88,8 @@ impl Run<'_> {
     #[inline]
     fn told(&mut self, told: &Told<'_>) {
         match told {
-            Told::Line { at, port, escaped } => {
-                let line = record::unescape(escaped);
-                self.pipeline.step(Input::Line { port: *port, at: *at, line: &line }, &mut self.events);
+            Told::Line { at, port, line } => {
+                self.pipeline.step(Input::Line { port: *port, at: *at, line }, &mut self.events);
             }
             Told::Event { at, port, word } => {
                 self.pipeline.step(Input::Port { port: *port, at: *at, word }, &mut self.events);
@@ -107,9 +106,13 @@ impl Run<'_> {
     }
 
     fn settle(&mut self) {
-        for event in std::mem::take(&mut self.events) {
+        for event in self.events.drain(..) {
             match &event.what {
-                What::Entry(entry) => self.session.push_str(&codec::encode(entry)),
+                What::Entry(entry) => {
+                    if let Some(session) = &mut self.session {
+                        session.push_str(&codec::encode(entry));
+                    }
+                }
                 What::Dwell { dwell, target_kmh, why, flags } => {
                     self.found.dwells[0] += 1;
                     self.found.dwells[1] += u64::from(!why.is_empty());
@@ -127,10 +130,10 @@ impl Run<'_> {
             self.found.lines[0] += self.pipeline.health(port).good;
             self.found.lines[1] += self.pipeline.health(port).rejected;
         }
-        if let Some(path) = &task.session {
+        if let (Some(path), Some(session)) = (&task.session, &self.session) {
             let header = header(self.setup, started);
             let mut bytes = codec::encode(&Entry::Session(Box::new(header)));
-            bytes.push_str(&self.session);
+            bytes.push_str(session);
             files::write_new(path, bytes.as_bytes())?;
         }
         if let (Some(path), Some(table)) = (&task.csv, self.table) {

@@ -118,6 +118,7 @@ impl Decoder {
     /// [`Reject`] says why the line does not parse; nothing of it may be used.
     pub fn decode(&mut self, line: &[u8]) -> Result<&[Option<f64>], Reject> {
         match self.format {
+            LineFormat::Columns if plain(line, &mut self.values) => {}
             LineFormat::Columns => columns(line, &mut self.values)?,
             LineFormat::Pairs => self.pairs(line)?,
             LineFormat::Json => self.json(line)?,
@@ -203,8 +204,24 @@ fn utc_ms(date: Option<(u32, u32, i32)>, time_s: Option<f64>) -> Option<i64> {
     Some(midnight.and_utc().timestamp_millis() + (time_s? * 1000.0).round() as i64)
 }
 
+/// The commonest of [`columns`]: commas alone, and nothing wrong. False says nothing but that it is another.
+#[inline(always)]
+fn plain(line: &[u8], values: &mut [Option<f64>]) -> bool {
+    let mut rest = line;
+    for (i, value) in values.iter_mut().enumerate() {
+        if i > 0 {
+            let Some(behind) = rest.strip_prefix(b",") else { return false };
+            rest = behind;
+        }
+        let Some((number, behind)) = number::before_comma(rest) else { return false };
+        *value = Some(number);
+        rest = behind;
+    }
+    rest.is_empty()
+}
+
 /// Numbers separated by comma, semicolon or tab, with blanks round them allowed, or by blanks alone.
-#[inline]
+#[inline(never)]
 fn columns(line: &[u8], values: &mut [Option<f64>]) -> Result<(), Reject> {
     let need = values.len();
     let mut at = blanks(line, 0);

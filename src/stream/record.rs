@@ -48,7 +48,7 @@ pub enum Line<'a> {
 }
 
 /// Reads one line of a record, without its line end; `None` is damage.
-#[inline]
+#[inline(always)]
 pub fn parse(line: &[u8]) -> Option<Line<'_>> {
     if line.is_empty() {
         return Some(Line::Comment);
@@ -56,10 +56,7 @@ pub fn parse(line: &[u8]) -> Option<Line<'_>> {
     if line[0] == b'#' {
         return Some(comment(line));
     }
-    // The head is short: seconds, a blank, a name.
-    let blank = memchr::memchr(b' ', &line[..line.len().min(20)])?;
-    let at = StreamTime::parse(&line[..blank])?;
-    let rest = &line[blank + 1..];
+    let (at, rest) = head(line)?;
     match rest.first()? {
         b'!' => {
             let (port, word) = split_word(&rest[1..]);
@@ -74,9 +71,17 @@ pub fn parse(line: &[u8]) -> Option<Line<'_>> {
     }
 }
 
-#[inline]
+/// The time of a line, and what stands behind it.
+#[inline(always)]
+fn head(line: &[u8]) -> Option<(StreamTime, &[u8])> {
+    let (at, blank) = StreamTime::leading(line)?;
+    Some((at, line.get(blank + 1..)?))
+}
+
+#[inline(always)]
 fn split_word(text: &[u8]) -> (&[u8], &[u8]) {
-    match memchr::memchr(b' ', text) {
+    // Port names are short: a search by blocks would cost more.
+    match text.iter().position(|c| *c == b' ') {
         Some(blank) => (&text[..blank], &text[blank + 1..]),
         None => (text, b""),
     }
@@ -171,8 +176,8 @@ pub enum Told<'a> {
         at: StreamTime,
         /// Index of the port.
         port: usize,
-        /// What it sent, escaped.
-        escaped: &'a [u8],
+        /// What it sent.
+        line: Cow<'a, [u8]>,
     },
     /// Something happened to the port at this index.
     Event {
@@ -240,8 +245,8 @@ impl Reader {
             chunk = &chunk[end + 1..];
             self.end_pending(each);
         }
-        while let Some(end) = memchr::memchr(b'\n', chunk) {
-            self.line(&chunk[..end], each);
+        while let Some((end, escapes)) = line_end(chunk) {
+            self.line(&chunk[..end], escapes, each);
             chunk = &chunk[end + 1..];
         }
         self.keep(chunk);
@@ -267,21 +272,25 @@ impl Reader {
         if std::mem::take(&mut self.overlong) {
             self.damage(OVERLONG);
         } else {
-            self.line(&pending, each);
+            self.line(&pending, true, each);
         }
         self.pending = pending;
         self.pending.clear();
     }
 
-    #[inline]
-    fn line(&mut self, line: &[u8], each: &mut impl FnMut(Told<'_>)) {
+    /// `escapes`: there may be some in it.
+    #[inline(always)]
+    fn line(&mut self, line: &[u8], escapes: bool, each: &mut impl FnMut(Told<'_>)) {
         if line.len() > LONGEST_RECORD_LINE {
             return self.damage(OVERLONG);
         }
         let line = line.strip_suffix(b"\r").unwrap_or(line);
         let Some(parsed) = parse(line) else { return self.damage("no `seconds port line` head") };
         let told = match parsed {
-            Line::Port { at, port, escaped } => self.port(port).map(|port| (at, Told::Line { at, port, escaped })),
+            Line::Port { at, port, escaped } => self.port(port).map(|port| {
+                let line = if escapes { unescape(escaped) } else { Cow::Borrowed(escaped) };
+                (at, Told::Line { at, port, line })
+            }),
             Line::Event { at, port, word } => self.port(port).map(|port| (at, Told::Event { at, port, word })),
             Line::Command { at, words } => Some((at, Told::Command { at, words })),
             header => {
@@ -332,6 +341,16 @@ impl Reader {
         let line = self.tally.lines;
         self.tally.first_damage.get_or_insert((line, what));
     }
+}
+
+/// Where the first line of `text` ends, and whether an escape may stand in it.
+#[inline(always)]
+fn line_end(text: &[u8]) -> Option<(usize, bool)> {
+    let at = memchr::memchr2(b'\n', b'\\', text)?;
+    if text[at] == b'\n' {
+        return Some((at, false));
+    }
+    memchr::memchr(b'\n', &text[at..]).map(|end| (at + end, true))
 }
 
 const OVERLONG: &str = "longer than a record line can be";
