@@ -92,6 +92,9 @@ struct Run {
     /// No sound; without a screen there is none anyway
     #[arg(long)]
     mute: bool,
+    /// The driver is alone: every held dwell is kept, guided by sound; begins once the car stands
+    #[arg(long, conflicts_with = "unattended")]
+    solo: bool,
 }
 
 #[derive(Args, Debug, Default)]
@@ -295,6 +298,7 @@ impl Run {
             keys: self.keys.clone(),
             plain: self.plain,
             mute: self.mute,
+            solo: self.solo,
         }
     }
 }

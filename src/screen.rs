@@ -213,6 +213,10 @@ pub struct View {
     pub configurations: Vec<(String, String)>,
     /// Seconds since the last zero; none: never zeroed.
     pub zero_age_s: Option<f64>,
+    /// For how long the car has stood, s; none while it moves.
+    pub stood_s: Option<f64>,
+    /// The letter that is to be fitted next, where that is another: what a driver alone confirms.
+    pub asks: Option<String>,
     /// What to drive next, in words; none when all that was wanted is driven.
     pub plan: Option<String>,
     /// What the session says so far; none before the first segment.

@@ -25,6 +25,7 @@ pub mod reduce;
 pub mod reducer;
 pub mod rehold;
 pub mod serial;
+pub mod solo;
 pub mod speaker;
 pub mod terminal;
 pub mod watch;

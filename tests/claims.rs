@@ -26,6 +26,7 @@ mod same_bytes_same_session;
 mod samples_and_readme;
 mod screens;
 mod simulate_van;
+mod solo;
 mod sound;
 mod starting_points;
 mod statistics;

@@ -102,6 +102,7 @@ snapshots! {
     help_of_the_layby: "help-layby", scenes::layby(), Face { overlay: Overlay::Help, ..at(Spot::Layby, Pane::Warnings) };
     leaving_drive_on_the_move_is_asked: "away", scenes::steady(), with(Overlay::Away(Spot::Layby));
     alone_there_is_nothing_to_read: "solo", scenes::held(Kept::OnDisk(12)), Face { solo: true, ..face() };
+    alone_verdicts_come_when_the_car_has_stood: "solo-parked", scenes::alone_parked(), Face { solo: true, ..face() };
     alone_trouble_is_still_said: "solo-trouble", scenes::trouble(), Face { solo: true, ..face() };
     plain_draws_ascii: "plain", scenes::held(Kept::OnDisk(12)), Face { plain: true, ..face() };
 }

@@ -19,7 +19,7 @@ const NOISE_PA: f64 = 0.4;
 
 /// One moment of the drive.
 #[derive(Clone, Copy)]
-struct Moment {
+pub struct Moment {
     t: f64,
     speed_m_s: f64,
     track_deg: f64,
@@ -28,7 +28,7 @@ struct Moment {
 }
 
 /// What a board prints at a moment: its port's name and its line.
-type Board = fn(&Moment, &mut dyn FnMut(f64) -> f64) -> Vec<(&'static str, String)>;
+pub type Board = fn(&Moment, &mut dyn FnMut(f64) -> f64) -> Vec<(&'static str, String)>;
 
 /// Bench curve of the radiator in `core-car.toml`, about 12 v + 15.8 v² fitted; the drop at a velocity between its points.
 fn drop_at(v: f64) -> f64 {
@@ -38,7 +38,7 @@ fn drop_at(v: f64) -> f64 {
     y0 + (y1 - y0) * (v - x0) / (x1 - x0)
 }
 
-fn hand(m: &Moment, noisy: &mut dyn FnMut(f64) -> f64) -> Vec<(&'static str, String)> {
+pub fn hand(m: &Moment, noisy: &mut dyn FnMut(f64) -> f64) -> Vec<(&'static str, String)> {
     let cp = if m.changed { -0.16 } else { -0.22 };
     vec![("board", format!("p1={:.2}", noisy(cp * m.q)))]
 }
@@ -89,7 +89,7 @@ fn gps(m: &Moment) -> String {
 }
 
 /// The whole drive as a record.
-fn record(board: Board) -> String {
+pub fn record(board: Board) -> String {
     let mut chance = Chance(0x5eed);
     let mut out = String::from("# steadytap record 1\n# started 2026-06-14T09:00:00.000Z\n");
     let (mut t, mut step) = (0.0, 0u32);

@@ -573,6 +573,10 @@ impl Logbook {
 
     // ---------------------------------------------------------------- what the screen asks
 
+    /// For how long the car has stood, s; none while it moves or nobody knows.
+    pub fn stood_s(&self, now: StreamTime) -> Option<f64> {
+        self.standing.as_ref().map(|s| now.since(s.since) as f64 / 1e6)
+    }
     /// Letter of the configuration that is fitted.
     pub fn configuration(&self) -> &str {
         &self.configuration

@@ -133,13 +133,18 @@ fn draw_disk(view: &View, canvas: &mut Canvas, y: u16) {
 }
 
 /// What a driver alone should know of at the next stop: broken disk and ports, and nothing else.
-pub(super) fn draw_trouble(view: &View, canvas: &mut Canvas, area: Rect) {
+///
+/// Returns the rows used.
+pub(super) fn draw_trouble(view: &View, canvas: &mut Canvas, area: Rect) -> u16 {
     canvas.text((area.x + 2, area.y), area.width - 3, "alone: drive by ear, read and type when parked", Role::Quiet);
     draw_disk(view, canvas, area.y + 1);
     let troubled = view.ports.iter().filter(|p| !matches!(p.state, PortState::Good | PortState::Waiting));
+    let mut rows = 2;
     for (y, port) in (area.y + 2..area.bottom()).zip(troubled) {
         draw_port(port, canvas, y);
+        rows += 1;
     }
+    rows
 }
 
 fn draw_message(message: &Message, canvas: &mut Canvas, y: u16) {

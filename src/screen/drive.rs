@@ -10,12 +10,14 @@ use super::figures::{Figures, clock, seconds};
 use super::keys;
 use super::rows;
 use super::theme::Role;
-use super::{Face, Kept, Overlay, View, WindowState, below};
+use super::{Face, Kept, Overlay, View, WindowState, below, layby};
 use crate::units::Quantity;
 use ratatui::layout::Rect;
 
 /// Smallest size that shows everything.
 const SMALLEST: (u16, u16) = (60, 20);
+/// Alone, nothing is to be read before the car has stood for so long, s.
+const READ_AFTER_S: f64 = 10.0;
 /// Rows above the channels.
 const HEAD_ROWS: u16 = 9;
 /// Rows kept for ports and messages however many channels there are: trouble coming and going moves nothing.
@@ -63,7 +65,12 @@ pub(super) fn draw(view: &View, face: &Face, canvas: &mut Canvas) {
     draw_fate(view, canvas, area.y + 5);
     if face.solo {
         let room = Rect::new(area.x, area.y + 7, area.width, area.height - 7);
-        return below::draw_trouble(view, canvas, room);
+        let used = below::draw_trouble(view, canvas, room);
+        let rest = Rect { y: room.y + used, height: room.height.saturating_sub(used), ..room };
+        if view.stood_s.is_some_and(|s| s >= READ_AFTER_S) {
+            draw_parked(view, canvas, rest);
+        }
+        return;
     }
     draw_gauge(view, canvas, area.y + 6);
     draw_progress(view, canvas, area.y + 7);
@@ -72,6 +79,19 @@ pub(super) fn draw(view: &View, face: &Face, canvas: &mut Canvas) {
     keys::draw_line(canvas, face, bottom);
     let room = Rect::new(area.x, area.y + HEAD_ROWS, area.width, area.height - HEAD_ROWS - 1);
     draw_room(view, canvas, room);
+}
+
+/// Parked long enough to read: what to do now, and what the passes say so far.
+fn draw_parked(view: &View, canvas: &mut Canvas, room: Rect) {
+    let asks =
+        view.asks.as_ref().map(|letter| format!("fit {letter}, then the remote's forward key (or Space) confirms it"));
+    let plan = view.plan.as_ref().map(|plan| format!("plan: {plan}"));
+    let verdicts = view.findings.iter().flat_map(|f| layby::verdicts(view, f));
+    let lines =
+        asks.into_iter().chain(plan).chain(verdicts).flat_map(|l| layby::folded(&l, usize::from(room.width) - 4));
+    for (y, line) in (room.y + 1..room.bottom()).zip(lines) {
+        canvas.text((room.x + 2, y), room.width - 3, &line, Role::Base);
+    }
 }
 
 /// Channels, ports and messages share what is left: channels first, then a line a port, then messages.

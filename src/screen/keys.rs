@@ -30,6 +30,8 @@ pub enum Action {
     Suspend,
     /// Trouble has been seen: stop repeating its sound.
     Acknowledge,
+    /// The guidance tone off, or on again.
+    Guidance,
     /// Write a channel's calibration into the rig file.
     Calibrate {
         /// The channel.
@@ -195,6 +197,7 @@ pub const TABLE: &[KeyRow] = &[
     row("taps", (SPOTS, &[plain('p')]), ("taps: which channel sits on which", None), |_, f| open(f, PromptKind::Taps)),
     row("light", (SPOTS, &[plain('l')]), ("light: day, night, no colour", None), light),
     row("acknowledge", (SPOTS, &[bare(KeyCode::Esc)]), ("trouble seen: silence its sound", None), |_, _| Some(Action::Acknowledge)),
+    row("guidance", (DRIVE, &[plain('g')]), ("alone: guidance tone off, on", None), |_, f| f.solo.then_some(Action::Guidance)),
     row("help", (SPOTS, &[plain('?')]), ("this help", Some("help")), help),
     row("leave", (SPOTS, &[plain('q'), CTRL_C]), ("leave; asks", Some("leave")), ask_quit),
     row("", (&[Place::Help], &[bare(KeyCode::Esc), bare(KeyCode::Enter), plain('?'), plain('q')]), ("closes", None), back_out),

@@ -221,6 +221,14 @@ fn sentence(view: &View, comparisons: &[&Comparison], r: &Reduction) -> String {
     if said.is_empty() { "no difference can be told yet".to_string() } else { said.join("; ") }
 }
 
+/// The verdicts of every compared configuration, a sentence each.
+pub(super) fn verdicts(view: &View, findings: &Findings) -> Vec<String> {
+    let Ok(r) = &findings.reduction else { return Vec::new() };
+    let Some(target) = targets(r).first().copied() else { return Vec::new() };
+    let said = |letter: &&str| format!("{letter}: {}", sentence(view, &of(r, letter, target).collect::<Vec<_>>(), r));
+    findings.compared().iter().map(said).collect()
+}
+
 /// Taps down, configurations across; returns the rows used.
 fn draw_table(
     view: &View,

@@ -50,6 +50,10 @@ impl View {
             kept: u32::try_from(live.clone().count()).unwrap_or(u32::MAX),
             last_segment: live.map(|s| s.id).max(),
             configurations: setup.outing.configurations.iter().map(|c| (c.letter.clone(), c.name.clone())).collect(),
+            stood_s: logbook.stood_s(now),
+            asks: crate::pipeline::plan::next(logbook.segments(), &setup.outing, logbook.configuration())
+                .map(|next| next.configuration)
+                .filter(|letter| letter != logbook.configuration() && logbook.stood_s(now).is_some()),
             plan: plan(pipeline, around.findings.as_deref()),
             bench: around.workshop.map(|channel| bench(pipeline, channel, now)),
             findings: around.findings.clone(),

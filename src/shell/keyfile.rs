@@ -1,10 +1,12 @@
-//! The file of keys: where a person's own keys stand, for all places at once.
+//! The file of keys: where a person's own keys and sounds stand, for all places at once.
 //!
 //! ```toml
 //! steadytap = "keys 1"
 //! [keys]
 //! take = ["Space", "F5"]
 //! mark = "x"
+//! [sounds]
+//! kept = "my-kept.wav"
 //! ```
 
 use super::{Trouble, files};
@@ -19,6 +21,17 @@ struct Written {
     steadytap: String,
     #[serde(default)]
     keys: BTreeMap<String, toml::Spanned<Keys>>,
+    #[serde(default)]
+    sounds: BTreeMap<String, PathBuf>,
+}
+
+/// What a person has made his own.
+#[derive(Debug, Default)]
+pub struct Own {
+    /// Keys.
+    pub bindings: Bindings,
+    /// WAV files by the word of the cue.
+    pub sounds: BTreeMap<String, PathBuf>,
 }
 
 #[derive(Deserialize)]
@@ -33,14 +46,14 @@ pub fn place() -> Option<PathBuf> {
     directories::ProjectDirs::from("", "", "steadytap").map(|d| d.config_dir().join("keys.toml"))
 }
 
-/// The keys of the named file, else of the one in its place, else the usual ones.
+/// What the named file says, else the one in its place, else the usual keys and sounds.
 ///
 /// # Errors
 /// [`Trouble`] when there is one and it cannot be used.
-pub fn bindings(named: Option<&Path>) -> Result<Bindings, Trouble> {
+pub fn own(named: Option<&Path>) -> Result<Own, Trouble> {
     match named.map(Path::to_path_buf).or_else(|| place().filter(|path| path.exists())) {
         Some(path) => read(&path),
-        None => Ok(Bindings::default()),
+        None => Ok(Own::default()),
     }
 }
 
@@ -48,7 +61,7 @@ pub fn bindings(named: Option<&Path>) -> Result<Bindings, Trouble> {
 ///
 /// # Errors
 /// [`Trouble`] with line, column and remedy.
-pub fn read(path: &Path) -> Result<Bindings, Trouble> {
+pub fn read(path: &Path) -> Result<Own, Trouble> {
     let source = files::source(path)?;
     let at = |offset: usize| {
         let before = &source.text[..source.text.floor_char_boundary(offset)];
@@ -74,10 +87,12 @@ pub fn read(path: &Path) -> Result<Bindings, Trouble> {
             },
         ));
     }
-    let all = Bindings::new(good.iter().cloned());
-    all.map_err(|e| {
+    let bindings = Bindings::new(good.iter().cloned()).map_err(|e| {
         let wrong = (1..=good.len()).find(|n| Bindings::new(good[..*n].iter().cloned()).is_err());
         let span = wrong.and_then(|n| written.keys.get(good[n - 1].0)).map_or(0, |keys| keys.span().start);
         Trouble::new(e.to_string()).at(at(span)).hint(hint)
-    })
+    })?;
+    // Sounds are named relative to the file.
+    let beside = |sound: PathBuf| path.parent().unwrap_or(Path::new("")).join(sound);
+    Ok(Own { bindings, sounds: written.sounds.into_iter().map(|(word, sound)| (word, beside(sound))).collect() })
 }

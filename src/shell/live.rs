@@ -8,19 +8,20 @@ use super::engine::{Arrival, Engine, Outcome};
 use super::feed::{Running, Sender};
 use super::outing::Plan;
 use super::reducer::Reducer;
+use super::solo::Solo;
 use super::speaker::Speaker;
 use super::{Trouble, terminal};
 use crate::config::Convert;
 use crate::screen::keys::{self, Action};
 use crate::screen::seen::Surroundings;
 use crate::screen::{Face, Journal, Message, Overlay, Spot, View, Weight, messages};
+use crate::stream::command::Command;
 use crate::units::StreamTime;
 use crossterm::event::{Event as TerminalEvent, EventStream};
 use futures_util::StreamExt;
-use std::collections::BTreeMap;
 use std::path::PathBuf;
 use std::sync::Arc;
-use std::sync::atomic::{AtomicUsize, Ordering};
+use std::sync::atomic::{AtomicBool, AtomicUsize, Ordering};
 use std::sync::mpsc::{Receiver, RecvTimeoutError, channel};
 use std::time::{Duration, Instant};
 use tokio::sync::watch;
@@ -44,15 +45,17 @@ pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trou
     super::outing::stop_on_signals(running.sender.clone());
     let face = terminal::face(plan)?;
     let looked = Arc::new(AtomicUsize::new(NOBODY));
-    let speaker = Speaker::start(&BTreeMap::new(), false)?;
+    let speaker = Speaker::start(&super::keyfile::own(plan.keys.as_deref())?.sounds, plan.solo)?;
     speaker.mute(plan.mute);
-    let desk = Desk::new(engine, running.clock, plan, (looked.clone(), Ear::new(speaker.clone())));
+    let silent = Arc::new(AtomicBool::new(false));
+    let alone = plan.solo.then(|| Alone { solo: Solo::default(), silent: silent.clone(), speaker: speaker.clone() });
+    let desk = Desk { alone, ..Desk::new(engine, running.clock, plan, (looked.clone(), Ear::new(speaker.clone()))) };
     let (publish, views) = watch::channel(desk.view());
     let keys_to = running.sender.clone();
     let (done, is_done) = channel();
     let rig = plan.rig.clone();
     let screen = std::thread::spawn(move || {
-        let window = Window { views, face, looked, rig, speaker };
+        let window = Window { views, face, looked, rig, speaker, silent };
         let ended = terminal::guarded(|| screen(window, &keys_to));
         keys_to.send(Arrival::Stop);
         let _ = done.send(());
@@ -82,6 +85,7 @@ struct Desk {
     reducer: Reducer,
     /// Channel that is looked at in the workshop.
     looked: Arc<AtomicUsize>,
+    alone: Option<Alone>,
     clock: Option<super::clock::StreamClock>,
     shift_us: i64,
     seconds: Option<f64>,
@@ -89,6 +93,14 @@ struct Desk {
     outcomes: Vec<Outcome>,
     ended: bool,
     ear: Ear,
+}
+
+/// The driver is alone.
+struct Alone {
+    solo: Solo,
+    /// The guidance tone is off.
+    silent: Arc<AtomicBool>,
+    speaker: Speaker,
 }
 
 impl Desk {
@@ -103,7 +115,19 @@ impl Desk {
         let contents = engine.journal().contents();
         let header = contents.header.unwrap_or_else(|| super::rehold::header(engine.pipeline().setup(), None));
         let reducer = Reducer::start(header, contents.entries);
-        Self { engine, reducer, looked, clock, shift_us, seconds: plan.seconds, messages, outcomes, ended: false, ear }
+        Self {
+            engine,
+            reducer,
+            looked,
+            alone: None,
+            clock,
+            shift_us,
+            seconds: plan.seconds,
+            messages,
+            outcomes,
+            ended: false,
+            ear,
+        }
     }
 
     fn now(&self) -> StreamTime {
@@ -126,6 +150,9 @@ impl Desk {
                 break;
             }
             let news = self.hear();
+            if let Some(alone) = &self.alone {
+                alone.solo.guide(self.engine.pipeline(), self.now(), &alone.speaker);
+            }
             let due = if news { FRAME } else { READING };
             if published.elapsed() >= due || (news && published.elapsed() >= FRAME / 2) {
                 published = Instant::now();
@@ -150,9 +177,29 @@ impl Desk {
                     (self.now(), "the stream is over: Tab shows Layby, q leaves and prints the reduction".to_string());
                 self.messages.push(Message { at, weight: Weight::Quiet, text });
             }
-            arrival => self.engine.take(arrival, &mut self.outcomes),
+            // Alone every dwell is kept; whoever takes in a record that is driven again is not here.
+            Arrival::Command { command: Command::Take, .. } if self.alone.is_some() => {}
+            arrival => {
+                self.engine.take(arrival, &mut self.outcomes);
+                self.do_alone();
+            }
         }
         false
+    }
+
+    /// What solo wants is done and said.
+    fn do_alone(&mut self) {
+        let Some(alone) = &mut self.alone else { return };
+        let pipeline = self.engine.pipeline();
+        let now = pipeline.now();
+        let wanted = alone.solo.look(pipeline, now);
+        alone.solo.silent = alone.silent.load(Ordering::Relaxed);
+        if !wanted.cues.is_empty() {
+            alone.speaker.say_all(wanted.cues);
+        }
+        for command in wanted.commands {
+            self.engine.take(Arrival::Command { at: StreamTime::ZERO, command }, &mut self.outcomes);
+        }
     }
 
     /// Turns outcomes into messages; true when something happened that must be seen at once.
@@ -206,6 +253,7 @@ struct Window {
     /// The rig file, for a calibration; none where the rig is built in.
     rig: Option<PathBuf>,
     speaker: Speaker,
+    silent: Arc<AtomicBool>,
 }
 
 /// Draws views and reads keys until the engine is gone or somebody leaves.
@@ -235,6 +283,10 @@ async fn drawing(mut window: Window, keys_to: &Sender) -> std::io::Result<()> {
             event = next(&mut events) => event,
         };
         match event {
+            // Alone any key of the remote says that the trouble was heard.
+            Some(TerminalEvent::Key(_)) if window.face.solo && window.speaker.troubled() => {
+                window.speaker.acknowledge()
+            }
             Some(TerminalEvent::Key(key)) => match keys::press(&view, &mut window.face, key) {
                 // Stamped by the engine: stream time is only known there.
                 Some(Action::Command(command)) => {
@@ -244,6 +296,7 @@ async fn drawing(mut window: Window, keys_to: &Sender) -> std::io::Result<()> {
                 Some(Action::Suspend) => terminal.suspend()?,
                 Some(Action::Calibrate { channel, convert }) => window.calibrated(&channel, &convert),
                 Some(Action::Acknowledge) => window.speaker.acknowledge(),
+                Some(Action::Guidance) => drop(window.silent.fetch_xor(true, Ordering::Relaxed)),
                 None => {}
             },
             Some(TerminalEvent::Paste(text)) => keys::paste(&mut window.face, &text),

@@ -38,6 +38,8 @@ pub struct Plan {
     pub plain: bool,
     /// No sound.
     pub mute: bool,
+    /// The driver is alone.
+    pub solo: bool,
 }
 
 /// How a run ended.

@@ -137,6 +137,11 @@ impl Speaker {
         self.shared.lock().trouble_again = None;
     }
 
+    /// Trouble is being repeated.
+    pub fn troubled(&self) -> bool {
+        self.shared.lock().trouble_again.is_some()
+    }
+
     /// How cues are heard now.
     pub fn status(&self) -> Status {
         let state = self.shared.lock();

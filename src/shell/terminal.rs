@@ -82,9 +82,11 @@ pub fn face(plan: &super::outing::Plan) -> Result<Face, Trouble> {
     let dumb = std::env::var("TERM").is_ok_and(|t| t == "dumb");
     let no_colour = dumb || std::env::var("NO_COLOR").is_ok_and(|v| !v.is_empty());
     let theme = if no_colour { Theme::NoColour } else { Theme::default() };
-    let overlay = if first_start() { Overlay::Safety } else { Overlay::None };
-    let bindings = super::keyfile::bindings(plan.keys.as_deref())?;
-    Ok(Face { theme, plain: plan.plain || plain_locale || dumb, overlay, bindings, ..Face::default() })
+    // Alone they are shown every time.
+    let overlay = if first_start() || plan.solo { Overlay::Safety } else { Overlay::None };
+    let bindings = super::keyfile::own(plan.keys.as_deref())?.bindings;
+    let plain = plan.plain || plain_locale || dumb;
+    Ok(Face { theme, plain, overlay, bindings, solo: plan.solo, ..Face::default() })
 }
 
 /// Nobody has seen the cautions yet; from now on somebody has.

@@ -83,7 +83,7 @@ fn every_row_of_the_key_table_acts_in_every_place_it_names() {
         for place in row.places {
             assert!(PLACES.contains(place));
             for (code, control) in row.keys {
-                let before = face_at(*place);
+                let before = Face { solo: row.name == "guidance", ..face_at(*place) };
                 let mut after = before.clone();
                 let action = press(&view, &mut after, key(*code, *control));
                 after.last_key = None;
@@ -411,4 +411,20 @@ fn keys_can_be_put_elsewhere_and_clashes_are_told() {
     assert!(wrong("tkae", "x").contains("there is no key named `tkae`"));
     assert!(wrong("take", "Hyper").contains("`Hyper` is no key"));
     assert!(wrong("take", "z").contains("both `take` and `zero`"));
+}
+
+#[test]
+fn alone_the_remote_confirms_the_part_when_parked_and_voids_at_once() {
+    let mut alone = Face { solo: true, ..face() };
+    let driving = scenes::held(Kept::OnDisk(12));
+    assert_eq!(tap(&driving, &mut alone, KeyCode::PageDown), None, "every dwell is kept anyway");
+    assert_eq!(tap(&driving, &mut alone, KeyCode::PageUp), command(Command::Void(12)));
+    let parked = scenes::alone_parked();
+    let parked = later(&parked, 60);
+    assert_eq!(tap(&parked, &mut alone, KeyCode::PageDown), command(Command::Configuration("C".into())));
+    assert_eq!(letter(&later(&parked, 2), &mut alone, ' '), command(Command::Configuration("C".into())));
+    assert_eq!(letter(&driving, &mut alone, 'g'), Some(Action::Guidance));
+    assert_eq!((letter(&driving, &mut alone, 'q'), &alone.overlay), (None, &Overlay::None), "not on the move");
+    letter(&parked, &mut alone, 'q');
+    assert_eq!(alone.overlay, Overlay::Quit);
 }

@@ -100,6 +100,8 @@ fn base() -> View {
         kept: 11,
         last_segment: Some(11),
         configurations: vec![("A".into(), "bare doors".into()), ("B".into(), "flaps 120 mm".into())],
+        stood_s: None,
+        asks: None,
         plan: Some("drive B out at 100.0 km/h, pass 3 of 4".into()),
         findings: None,
         bench: None,
@@ -247,6 +249,14 @@ pub fn layby() -> View {
     view.window = Window { state: WindowState::TooSlow, speed_kmh: Some(0.0), ..view.window };
     view.findings = Some(Arc::new(Findings::of(&crate::reduction_meaning::outing(), 1)));
     (view.kept, view.plan) = (40, None);
+    view
+}
+
+/// Alone, parked for long enough to read.
+pub fn alone_parked() -> View {
+    let mut view = layby();
+    (view.stood_s, view.asks) = (Some(14.0), Some("C".into()));
+    view.plan = Some("park and fit C, then drive C out at 100.0 km/h, pass 1 of 4".into());
     view
 }
 

@@ -20,7 +20,13 @@ pub(super) fn back_out(_: &View, face: &mut Face) -> Option<Action> {
 }
 
 /// Taking answers no question: it closes it, so that a remote's forward key undoes its back key.
-pub(super) fn take(_: &View, face: &mut Face) -> Option<Action> {
+///
+/// Alone every dwell is kept anyway: the key confirms, parked, that the next configuration was fitted.
+pub(super) fn take(view: &View, face: &mut Face) -> Option<Action> {
+    if face.solo {
+        face.overlay = Overlay::None;
+        return view.asks.clone().and_then(|letter| say(Command::Configuration(letter)));
+    }
     if !matches!(face.overlay, Overlay::Prompt(_)) {
         face.overlay = Overlay::None;
     }
@@ -28,6 +34,10 @@ pub(super) fn take(_: &View, face: &mut Face) -> Option<Action> {
 }
 
 pub(super) fn ask_void(view: &View, face: &mut Face) -> Option<Action> {
+    // Alone nobody reads a question; Layby restores what should not have gone.
+    if face.solo {
+        return view.last_segment.and_then(|id| say(Command::Void(id)));
+    }
     let marked = marked_segment(view, face).filter(|_| face.spot == Spot::Layby && face.layby.pane == Pane::Segments);
     if let Some(id) = marked.or(view.last_segment) {
         face.overlay = Overlay::Void(id);
@@ -42,7 +52,10 @@ pub(super) fn void(_: &View, face: &mut Face) -> Option<Action> {
     }
 }
 
-pub(super) fn ask_quit(_: &View, face: &mut Face) -> Option<Action> {
+pub(super) fn ask_quit(view: &View, face: &mut Face) -> Option<Action> {
+    if face.solo && face.spot == Spot::Drive && moves(view) {
+        return None;
+    }
     face.overlay = Overlay::Quit;
     None
 }
@@ -201,14 +214,16 @@ pub(in crate::screen) fn at_stake(view: &View) -> Option<&'static str> {
 /// Goes to another place; away from Drive on the move only when asked again, alone not at all.
 pub(super) fn go(view: &View, face: &mut Face, to: fn(Spot) -> Spot) -> Option<Action> {
     let to = to(face.spot);
-    let moves = view.window.speed_kmh.is_some_and(|v| v > WALKING_KMH);
-    match (face.spot == Spot::Drive && moves, face.solo) {
-        (false, false) => face.spot = to,
+    match (face.spot == Spot::Drive && moves(view), face.solo) {
+        (false, _) => face.spot = to,
         (true, false) => face.overlay = Overlay::Away(to),
-        (false, true) if !moves => face.spot = to,
-        (_, true) => {}
+        (true, true) => {}
     }
     None
+}
+
+fn moves(view: &View) -> bool {
+    view.window.speed_kmh.is_some_and(|v| v > WALKING_KMH)
 }
 
 pub(super) fn away(_: &View, face: &mut Face) -> Option<Action> {
