@@ -14,6 +14,7 @@ mod layers;
 mod lines;
 mod live_ports;
 mod outside;
+mod pictures;
 mod reduction_coverage;
 mod reduction_inference;
 mod reduction_meaning;

@@ -34,6 +34,11 @@ fn page(sessions: &[Session]) -> (Reduction, String) {
     (made, html)
 }
 
+/// The page of the day on which everything can be said.
+pub fn demo_page() -> String {
+    page(&[outing()]).1
+}
+
 /// As [`page`], whatever words its names hold.
 #[track_caller]
 fn whole(sessions: &[Session]) -> (Reduction, String) {

@@ -3,7 +3,7 @@
 
 mod contrast;
 mod pressing;
-mod scenes;
+pub mod scenes;
 
 use proptest::prelude::*;
 use ratatui::buffer::Buffer;
