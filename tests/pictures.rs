@@ -8,7 +8,7 @@ use ratatui::style::{Color, Modifier};
 use std::fmt::Write;
 use std::path::Path;
 use steadytap::screen::layby::Pane;
-use steadytap::screen::{Face, Kept, Spot, Theme, View, render};
+use steadytap::screen::{Face, Spot, Theme, View, render};
 
 /// Size of a cell, px.
 const CELL: (usize, usize) = (9, 18);
@@ -59,7 +59,7 @@ fn picture(view: &View, face: &Face, (columns, rows): (u16, u16), title: &str) -
     render(view, face, &mut buffer);
     let (w, h) = (usize::from(columns) * CELL.0, usize::from(rows) * CELL.1);
     let mut out = format!(
-        "<svg xmlns='http://www.w3.org/2000/svg' viewBox='0 0 {w} {h}' role='img' font-family='monospace' font-size='15'>\n<title>{title}</title>\n"
+        "<svg xmlns='http://www.w3.org/2000/svg' viewBox='0 0 {w} {h}' role='img' font-family='monospace' font-size='15' shape-rendering='crispEdges'>\n<title>{title}</title>\n"
     );
     for y in 0..rows {
         // One rectangle a run of cells with one ground.
@@ -92,9 +92,6 @@ fn the_pictures_of_the_screens_are_the_real_ones() {
         face.layby.pane = pane;
         face
     };
-    let drive =
-        picture(&scenes::held(Kept::OnDisk(12)), &at(Spot::Drive, Pane::Warnings), (80, 24), "Drive (invented data)");
-    is_as_made("drive.svg", &drive);
     let night = Face { theme: Theme::Night, ..at(Spot::Layby, Pane::Segments) };
     is_as_made("layby.svg", &picture(&scenes::layby(), &night, (120, 32), "Layby (invented data)"));
     is_as_made(
