@@ -298,6 +298,8 @@ pub struct Row {
     pub channel: String,
     /// What it measures; decides unit and decimals.
     pub quantity: crate::units::Quantity,
+    /// The unit that the rig names; shown where the quantity has none of its own.
+    pub unit: String,
     /// Damped live value; none when never seen.
     pub live: Option<f64>,
     /// Mean of the held dwell.

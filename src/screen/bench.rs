@@ -246,6 +246,7 @@ fn draw_channels(view: &View, bench: &Bench, face: &Face, (canvas, area): (&mut 
         let role = if i == marked { Role::Held } else { Role::Base };
         canvas.put((area.x, y), sign, role);
         let figures = Figures::of(row.quantity, &view.show);
+        let unit = if row.quantity == Quantity::Other { row.unit.as_str() } else { figures.unit() };
         let raw = row.raw.map_or("—".to_string(), shortest);
         let rate = format!("{:.1}", row.rate_per_s.min(9999.9));
         let (value, zero) = (figures.signed(row.value), row.zero.map_or("—".to_string(), |z| figures.short(z)));
@@ -256,14 +257,14 @@ fn draw_channels(view: &View, bench: &Bench, face: &Face, (canvas, area): (&mut 
                 cut(&row.channel, 10),
                 cut(&row.tap, 14),
                 cut(&row.from, 13),
-                figures.unit()
+                cut(unit, 5)
             )
         } else {
             format!(
                 "{:<9}{:<12}{raw:>11}{value:>10} {:<5}{zero:>8}{noise:>7}{rate:>7}",
                 cut(&row.channel, 8),
                 cut(&row.tap, 11),
-                figures.unit()
+                cut(unit, 5)
             )
         };
         canvas.text((area.x + 2, y), area.width - 3, &text, role);

@@ -159,6 +159,7 @@ fn row(pipeline: &Pipeline, i: usize, held: Option<&Segment>, now: StreamTime) -
         label: text::safe(label),
         channel: channel.name.clone(),
         quantity: channel.quantity,
+        unit: text::safe(&channel.unit),
         live: eye.and_then(|e| e.live()).map(|x| x - zero),
         held: statistics.map(|s| s.mean - zero),
         fluctuation: statistics.map_or_else(collecting, |s| s.sd),

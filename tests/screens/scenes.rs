@@ -31,6 +31,7 @@ fn row(label: &str, channel: &str, quantity: Quantity, level: f64) -> Row {
         label: label.into(),
         channel: channel.into(),
         quantity,
+        unit: quantity.inside().into(),
         live: Some(level + 3.26),
         held: None,
         fluctuation: None,
