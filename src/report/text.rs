@@ -74,7 +74,14 @@ fn verdicts(out: &mut String, r: &Reduction, unit: Unit) {
             );
         }
     }
-    if !r.comparisons.is_empty() {
+    if r.comparisons.is_empty() {
+        let words = match r.passes.is_empty() {
+            true => "No verdict: no pass was kept, or all are void or left out.",
+            false => "No verdict: the baseline and another configuration are not both driven yet.",
+        };
+        out.push('\n');
+        wrapped(out, words);
+    } else {
         let words = format!(
             "Differences are pressures at {} km/h in standard air, ± their 95 % half-width; changed is said at 5 % over all taps \
              and configurations of a target together, no change by each interval alone; a change below {} {} at {} km/h is not worth knowing.",
