@@ -541,3 +541,35 @@ fn check_warns_of_a_tube_slower_than_the_outing_settles() {
     assert_eq!(answer.status, Some(0), "{}", answer.err);
     assert!(answer.err.contains("channel `p1` asks for 6.28 s"), "{}{}", answer.out, answer.err);
 }
+
+#[test]
+fn a_file_of_keys_is_checked_with_line_and_remedy() {
+    let desk = Desk::new();
+    let said = |text: &str| {
+        desk.write("keys.toml", text.as_bytes());
+        let answer = desk.run("check keys.toml");
+        (answer.status, answer.err)
+    };
+    let head = "steadytap = \"keys 1\"\n";
+    assert_eq!(said(&format!("{head}[keys]\ntake = [\"Space\", \"F5\"]\nmark = \"x\"\n")).0, Some(0));
+    for (text, told) in [
+        (format!("{head}[keys]\nmark = \"x\"\nmrk = \"y\"\n"), "no key named `mrk`|keys.toml:4:7"),
+        (format!("{head}[keys]\ntake = \"z\"\n"), "both `take` and `zero`|keys.toml:3:8"),
+        (format!("{head}[keys]\ntake = \"Hyper\"\n"), "`Hyper` is no key|keys.toml:3:8"),
+        (format!("{head}[sounds]\nkep = \"a.wav\"\n"), "no sound `kep`|window, steady, held, kept"),
+        (format!("{head}[kees]\n"), "unknown field|keys.toml:2"),
+        ("steadytap = \"keys 2\"\n".to_string(), "no file of keys that this program reads|keys.toml:1:1"),
+    ] {
+        let (status, err) = said(&text);
+        assert_eq!(status, Some(1), "{text}");
+        told.split('|').for_each(|part| assert!(err.contains(part), "`{part}` in {err}"));
+    }
+}
+
+#[test]
+fn two_outputs_are_not_mixed_on_standard_output() {
+    let desk = Desk::driven();
+    let answer = desk.run("reduce van.session --csv - --json -");
+    assert_eq!((answer.status, answer.out.as_str()), (Some(1), ""));
+    assert!(answer.err.contains("mixed on standard output"), "{}", answer.err);
+}

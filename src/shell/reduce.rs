@@ -41,6 +41,11 @@ pub fn reduce(task: &Task) -> Result<Vec<String>, Trouble> {
     for output in [&task.report, &task.csv, &task.json] {
         files::spares(output.as_deref(), &task.sessions)?;
     }
+    let to_stdout = [&task.report, &task.csv, &task.json].into_iter().flatten().filter(|p| *p == Path::new("-"));
+    if to_stdout.count() > 1 {
+        let hint = "give one of them a file name";
+        return Err(Trouble::new("two outputs would be mixed on standard output").hint(hint));
+    }
     let mut degraded = Vec::new();
     let (mut sessions, mut inputs) = (Vec::new(), Vec::new());
     for path in &task.sessions {
