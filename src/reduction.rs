@@ -220,7 +220,8 @@ pub fn reduce(sessions: &[Session], options: &Options) -> Result<Reduction, Redu
     let scatter = scatter::cautions(&reduction, &outliers);
     reduction.flags.extend(scatter);
     let faults = plumbing::faults(&reduction, sessions);
-    reduction.flags.extend(faults.iter().map(ToString::to_string));
+    // First of all: what is said of a tap with a fault is worth nothing.
+    reduction.flags.splice(0..0, faults.iter().map(ToString::to_string));
     reduction.flags.extend(force::without_area(&setup.car, &reduction));
     Ok(reduction)
 }
