@@ -13,6 +13,7 @@ pub mod ear;
 pub mod engine;
 pub mod feed;
 pub mod files;
+pub mod holder;
 pub mod journal;
 pub mod keyfile;
 pub mod listen;
