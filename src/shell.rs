@@ -26,6 +26,7 @@ pub mod reducer;
 pub mod rehold;
 pub mod serial;
 pub mod speaker;
+pub mod storage;
 pub mod terminal;
 pub mod watch;
 

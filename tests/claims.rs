@@ -8,6 +8,7 @@
 
 mod bad_configs;
 mod command_line;
+mod crash_model;
 mod finish;
 mod holds;
 mod layers;
