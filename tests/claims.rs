@@ -9,6 +9,7 @@
 mod bad_configs;
 mod command_line;
 mod crash_model;
+mod disk_trouble;
 mod finish;
 mod holds;
 mod layers;
@@ -30,6 +31,7 @@ mod simulate_van;
 mod sound;
 mod starting_points;
 mod statistics;
+mod terminal_trouble;
 mod torn_session_recovers;
 mod units;
 mod workshop;

@@ -52,13 +52,15 @@ struct Node {
 }
 
 #[derive(Clone, Debug, Default)]
-struct Model {
+pub struct Model {
     files: BTreeMap<PathBuf, Node>,
     calls: usize,
     fault: Option<(usize, Fault)>,
     /// After the fault every call in the first so many places fails as well.
-    dead_places: usize,
-    failed: bool,
+    pub dead_places: usize,
+    pub failed: bool,
+    /// Free bytes.
+    pub free: Option<u64>,
     /// The power is cut before this call; nothing that comes later happens.
     cut_at: Option<usize>,
 }
@@ -72,6 +74,11 @@ enum Verdict {
 }
 
 impl Model {
+    /// Nothing goes wrong yet.
+    pub fn with_room(free: u64) -> Self {
+        Self { free: Some(free), ..Self::default() }
+    }
+
     fn verdict(&mut self, path: &Path) -> Verdict {
         let call = self.calls;
         self.calls += 1;
@@ -111,7 +118,12 @@ impl Model {
         (self.fault, self.cut_at, self.failed) = (None, None, false);
     }
 
-    /// The notes in all files, and what could not be believed.
+    /// What a read of this file gives.
+    pub fn bytes(&self, path: &str) -> Option<&[u8]> {
+        self.files.get(Path::new(path)).map(|node| node.live.as_slice())
+    }
+
+    /// The notes in all sessions.
     fn notes(&self) -> Vec<String> {
         let whole = self.files.iter().filter(|(path, _)| path.extension().is_some_and(|e| e == "session"));
         let entries = whole.flat_map(|(_, node)| codec::read(&node.live).entries);
@@ -125,7 +137,7 @@ impl Model {
 
 /// The model as a storage.
 #[derive(Clone, Default)]
-struct Shelf(Arc<Mutex<Model>>);
+pub struct Shelf(pub Arc<Mutex<Model>>);
 
 struct Handle {
     shelf: Shelf,
@@ -134,7 +146,7 @@ struct Handle {
 }
 
 impl Shelf {
-    fn model(&self) -> std::sync::MutexGuard<'_, Model> {
+    pub fn model(&self) -> std::sync::MutexGuard<'_, Model> {
         self.0.lock().unwrap()
     }
 
@@ -182,7 +194,7 @@ impl Storage for Shelf {
     }
 
     fn free_space(&self, _: &Path) -> Option<u64> {
-        None
+        self.model().free
     }
 
     fn fallbacks(&self) -> Vec<PathBuf> {
@@ -245,6 +257,10 @@ impl StoredFile for Handle {
                 Ok(())
             }
         }
+    }
+
+    fn is_named(&self) -> bool {
+        self.shelf.model().files.contains_key(&self.path)
     }
 
     fn truncate(&self, length: u64) -> io::Result<()> {

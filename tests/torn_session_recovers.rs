@@ -397,11 +397,11 @@ fn a_directory_that_may_not_be_written_gives_an_error_and_no_file() {
 
 /// A file system of `kib` KiB, unmounted when dropped; none where this process may not mount.
 #[cfg(target_os = "linux")]
-struct Tiny(tempfile::TempDir);
+pub struct Tiny(pub tempfile::TempDir);
 
 #[cfg(target_os = "linux")]
 impl Tiny {
-    fn new(kib: usize) -> Option<Self> {
+    pub fn new(kib: usize) -> Option<Self> {
         let dir = tempfile::tempdir().unwrap();
         let mounted = std::process::Command::new("mount")
             .args(["-t", "tmpfs", "-o", &format!("size={kib}k"), "tmpfs"])

@@ -138,6 +138,9 @@ impl Journal {
         let file = self.file.as_mut().ok_or_else(|| io::Error::other("not written since the first failure"))?;
         file.write_all(lines)?;
         file.sync_data()?;
+        if !file.is_named() {
+            return Err(io::Error::new(io::ErrorKind::NotFound, "the file was removed"));
+        }
         self.synced = self.content.len();
         Ok(())
     }
@@ -163,6 +166,11 @@ impl Journal {
     /// Where the session is being written now.
     pub fn path(&self) -> &Path {
         &self.path
+    }
+
+    /// What it is written to.
+    pub fn storage(&self) -> &Arc<dyn Storage> {
+        &self.storage
     }
 
     /// What is wrong, if anything.

@@ -54,6 +54,8 @@ pub trait StoredFile: Read + Write + Send {
     /// # Errors
     /// When it is not on the disk.
     fn sync_data(&self) -> io::Result<()>;
+    /// Its name still stands in its directory: what is written to a file without one is lost when it is closed.
+    fn is_named(&self) -> bool;
     /// Cuts the file.
     ///
     /// # Errors
@@ -121,6 +123,17 @@ impl StoredFile for File {
 
     fn sync_data(&self) -> io::Result<()> {
         Self::sync_data(self)
+    }
+
+    #[cfg(unix)]
+    fn is_named(&self) -> bool {
+        use std::os::unix::fs::MetadataExt;
+        self.metadata().is_ok_and(|found| found.nlink() > 0)
+    }
+
+    #[cfg(not(unix))]
+    fn is_named(&self) -> bool {
+        true // An open file cannot be removed there.
     }
 
     fn truncate(&self, length: u64) -> io::Result<()> {
