@@ -11,7 +11,7 @@ use crate::pneumatics::{self, Gas, Tube};
 use crate::shell::feed::Feed;
 use crate::shell::outing::{self, Ending, Plan};
 use crate::shell::player::{Pace, Source};
-use crate::shell::{Trouble, check, cues, files, listen, reduce, rehold, serial};
+use crate::shell::{Trouble, check, cues, files, listen, reduce, rehold, say, serial};
 use crate::simulate;
 use clap::{Args, CommandFactory, Parser, Subcommand};
 use std::path::{Path, PathBuf};
@@ -261,16 +261,16 @@ pub fn run(words: impl IntoIterator<Item = std::ffi::OsString>) -> u8 {
     match outcome {
         Outcome::Done => 0,
         Outcome::Misused(trouble) => {
-            eprintln!("{trouble}");
+            say(trouble);
             2
         }
         Outcome::Degraded(what) => {
-            what.iter().for_each(|what| eprintln!("degraded: {what}"));
+            what.iter().for_each(|what| say(format!("degraded: {what}")));
             3
         }
         Outcome::Problems(troubles) => {
             for (i, trouble) in troubles.iter().enumerate() {
-                eprintln!("{}{trouble}", if i > 0 { "\n" } else { "" });
+                say(format!("{}{trouble}", if i > 0 { "\n" } else { "" }));
             }
             1
         }

@@ -13,8 +13,10 @@ pub mod ear;
 pub mod engine;
 pub mod feed;
 pub mod files;
+pub mod going_on;
 pub mod holder;
 pub mod journal;
+pub mod keyboard;
 pub mod keyfile;
 pub mod listen;
 pub mod live;
@@ -27,11 +29,21 @@ pub mod reducer;
 pub mod rehold;
 pub mod serial;
 pub mod solo;
+pub mod space;
 pub mod speaker;
+pub mod storage;
 pub mod terminal;
 pub mod watch;
 
 use std::fmt;
+use std::io::Write;
+
+/// Words on standard error. A terminal that has gone or hangs takes none, and that stops nobody.
+pub fn say(words: impl fmt::Display) {
+    if !terminal::abandoned() {
+        let _ = writeln!(std::io::stderr().lock(), "{words}");
+    }
+}
 
 /// What a person is told when something cannot be done: what, where, and the next thing to do.
 #[derive(Clone, Debug, PartialEq, Eq)]

@@ -8,6 +8,8 @@
 
 mod bad_configs;
 mod command_line;
+mod crash_model;
+mod disk_trouble;
 mod finish;
 mod holds;
 mod layers;
@@ -31,6 +33,7 @@ mod solo;
 mod sound;
 mod starting_points;
 mod statistics;
+mod terminal_trouble;
 mod torn_session_recovers;
 mod units;
 mod workshop;

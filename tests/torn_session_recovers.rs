@@ -321,6 +321,8 @@ fn a_second_writer_is_refused_and_the_first_goes_on_unharmed() {
     assert!(first.append(&[&note(1)]));
     let trouble = open_error(&path);
     assert!(trouble.what.contains("another steadytap is writing"), "{trouble}");
+    #[cfg(target_os = "linux")]
+    assert!(trouble.what.contains(&format!("process {}", std::process::id())), "{trouble}");
     assert!(first.append(&[&note(2), &note(3)]));
     assert_eq!(first.trouble(), None);
     assert_eq!(read(&path).entries, [note(1), note(2), note(3)]);
@@ -397,11 +399,11 @@ fn a_directory_that_may_not_be_written_gives_an_error_and_no_file() {
 
 /// A file system of `kib` KiB, unmounted when dropped; none where this process may not mount.
 #[cfg(target_os = "linux")]
-struct Tiny(tempfile::TempDir);
+pub struct Tiny(pub tempfile::TempDir);
 
 #[cfg(target_os = "linux")]
 impl Tiny {
-    fn new(kib: usize) -> Option<Self> {
+    pub fn new(kib: usize) -> Option<Self> {
         let dir = tempfile::tempdir().unwrap();
         let mounted = std::process::Command::new("mount")
             .args(["-t", "tmpfs", "-o", &format!("size={kib}k"), "tmpfs"])

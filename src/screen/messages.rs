@@ -38,6 +38,13 @@ fn of_entry(entry: &Entry, on_disk: bool) -> Option<(Weight, String)> {
         Entry::Air(_) => (Weight::Good, "air noted".to_string()),
         Entry::Fault(f) if f.what == "lost" => (Weight::Trouble, format!("port {} lost: check its cable", f.place)),
         Entry::Fault(f) if f.what == "found" => (Weight::Good, format!("port {} is back", f.place)),
+        Entry::Fault(f) if f.place == "record" && f.what == "stopped" => {
+            (Weight::Trouble, "the record stopped; segments are kept all the same".to_string())
+        }
+        Entry::Fault(f) if f.place == "record" => (Weight::Good, "a new record begins".to_string()),
+        Entry::Fault(f) if f.what == "suspended" => {
+            (Weight::Refused, format!("the program slept; port {} was not read meanwhile", f.place))
+        }
         Entry::Fault(f) => (Weight::Refused, format!("port {}: {}", f.place, f.what)),
         Entry::Session(_) | Entry::End(_) => return None,
     })

@@ -1,7 +1,8 @@
 //! `check`: rig, car, outing, session and record files; every problem at once, with its place and remedy.
 
 use super::player::Source;
-use super::{Trouble, files};
+use super::storage::Disk;
+use super::{Trouble, files, space};
 use crate::config::{self, Kind, Severity};
 use crate::session::codec;
 use std::path::Path;
@@ -69,9 +70,21 @@ fn toml(path: &Path) -> Found {
 
 fn outing(path: &Path) -> Found {
     match files::setup_and_warnings(path) {
-        Ok((_, warnings)) => Found { summary: "outing".to_string(), errors: Vec::new(), warnings },
+        Ok((setup, mut warnings)) => {
+            warnings.extend(little_room(&setup));
+            Found { summary: "outing".to_string(), errors: Vec::new(), warnings }
+        }
         Err(errors) => Found { summary: "outing".to_string(), errors, warnings: Vec::new() },
     }
+}
+
+/// The disk of the sessions' own place is nearly full.
+fn little_room(setup: &config::Setup) -> Option<Trouble> {
+    let place = files::data_directory()?.join("outing.session");
+    let (free, _) = space::room(&Disk, &place, &setup.rig)?;
+    let words = space::low(free, space::most_bytes_per_s(&setup.rig))?;
+    let directory = place.parent()?.display().to_string();
+    Some(Trouble::new(words).at(directory).hint("or give another disk with --session when you drive"))
 }
 
 fn sorted(word: &str, problems: &[config::Problem]) -> Found {

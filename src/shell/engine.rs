@@ -2,12 +2,14 @@
 
 use super::journal::Journal;
 use super::recorder::Recorder;
+use super::space::{Judgement, Space};
 use crate::config::Setup;
-use crate::pipeline::{Event, Input, Pipeline};
-use crate::session::{Entry, Session};
+use crate::pipeline::{Event, Input, Pipeline, What};
+use crate::session::{Entry, Fault, Session};
 use crate::stream::command::Command;
 use crate::stream::splitter::{Piece, Splitter};
 use crate::units::StreamTime;
+use std::time::Instant;
 
 /// Something that reached the program, stamped where it was read.
 #[derive(Clone, Debug)]
@@ -59,6 +61,8 @@ pub struct Outcome {
     pub event: Event,
     /// For an entry: its line is on a disk. For anything else: true.
     pub on_disk: bool,
+    /// It was handed out before, when its line was on no disk yet.
+    pub again: bool,
 }
 
 /// Pipeline, session file and record.
@@ -73,6 +77,14 @@ pub struct Engine {
     /// What is added to every stamp: a session that goes on does so after its last entry.
     shift_us: i64,
     last: StreamTime,
+    /// Segments that wait in memory for a disk.
+    waiting: Vec<Event>,
+    space: Space,
+    /// What became of records that stopped.
+    stopped: Vec<String>,
+    /// Bytes of records before the present one.
+    recorded: u64,
+    notices: Vec<String>,
     /// Segments whose line is on a disk.
     pub on_disk: std::collections::BTreeSet<u32>,
 }
@@ -94,6 +106,11 @@ impl Engine {
             events: Vec::new(),
             shift_us: 0,
             last: StreamTime::ZERO,
+            waiting: Vec::new(),
+            space: Space::new(&setup.rig),
+            stopped: Vec::new(),
+            recorded: 0,
+            notices: Vec::new(),
         }
     }
 
@@ -206,11 +223,81 @@ impl Engine {
         let events = std::mem::take(&mut self.events);
         let entries: Vec<&Entry> = events.iter().filter_map(Event::entry).collect();
         let on_disk = entries.is_empty() || self.journal.append(&entries);
-        if on_disk {
-            self.on_disk
-                .extend(entries.iter().filter_map(|e| if let Entry::Segment(s) = e { Some(s.id) } else { None }));
+        if !on_disk {
+            self.waiting.extend(events.iter().filter(|e| segment(e).is_some()).cloned());
+        } else if !entries.is_empty() {
+            self.on_disk.extend(events.iter().filter_map(segment));
+            self.landed(out);
         }
-        out.extend(events.into_iter().map(|event| Outcome { on_disk: on_disk || event.entry().is_none(), event }));
+        let outcome = |event: Event| Outcome { on_disk: on_disk || event.entry().is_none(), event, again: false };
+        out.extend(events.into_iter().map(outcome));
+    }
+
+    /// What waited in memory is on a disk now.
+    fn landed(&mut self, out: &mut Vec<Outcome>) {
+        self.on_disk.extend(self.waiting.iter().filter_map(segment));
+        out.extend(self.waiting.drain(..).map(|event| Outcome { event, on_disk: true, again: true }));
+    }
+
+    /// Looks after disk and record; to be called several times a second.
+    pub fn look_after(&mut self, now: Instant, out: &mut Vec<Outcome>) {
+        self.tell_of_record(out);
+        if !self.space.due(now) {
+            return;
+        }
+        if !self.journal.all_on_disk() && self.journal.append(&[]) {
+            self.landed(out);
+        }
+        let Some(free) = self.recorder.as_ref().and_then(|r| self.journal.storage().free_space(r.path())) else {
+            return;
+        };
+        let recorded = self.recorder.as_ref().filter(|r| r.trouble().is_none()).map(|r| self.recorded + r.written());
+        match self.space.judge(now, free, recorded) {
+            Judgement::Fine => {}
+            Judgement::Low(words) => self.notices.push(words),
+            Judgement::Stop => {
+                self.recorder.iter_mut().for_each(Recorder::give_way);
+                self.tell_of_record(out);
+            }
+            Judgement::Room => self.record_again(out),
+        }
+    }
+
+    /// A record that stopped is an event, once.
+    fn tell_of_record(&mut self, out: &mut Vec<Outcome>) {
+        let trouble = self.recorder.as_ref().and_then(Recorder::trouble);
+        if let Some(trouble) = trouble.filter(|t| self.stopped.last().is_none_or(|told| told != t)) {
+            self.stopped.push(trouble.to_string());
+            self.fault("record", "stopped", out);
+        }
+    }
+
+    /// There is room again: the next record begins here.
+    fn record_again(&mut self, out: &mut Vec<Outcome>) {
+        let Some(old) = self.recorder.as_ref().filter(|r| r.waits_for_space()) else { return };
+        let Ok(mut new) = old.another() else { return };
+        if self.every {
+            new.command(self.last, &Command::TakeEvery);
+        }
+        self.recorded += old.written();
+        self.recorder = Some(new);
+        self.fault("record", "resumed", out);
+    }
+
+    fn fault(&mut self, place: &str, what: &str, out: &mut Vec<Outcome>) {
+        let fault = Fault { t: self.last, place: place.to_string(), what: what.to_string() };
+        self.events.push(Event { at: self.last, what: What::Entry(Box::new(Entry::Fault(fault))) });
+        self.settle(out);
+    }
+
+    /// What should be said, beside events, since the last call.
+    pub fn notices(&mut self) -> Vec<String> {
+        std::mem::take(&mut self.notices)
+    }
+
+    /// Records that stopped, in words.
+    pub fn stopped(&self) -> &[String] {
+        &self.stopped
     }
 
     /// Nothing arrived for a while: what is due on the record is written.
@@ -222,11 +309,12 @@ impl Engine {
 
     /// The stream is over: what waits is kept, and the session gets its end.
     pub fn finish(&mut self, out: &mut Vec<Outcome>) {
-        self.pipeline.finish(&mut self.events);
-        self.settle(out);
         if let Some(recorder) = &mut self.recorder {
             recorder.flush();
         }
+        self.tell_of_record(out);
+        self.pipeline.finish(&mut self.events);
+        self.settle(out);
     }
 
     /// What is added to every stamp, µs.
@@ -245,4 +333,9 @@ impl Engine {
     pub fn recorder(&self) -> Option<&Recorder> {
         self.recorder.as_ref()
     }
+}
+
+/// The number of a segment.
+fn segment(event: &Event) -> Option<u32> {
+    if let Some(Entry::Segment(s)) = event.entry() { Some(s.id) } else { None }
 }

@@ -3,6 +3,7 @@
 use super::Trouble;
 use super::clock::StreamClock;
 use super::engine::Arrival;
+use super::going_on::EndsRun;
 use super::player::{Pace, Source};
 use super::serial;
 use crate::config::Rig;
@@ -72,7 +73,10 @@ fn ports(readers: Vec<serial::Reader>) -> Running {
     let clock = StreamClock::start(StreamTime::ZERO, Some(1.0));
     for reader in readers {
         let sender = sender.clone();
-        std::thread::spawn(move || reader.run(clock, |arrival| sender.send(arrival).is_ok()));
+        std::thread::spawn(move || {
+            let _guard = EndsRun(Sender::Free(sender.clone()));
+            reader.run(clock, |arrival| sender.send(arrival).is_ok());
+        });
     }
     Running { arrivals, sender: Sender::Free(sender), clock: Some(clock), played: None }
 }
@@ -81,6 +85,7 @@ fn record(mut source: Box<Source>, pace: Pace) -> Running {
     let (sender, arrivals) = mpsc::sync_channel(AHEAD);
     let to = sender.clone();
     let played = std::thread::spawn(move || {
+        let _guard = EndsRun(Sender::Bounded(to.clone()));
         let played = source.play(pace, &mut |arrival| to.send(arrival).is_ok());
         let _ = to.send(Arrival::End);
         played.map(|()| source.tally().clone())
@@ -92,6 +97,7 @@ fn van(outing: simulate::Outing, pace: Pace, rig: Rig) -> Running {
     let (sender, arrivals) = mpsc::sync_channel(AHEAD);
     let to = sender.clone();
     std::thread::spawn(move || {
+        let _guard = EndsRun(Sender::Bounded(to.clone()));
         let clock = StreamClock::start(StreamTime::ZERO, pace.speed());
         for moment in outing {
             let Some((at, arrival)) = van_arrival(&rig, moment) else { continue };

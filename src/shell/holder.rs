@@ -1,12 +1,12 @@
 //! Who holds the lock of a file: a name and a number to end, where the system tells.
 
-use std::fs::File;
+use std::path::Path;
 
 /// The process that holds a lock on this file.
 #[cfg(target_os = "linux")]
-pub fn of(file: &File) -> Option<String> {
+pub fn of(path: &Path) -> Option<String> {
     use std::os::unix::fs::MetadataExt;
-    let inode = file.metadata().ok()?.ino().to_string();
+    let inode = path.metadata().ok()?.ino().to_string();
     let locks = std::fs::read_to_string("/proc/locks").ok()?;
     // `1: FLOCK  ADVISORY  WRITE 1234 08:01:5678 0 EOF` (proc_locks(5)).
     let pid = locks.lines().find_map(|line| {
@@ -20,6 +20,6 @@ pub fn of(file: &File) -> Option<String> {
 
 /// The process that holds a lock on this file: other systems do not say.
 #[cfg(not(target_os = "linux"))]
-pub fn of(_: &File) -> Option<String> {
+pub fn of(_: &Path) -> Option<String> {
     None
 }

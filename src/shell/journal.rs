@@ -4,19 +4,23 @@
 //! the whole session is written to a fallback place and goes on there, and that is said. The lines of this run stay in memory for it.
 
 use super::Trouble;
+use super::storage::{Disk, Kind, Storage, StoredFile};
 use crate::session::codec::{self, Contents};
 use crate::session::{Entry, Header, Session};
-use std::fs::{File, OpenOptions, TryLockError};
-use std::io::{self, Read, Seek, SeekFrom, Write};
+use std::io::{self, Read, Write};
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
 /// Largest session file that is read, bytes.
 const LARGEST: u64 = 1 << 30;
 
 /// An open session file.
 pub struct Journal {
+    storage: Arc<dyn Storage>,
+    /// Its own name, wherever it has to go.
+    name: String,
     path: PathBuf,
-    file: Option<File>,
+    file: Option<Box<dyn StoredFile>>,
     /// The whole file as it should be: what was there, and what this run added.
     content: Vec<u8>,
     /// How much of `content` is on the disk.
@@ -35,51 +39,93 @@ pub struct Opened {
 }
 
 impl Journal {
-    /// Opens `path` to go on with it, or makes it with `header`.
+    /// Opens `path` on the disk to go on with it, or makes it with `header`.
     ///
     /// # Errors
     /// [`Trouble`] when another program writes it, it is no session, it is of another setup, or it cannot be made.
     pub fn open(path: &Path, header: &Header) -> Result<Opened, Trouble> {
+        Self::open_on(Arc::new(Disk), path, header)
+    }
+
+    /// The same in any storage.
+    ///
+    /// # Errors
+    /// As [`Journal::open`].
+    pub fn open_on(storage: Arc<dyn Storage>, path: &Path, header: &Header) -> Result<Opened, Trouble> {
         let place = path.display();
-        if std::fs::symlink_metadata(path).is_ok_and(|m| !m.is_file()) {
+        let kind = storage.kind(path);
+        if kind == Kind::Other {
             return Err(Trouble::new("the session is no plain file")
                 .at(place)
                 .hint("give another name with --session"));
         }
-        let new = !path.exists();
-        let file = OpenOptions::new().read(true).append(true).create(true).open(path);
-        let mut file = file.map_err(|e| cannot_make(path, &e))?;
-        lock(&file, path)?;
-        let mut bytes = Vec::new();
-        let read = (&mut file).take(LARGEST).read_to_end(&mut bytes);
-        read.map_err(|e| Trouble::new(format!("the session cannot be read: {e}")).at(place))?;
-        if bytes.is_empty() {
-            return Self::begin(path, file, header, new);
+        let mut file = storage.open(path).map_err(|e| cannot_make(path, &e))?;
+        if !file.lock() {
+            let who = super::holder::of(path).map_or(String::new(), |who| format!(" ({who})"));
+            return Err(Trouble::new(format!("another steadytap is writing this session{who}"))
+                .at(place)
+                .hint("end that one first, or give another name with --session"));
         }
-        let contents = codec::read(&bytes);
-        // Only what is our session may be repaired: anything else is left as it lies.
-        resumable(path, &contents, header)?;
-        let repaired = repair(path, &file, &mut bytes, &contents)?;
-        let synced = bytes.len();
-        let journal = Self { path: path.to_path_buf(), file: Some(file), content: bytes, synced, trouble: None };
-        Ok(Opened { journal, before: contents.session(), repaired })
+        let mut bytes = Vec::new();
+        let read = (&mut file).take(LARGEST + 1).read_to_end(&mut bytes);
+        read.map_err(|e| Trouble::new(format!("the session cannot be read: {e}")).at(&place))?;
+        if bytes.len() as u64 > LARGEST {
+            return Err(Trouble::new(format!("the session is larger than {} MiB", LARGEST >> 20))
+                .at(place)
+                .hint("give another name with --session"));
+        }
+        let name = path.file_name().map_or("outing.session".into(), |n| n.to_string_lossy()).into_owned();
+        let journal = Self {
+            storage,
+            name,
+            path: path.to_path_buf(),
+            file: Some(file),
+            content: bytes,
+            synced: 0,
+            trouble: None,
+        };
+        if journal.content.is_empty() { journal.begin(header, kind == Kind::Missing) } else { journal.go_on(header) }
     }
 
-    fn begin(path: &Path, file: File, header: &Header, new: bool) -> Result<Opened, Trouble> {
-        let mut journal =
-            Self { path: path.to_path_buf(), file: Some(file), content: Vec::new(), synced: 0, trouble: None };
+    fn begin(mut self, header: &Header, new: bool) -> Result<Opened, Trouble> {
         let header = Entry::Session(Box::new(header.clone()));
-        let written = journal.try_append(codec::encode(&header).as_bytes());
-        written.and_then(|()| if new { sync_directory(path) } else { Ok(()) }).map_err(|e| {
+        let written = self.try_append(codec::encode(&header).as_bytes());
+        written.and_then(|()| self.storage.sync_directory(&self.path)).map_err(|e| {
             if new {
-                let _ = std::fs::remove_file(path);
+                self.storage.remove(&self.path);
             }
-            cannot_make(path, &e)
+            cannot_make(&self.path, &e)
         })?;
-        Ok(Opened { journal, before: None, repaired: None })
+        Ok(Opened { journal: self, before: None, repaired: None })
     }
 
-    /// Appends entries and syncs once. True when all of them are on a disk, here or in the fallback place.
+    fn go_on(mut self, header: &Header) -> Result<Opened, Trouble> {
+        let contents = codec::read(&self.content);
+        // Only what is our session may be repaired: anything else is left as it lies.
+        resumable(&self.path, &contents, header)?;
+        let failed = |e: io::Error| {
+            Trouble::new(format!("the session cannot be gone on with: {e}"))
+                .at(self.path.display())
+                .hint("copy it to a good disk and go on with the copy")
+        };
+        let torn = self.content.split_off(contents.whole_length);
+        let file = self.file.as_mut().expect("it was opened a moment ago");
+        if contents.end_missing {
+            self.content.push(b'\n');
+            file.write_all(b"\n").map_err(failed)?;
+        }
+        let repaired = if torn.is_empty() { None } else { Some(set_aside(&*self.storage, &self.path, &torn)) };
+        let repaired = repaired.transpose().map_err(failed)?;
+        if repaired.is_some() {
+            file.truncate(contents.whole_length as u64).map_err(failed)?;
+        }
+        // An earlier run that was killed may have written lines, or the name, that are not on the disk yet.
+        file.sync_data().and_then(|()| self.storage.sync_directory(&self.path)).map_err(failed)?;
+        self.synced = self.content.len();
+        Ok(Opened { journal: self, before: contents.session(), repaired })
+    }
+
+    /// Appends entries and syncs once. True when everything up to them is on a disk, here or in the fallback place.
     pub fn append(&mut self, entries: &[&Entry]) -> bool {
         let lines: String = entries.iter().map(|e| codec::encode(e)).collect();
         match self.try_append(lines.as_bytes()) {
@@ -93,6 +139,9 @@ impl Journal {
         let file = self.file.as_mut().ok_or_else(|| io::Error::other("not written since the first failure"))?;
         file.write_all(lines)?;
         file.sync_data()?;
+        if !file.is_named() {
+            return Err(io::Error::new(io::ErrorKind::NotFound, "the file was removed"));
+        }
         self.synced = self.content.len();
         Ok(())
     }
@@ -100,22 +149,29 @@ impl Journal {
     /// Writes the whole session to the first fallback place that takes it.
     fn rescue(&mut self, error: &io::Error) -> bool {
         let failed = self.path.display().to_string();
-        self.file = None;
-        let name = self.path.file_name().map_or("outing.session".into(), |n| n.to_string_lossy().into_owned());
-        for directory in [super::files::data_directory(), Some(std::env::temp_dir())].into_iter().flatten() {
-            if let Ok((path, file)) = write_whole(&directory, &name, &self.content) {
+        let first = self.file.take().is_some();
+        for directory in self.storage.fallbacks() {
+            if let Ok((path, file)) = write_whole(&*self.storage, &directory, &self.name, &self.content) {
                 self.trouble = Some(format!("{failed}: {error}; the session goes on in {}", path.display()));
                 (self.path, self.file, self.synced) = (path, Some(file), self.content.len());
                 return true;
             }
         }
-        self.trouble = Some(format!("{failed}: {error}; nothing more is on the disk, free some space"));
+        // Of several failures in a row the first tells what is wrong.
+        if first {
+            self.trouble = Some(format!("{failed}: {error}; nothing more is on the disk, free some space"));
+        }
         false
     }
 
     /// Where the session is being written now.
     pub fn path(&self) -> &Path {
         &self.path
+    }
+
+    /// What it is written to.
+    pub fn storage(&self) -> &Arc<dyn Storage> {
+        &self.storage
     }
 
     /// What is wrong, if anything.
@@ -134,22 +190,42 @@ impl Journal {
     }
 }
 
-fn write_whole(directory: &Path, name: &str, content: &[u8]) -> io::Result<(PathBuf, File)> {
-    std::fs::create_dir_all(directory)?;
+fn write_whole(
+    storage: &dyn Storage,
+    directory: &Path,
+    name: &str,
+    content: &[u8],
+) -> io::Result<(PathBuf, Box<dyn StoredFile>)> {
     for n in 1..1000 {
         let path = directory.join(format!("rescued-{n}-{name}"));
-        match OpenOptions::new().append(true).create_new(true).open(&path) {
-            Ok(mut file) => {
-                file.write_all(content)?;
-                file.sync_data()?;
-                sync_directory(&path)?;
-                return Ok((path, file));
+        let mut file = match storage.create(&path) {
+            Err(e) if e.kind() == io::ErrorKind::AlreadyExists => continue,
+            made => made?,
+        };
+        let _ = file.lock();
+        let written = file.write_all(content).and_then(|()| file.sync_data());
+        return match written.and_then(|()| storage.sync_directory(&path)) {
+            Ok(()) => Ok((path, file)),
+            Err(e) => {
+                storage.remove(&path);
+                Err(e)
             }
-            Err(e) if e.kind() == io::ErrorKind::AlreadyExists => {}
-            Err(e) => return Err(e),
-        }
+        };
     }
     Err(io::ErrorKind::AlreadyExists.into())
+}
+
+/// Saves a torn tail in `*.torn`, before it is cut off.
+fn set_aside(storage: &dyn Storage, path: &Path, tail: &[u8]) -> io::Result<PathBuf> {
+    let mut torn = path.as_os_str().to_owned();
+    torn.push(".torn");
+    let torn = PathBuf::from(torn);
+    let mut saved = storage.open(&torn)?;
+    saved.write_all(tail)?;
+    saved.write_all(b"\n")?;
+    saved.sync_data()?;
+    storage.sync_directory(&torn)?;
+    Ok(torn)
 }
 
 fn cannot_make(path: &Path, error: &io::Error) -> Trouble {
@@ -162,40 +238,6 @@ fn cannot_make(path: &Path, error: &io::Error) -> Trouble {
         _ => "give another place with --session",
     };
     Trouble::new(format!("the session file cannot be written: {error}")).at(path.display()).hint(hint)
-}
-
-fn lock(file: &File, path: &Path) -> Result<(), Trouble> {
-    match file.try_lock() {
-        Ok(()) => Ok(()),
-        Err(TryLockError::WouldBlock) => Err(Trouble::new("another steadytap is writing this session")
-            .at(path.display())
-            .hint("end that one first, or give another name with --session")),
-        // A file system without locks (some network and USB ones): go on, nobody can be refused there.
-        Err(TryLockError::Error(_)) => Ok(()),
-    }
-}
-
-/// Moves a torn tail to `*.torn`, so that the next line starts clean.
-fn repair(path: &Path, file: &File, bytes: &mut Vec<u8>, contents: &Contents) -> Result<Option<PathBuf>, Trouble> {
-    let failed =
-        |e: io::Error| Trouble::new(format!("the session's torn end cannot be repaired: {e}")).at(path.display());
-    if contents.end_missing {
-        bytes.push(b'\n');
-        (&*file).write_all(b"\n").and_then(|()| file.sync_data()).map_err(failed)?;
-        return Ok(None);
-    }
-    if contents.whole_length == bytes.len() {
-        return Ok(None);
-    }
-    let tail = bytes.split_off(contents.whole_length);
-    let mut torn = path.as_os_str().to_owned();
-    torn.push(".torn");
-    let torn = PathBuf::from(torn);
-    let mut saved = OpenOptions::new().append(true).create(true).open(&torn).map_err(failed)?;
-    saved.write_all(&tail).and_then(|()| saved.write_all(b"\n")).and_then(|()| saved.sync_all()).map_err(failed)?;
-    file.set_len(contents.whole_length as u64).and_then(|()| file.sync_all()).map_err(failed)?;
-    (&*file).seek(SeekFrom::End(0)).map_err(failed)?;
-    Ok(Some(torn))
 }
 
 /// Whether these are the contents of a session that rests on the same setup.
@@ -212,15 +254,4 @@ fn resumable(path: &Path, contents: &Contents, header: &Header) -> Result<(), Tr
             .hint(hint));
     }
     Ok(())
-}
-
-#[cfg(unix)]
-fn sync_directory(path: &Path) -> io::Result<()> {
-    let directory = path.parent().filter(|p| !p.as_os_str().is_empty()).unwrap_or(Path::new("."));
-    File::open(directory)?.sync_all()
-}
-
-#[cfg(not(unix))]
-fn sync_directory(_: &Path) -> io::Result<()> {
-    Ok(()) // A directory cannot be opened for this there; the file system journals the name.
 }

@@ -6,19 +6,19 @@
 use super::ear::Ear;
 use super::engine::{Arrival, Engine, Outcome};
 use super::feed::{Running, Sender};
+use super::going_on::{Gone, Left, with_screen};
 use super::outing::Plan;
 use super::reducer::Reducer;
 use super::solo::Solo;
 use super::speaker::Speaker;
-use super::{Trouble, terminal};
+use super::{Trouble, keyboard, terminal};
 use crate::config::Convert;
 use crate::screen::keys::{self, Action};
 use crate::screen::seen::Surroundings;
 use crate::screen::{Face, Journal, Message, Overlay, Spot, View, Weight, messages};
 use crate::stream::command::Command;
 use crate::units::StreamTime;
-use crossterm::event::{Event as TerminalEvent, EventStream};
-use futures_util::StreamExt;
+use crossterm::event::Event as TerminalEvent;
 use std::path::PathBuf;
 use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, AtomicUsize, Ordering};
@@ -42,22 +42,27 @@ const PATIENCE: Duration = Duration::from_secs(1);
 /// # Errors
 /// [`Trouble`] when the terminal cannot be used, or one of the threads broke (everything kept is on the disk then).
 pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trouble> {
-    super::outing::stop_on_signals(running.sender.clone());
+    let gone = Gone::default();
+    let hung_up = gone.clone();
+    super::outing::stop_on_signals(running.sender.clone(), move |_| hung_up.say());
     let face = terminal::face(plan)?;
     let looked = Arc::new(AtomicUsize::new(NOBODY));
     let speaker = Speaker::start(&super::keyfile::own(plan.keys.as_deref())?.sounds, plan.solo)?;
     speaker.mute(plan.mute);
     let silent = Arc::new(AtomicBool::new(false));
     let alone = plan.solo.then(|| Alone { solo: Solo::default(), silent: silent.clone(), speaker: speaker.clone() });
-    let desk = Desk { alone, ..Desk::new(engine, running.clock, plan, (looked.clone(), Ear::new(speaker.clone()))) };
+    let desk = Desk {
+        alone,
+        gone: gone.clone(),
+        ..Desk::new(engine, running.clock, plan, (looked.clone(), Ear::new(speaker.clone())))
+    };
     let (publish, views) = watch::channel(desk.view());
     let keys_to = running.sender.clone();
     let (done, is_done) = channel();
     let rig = plan.rig.clone();
     let screen = std::thread::spawn(move || {
         let window = Window { views, face, looked, rig, speaker, silent };
-        let ended = terminal::guarded(|| screen(window, &keys_to));
-        keys_to.send(Arrival::Stop);
+        let ended = with_screen(&keys_to, &gone, || screen(window, &keys_to));
         let _ = done.send(());
         ended
     });
@@ -66,7 +71,10 @@ pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trou
     // The engine dropped its end of the views, and the screen leaves by itself unless its terminal hangs.
     let drawn = match is_done.recv_timeout(PATIENCE) {
         Ok(()) => screen.join().unwrap_or_else(|_| Err(Trouble::new("the screen broke"))),
-        Err(_) => Ok(()),
+        Err(_) => {
+            terminal::abandon();
+            Ok(())
+        }
     };
     terminal::restore();
     let engine = engine.map_err(|_| {
@@ -93,6 +101,10 @@ struct Desk {
     outcomes: Vec<Outcome>,
     ended: bool,
     ear: Ear,
+    /// The terminal has gone.
+    gone: Gone,
+    /// The run goes on without it, and keeps every full dwell.
+    unwatched: bool,
 }
 
 /// The driver is alone.
@@ -127,6 +139,8 @@ impl Desk {
             outcomes,
             ended: false,
             ear,
+            gone: Gone::default(),
+            unwatched: false,
         }
     }
 
@@ -146,9 +160,10 @@ impl Desk {
                 Err(RecvTimeoutError::Disconnected) => true,
             };
             let over = self.seconds.is_some_and(|s| self.now().since(first) as f64 >= s * 1e6);
-            if stop || over {
+            if stop || over || (self.ended && self.unwatched) {
                 break;
             }
+            self.look_after();
             let news = self.hear();
             if let Some(alone) = &self.alone {
                 alone.solo.guide(self.engine.pipeline(), self.now(), &alone.speaker);
@@ -164,6 +179,18 @@ impl Desk {
         publish.send_replace(self.view());
         self.ear.close();
         self.engine
+    }
+
+    /// Disk, record, and a terminal that has gone.
+    fn look_after(&mut self) {
+        self.engine.look_after(Instant::now(), &mut self.outcomes);
+        let at = self.now();
+        let told = self.engine.notices().into_iter().map(|text| Message { at, weight: Weight::Trouble, text });
+        self.messages.extend(told);
+        if self.gone.is_so() && !self.unwatched {
+            self.unwatched = true;
+            self.engine.keep_every(StreamTime::ZERO, &mut self.outcomes);
+        }
     }
 
     /// True when somebody wants to leave.
@@ -206,7 +233,11 @@ impl Desk {
     fn hear(&mut self) -> bool {
         self.ear.hear(&self.outcomes, self.engine.pipeline());
         self.ear.disk(self.trouble());
-        self.outcomes.iter().filter_map(|o| o.event.entry()).for_each(|entry| self.reducer.kept(entry));
+        self.outcomes
+            .iter()
+            .filter(|o| !o.again)
+            .filter_map(|o| o.event.entry())
+            .for_each(|entry| self.reducer.kept(entry));
         let sound = self.ear.news().map(|(weight, text)| Message { at: self.now(), weight, text });
         let news = !self.outcomes.is_empty() || sound.is_some();
         self.messages.extend(sound);
@@ -257,15 +288,16 @@ struct Window {
 }
 
 /// Draws views and reads keys until the engine is gone or somebody leaves.
-fn screen(window: Window, keys_to: &Sender) -> Result<(), Trouble> {
+fn screen(window: Window, keys_to: &Sender) -> Result<Left, Trouble> {
     let failed = |e: std::io::Error| Trouble::new(format!("the terminal cannot be used: {e}"));
     let runtime = tokio::runtime::Builder::new_current_thread().enable_all().build().map_err(failed)?;
-    runtime.block_on(drawing(window, keys_to)).map_err(failed)
+    let terminal = terminal::enter().map_err(failed)?;
+    // Once it could be taken, what cannot be drawn any more has gone.
+    Ok(runtime.block_on(drawing(terminal, window, keys_to)).unwrap_or(Left::TerminalGone))
 }
 
-async fn drawing(mut window: Window, keys_to: &Sender) -> std::io::Result<()> {
-    let mut terminal = terminal::enter()?;
-    let mut events = Some(EventStream::new());
+async fn drawing(mut terminal: terminal::Screen, mut window: Window, keys_to: &Sender) -> std::io::Result<Left> {
+    let mut events = keyboard::start();
     loop {
         let view = window.views.borrow_and_update().clone();
         keys::look(&view, &mut window.face);
@@ -276,11 +308,14 @@ async fn drawing(mut window: Window, keys_to: &Sender) -> std::io::Result<()> {
         let event = tokio::select! {
             changed = window.views.changed() => {
                 if changed.is_err() {
-                    return Ok(());
+                    return Ok(Left::Asked);
                 }
                 None
             }
-            event = next(&mut events) => event,
+            event = events.recv() => match event {
+                Some(event) => Some(event),
+                None => return Ok(Left::TerminalGone),
+            },
         };
         match event {
             // Alone any key of the remote says that the trouble was heard.
@@ -292,7 +327,7 @@ async fn drawing(mut window: Window, keys_to: &Sender) -> std::io::Result<()> {
                 Some(Action::Command(command)) => {
                     keys_to.send(Arrival::Command { at: StreamTime::ZERO, command });
                 }
-                Some(Action::Quit) => return Ok(()),
+                Some(Action::Quit) => return Ok(Left::Asked),
                 Some(Action::Suspend) => terminal.suspend()?,
                 Some(Action::Calibrate { channel, convert }) => window.calibrated(&channel, &convert),
                 Some(Action::Acknowledge) => window.speaker.acknowledge(),
@@ -319,18 +354,6 @@ impl Window {
         };
         if let Overlay::Calibration(c) = &mut self.face.overlay {
             c.told = Some(told);
-        }
-    }
-}
-
-/// The next event; never again after the terminal has gone, since its reader would spin.
-async fn next(events: &mut Option<EventStream>) -> Option<TerminalEvent> {
-    let Some(stream) = events else { return std::future::pending().await };
-    match stream.next().await {
-        Some(Ok(event)) => Some(event),
-        Some(Err(_)) | None => {
-            *events = None;
-            None
         }
     }
 }

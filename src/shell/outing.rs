@@ -5,7 +5,7 @@ use super::feed::{Feed, Running, Sender};
 use super::journal::Journal;
 use super::recorder::Recorder;
 use super::watch::Watch;
-use super::{Trouble, clock, files, live, rehold, terminal};
+use super::{Trouble, clock, files, live, rehold, say, terminal};
 use crate::config::Setup;
 use crate::pipeline::{Event, What};
 use crate::session::{Entry, Session};
@@ -13,7 +13,7 @@ use crate::units::StreamTime;
 use std::io::Write;
 use std::path::{Path, PathBuf};
 use std::thread::JoinHandle;
-use std::time::Duration;
+use std::time::{Duration, Instant};
 
 /// How a run was asked for.
 #[derive(Clone, Debug)]
@@ -72,13 +72,16 @@ pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
     for damage in opened.before.iter().flat_map(|s| &s.damage).filter(|d| d.what != crate::session::DamageKind::Torn) {
         degraded.push(format!("the session's line {} is left out: {}", damage.line, damage.what));
     }
-    degraded.iter().for_each(|what| eprintln!("{what}"));
+    degraded.iter().for_each(say);
     let first_started = opened.before.as_ref().map_or(started, |s| s.header.started.clone());
     let recorder = match plan.record {
         true => Some(Recorder::beside(&path, first_started.as_deref())?),
         false => None,
     };
     let ports = matches!(feed, Feed::Ports(_));
+    if let Some((free, hours)) = super::space::room(&**opened.journal.storage(), &path, &setup.rig).filter(|_| ports) {
+        say(format!("the disk has room for at least {hours:.0} hours of record ({} MiB)", free >> 20));
+    }
     let shift_us = opened.before.as_ref().map_or(0, |s| shift(s, ports));
     // A live stream is watched even where nobody looks.
     let seen = !plan.unattended || ports;
@@ -95,13 +98,13 @@ pub fn run(setup: &Setup, feed: Feed, plan: &Plan) -> Result<Ending, Trouble> {
         if tally.damaged * 100 > tally.lines {
             degraded.push(format!("{} of {} lines of the record were damaged", tally.damaged, tally.lines));
         } else if tally.damaged > 0 {
-            eprintln!("{} damaged lines of the record were passed over", tally.damaged);
+            say(format!("{} damaged lines of the record were passed over", tally.damaged));
         }
         if tally.unknown_command > 0 {
-            eprintln!("{} commands of the record are not understood and were passed over", tally.unknown_command);
+            say(format!("{} commands of the record are not understood and were passed over", tally.unknown_command));
         }
         if tally.unknown_port > 0 {
-            eprintln!("{} lines of ports that the rig does not name were passed over", tally.unknown_port);
+            say(format!("{} lines of ports that the rig does not name were passed over", tally.unknown_port));
         }
     }
     degraded.extend(degradation(&engine, plan));
@@ -153,7 +156,9 @@ fn time_of(entry: &Entry) -> StreamTime {
 // ---------------------------------------------------------------- without a screen
 
 fn unattended(mut engine: Engine, running: Running, plan: &Plan) -> Engine {
-    stop_on_signals(running.sender.clone());
+    stop_on_signals(running.sender.clone(), |to| {
+        to.send(Arrival::Stop);
+    });
     let mut outcomes = Vec::new();
     let mut first = None;
     let mut watch = Watch::default();
@@ -164,7 +169,11 @@ fn unattended(mut engine: Engine, running: Running, plan: &Plan) -> Engine {
             Ok(arrival) => engine.take(arrival, &mut outcomes),
             Err(std::sync::mpsc::RecvTimeoutError::Timeout) => {}
         }
+        engine.look_after(Instant::now(), &mut outcomes);
         tell(&mut outcomes);
+        for notice in engine.notices() {
+            let _ = writeln!(std::io::stdout().lock(), "{} trouble {notice}", engine.pipeline().now());
+        }
         if let Some(clock) = running.clock {
             let now = clock.now().plus(engine.shift_us());
             let mut out = std::io::stdout().lock();
@@ -237,28 +246,28 @@ fn word_of(state: &crate::hold::State) -> &'static str {
     }
 }
 
-/// A signal that asks to end becomes a stop, in order, with everything kept.
-pub fn stop_on_signals(sender: Sender) {
+/// A signal that asks to end becomes a stop, in order, with everything kept; what a hang-up means is up to the caller.
+pub fn stop_on_signals(sender: Sender, hung_up: impl Fn(&Sender) + Send + 'static) {
     std::thread::spawn(move || {
         let runtime = tokio::runtime::Builder::new_current_thread().enable_all().build();
         let Ok(runtime) = runtime else { return };
-        runtime.block_on(async {
-            wait_for_signal().await;
-            sender.send(Arrival::Stop);
-        });
+        runtime.block_on(wait_for_signal(|| hung_up(&sender)));
+        sender.send(Arrival::Stop);
     });
 }
 
 #[cfg(unix)]
-async fn wait_for_signal() {
+async fn wait_for_signal(hung_up: impl Fn()) {
     use tokio::signal::unix::{SignalKind, signal};
     let kinds = [SignalKind::interrupt(), SignalKind::terminate(), SignalKind::hangup()];
     let [Ok(mut a), Ok(mut b), Ok(mut c)] = kinds.map(signal) else { return std::future::pending().await };
-    tokio::select! { _ = a.recv() => {}, _ = b.recv() => {}, _ = c.recv() => {} }
+    loop {
+        tokio::select! { _ = a.recv() => return, _ = b.recv() => return, _ = c.recv() => hung_up() }
+    }
 }
 
 #[cfg(not(unix))]
-async fn wait_for_signal() {
+async fn wait_for_signal(_: impl Fn()) {
     let _ = tokio::signal::ctrl_c().await;
 }
 
@@ -278,12 +287,15 @@ fn degradation(engine: &Engine, plan: &Plan) -> Vec<String> {
         }
     }
     what.extend(engine.journal().trouble().map(str::to_string));
-    what.extend(engine.recorder().and_then(Recorder::trouble).map(str::to_string));
+    what.extend(engine.stopped().iter().cloned());
     what
 }
 
 /// Prints the reduction and where everything is.
 fn conclude(engine: &Engine) {
+    if terminal::abandoned() {
+        return;
+    }
     let show = &engine.pipeline().setup().outing.show;
     let session = engine.journal().contents().session();
     let text = session.map(|s| super::reduce::text(&[s], show));

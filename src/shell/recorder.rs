@@ -1,12 +1,13 @@
 //! The record file: written behind the session's back, flushed once a second, given up without harm.
 
 use super::Trouble;
+use super::storage::{Disk, Storage, StoredFile};
 use crate::stream::command::Command;
 use crate::stream::record;
 use crate::units::StreamTime;
-use std::fs::{File, OpenOptions};
-use std::io::Write;
+use std::io::{ErrorKind, Write};
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
 /// Unflushed bytes after which a write is due at once.
 const BLOCK: usize = 64 * 1024;
@@ -15,11 +16,17 @@ const FLUSH_US: i64 = 1_000_000;
 
 /// An open record.
 pub struct Recorder {
+    storage: Arc<dyn Storage>,
+    session: PathBuf,
+    started: Option<String>,
     path: PathBuf,
-    file: Option<File>,
+    file: Option<Box<dyn StoredFile>>,
     buffer: Vec<u8>,
+    written: u64,
     flushed_at: StreamTime,
     trouble: Option<String>,
+    /// It stopped for want of space.
+    full: bool,
 }
 
 impl Recorder {
@@ -28,15 +35,34 @@ impl Recorder {
     /// # Errors
     /// [`Trouble`] when it cannot be made.
     pub fn beside(session: &Path, started: Option<&str>) -> Result<Self, Trouble> {
+        Self::beside_on(Arc::new(Disk), session, started)
+    }
+
+    /// The same in any storage.
+    ///
+    /// # Errors
+    /// [`Trouble`] when it cannot be made.
+    pub fn beside_on(storage: Arc<dyn Storage>, session: &Path, started: Option<&str>) -> Result<Self, Trouble> {
         for n in 1..10_000 {
             let path = session.with_extension(if n == 1 { "record".to_string() } else { format!("{n}.record") });
-            match OpenOptions::new().append(true).create_new(true).open(&path) {
+            match storage.create(&path) {
                 Ok(file) => {
                     let mut buffer = Vec::with_capacity(2 * BLOCK);
                     record::write_header(&mut buffer, started);
-                    return Ok(Self { path, file: Some(file), buffer, flushed_at: StreamTime::ZERO, trouble: None });
+                    return Ok(Self {
+                        storage,
+                        session: session.to_path_buf(),
+                        started: started.map(str::to_string),
+                        path,
+                        file: Some(file),
+                        buffer,
+                        written: 0,
+                        flushed_at: StreamTime::ZERO,
+                        trouble: None,
+                        full: false,
+                    });
                 }
-                Err(e) if e.kind() == std::io::ErrorKind::AlreadyExists => {}
+                Err(e) if e.kind() == ErrorKind::AlreadyExists => {}
                 Err(e) => {
                     let what = format!("the record cannot be written: {e}");
                     return Err(Trouble::new(what).at(path.display()).hint("go without one with --no-record"));
@@ -44,6 +70,14 @@ impl Recorder {
             }
         }
         Err(Trouble::new("too many records beside the session").at(session.display()))
+    }
+
+    /// The next record beside the same session.
+    ///
+    /// # Errors
+    /// [`Trouble`] when it cannot be made.
+    pub fn another(&self) -> Result<Self, Trouble> {
+        Self::beside_on(self.storage.clone(), &self.session, self.started.as_deref())
     }
 
     /// A line of a port.
@@ -74,13 +108,28 @@ impl Recorder {
 
     /// Writes everything. After a failure the record ends there; no segment is lost by that.
     pub fn flush(&mut self) {
-        if let Some(file) = &mut self.file
-            && let Err(e) = file.write_all(&self.buffer)
-        {
-            self.trouble = Some(format!("the record stopped: {e}; segments are kept all the same"));
-            self.file = None;
+        if let Some(file) = &mut self.file {
+            match file.write_all(&self.buffer) {
+                Ok(()) => self.written += self.buffer.len() as u64,
+                Err(e) => self.end(&e.to_string(), e.kind() == ErrorKind::StorageFull),
+            }
         }
         self.buffer.clear();
+    }
+
+    /// Leaves what room there is to the session.
+    pub fn give_way(&mut self) {
+        self.flush();
+        if self.file.is_some() {
+            self.end("the disk is nearly full", true);
+        }
+    }
+
+    fn end(&mut self, why: &str, full: bool) {
+        let name = self.path.display();
+        self.trouble = Some(format!("the record {name} stopped: {why}; segments are kept all the same"));
+        self.full = full;
+        self.file = None;
     }
 
     /// Where it is.
@@ -90,6 +139,14 @@ impl Recorder {
     /// Why it stopped, if it did.
     pub fn trouble(&self) -> Option<&str> {
         self.trouble.as_deref()
+    }
+    /// It stopped for want of space, and another may begin when there is some.
+    pub fn waits_for_space(&self) -> bool {
+        self.full
+    }
+    /// Bytes that it holds.
+    pub fn written(&self) -> u64 {
+        self.written
     }
 }
 

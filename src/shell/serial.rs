@@ -15,6 +15,9 @@ const RETRY: Duration = Duration::from_millis(250);
 /// Reads of nothing at once (not after the timeout) that mean the port is gone.
 const EMPTY_READS: u32 = 20;
 
+/// A read that lasts so long was none: this program, or the computer, slept.
+const SLEPT_US: i64 = 5_000_000;
+
 /// An open port, and how to find it again.
 pub struct Reader {
     index: usize,
@@ -115,7 +118,7 @@ impl Reader {
     ) -> bool {
         let mut empty = 0;
         loop {
-            let before = Instant::now();
+            let (before, began) = (Instant::now(), clock.now());
             let bytes = match self.open.read(buffer) {
                 Ok(0) if before.elapsed() >= READ_TIMEOUT / 2 => Vec::new(),
                 Ok(0) => {
@@ -134,7 +137,11 @@ impl Reader {
                     _ => return true,
                 },
             };
-            if !send(Arrival::Bytes { port: self.index, at: clock.now(), bytes }) {
+            let (port, at) = (self.index, clock.now());
+            let slept = at.since(began) >= SLEPT_US;
+            if slept && !send(Arrival::Port { port, at, word: "suspended".to_string() })
+                || !send(Arrival::Bytes { port, at, bytes })
+            {
                 return false;
             }
         }

@@ -4,16 +4,18 @@ use super::Trouble;
 use crate::screen::{Face, Overlay, Theme, View, render};
 use crossterm::event::{DisableBracketedPaste, EnableBracketedPaste};
 use crossterm::terminal::{
-    BeginSynchronizedUpdate, EndSynchronizedUpdate, EnterAlternateScreen, LeaveAlternateScreen, disable_raw_mode,
-    enable_raw_mode,
+    BeginSynchronizedUpdate, Clear, ClearType, EndSynchronizedUpdate, EnterAlternateScreen, LeaveAlternateScreen,
+    disable_raw_mode, enable_raw_mode,
 };
 use crossterm::{cursor, execute, queue};
 use ratatui::Terminal;
 use ratatui::backend::CrosstermBackend;
 use std::io::{self, BufWriter, IsTerminal, Stdout, Write};
+use std::mem::ManuallyDrop;
 use std::sync::atomic::{AtomicBool, Ordering};
 
 static ENTERED: AtomicBool = AtomicBool::new(false);
+static ABANDONED: AtomicBool = AtomicBool::new(false);
 
 /// There is a terminal to draw on.
 ///
@@ -28,7 +30,8 @@ pub fn require() -> Result<(), Trouble> {
 
 /// A terminal in our hands.
 pub struct Screen {
-    terminal: Terminal<CrosstermBackend<BufWriter<Stdout>>>,
+    /// Never dropped: that would tell on standard error what it cannot write, and panic where that has gone as well.
+    terminal: ManuallyDrop<Terminal<CrosstermBackend<BufWriter<Stdout>>>>,
 }
 
 /// Takes the terminal.
@@ -36,15 +39,11 @@ pub struct Screen {
 /// # Errors
 /// When it cannot be set up.
 pub fn enter() -> io::Result<Screen> {
-    take()?;
-    let backend = CrosstermBackend::new(BufWriter::with_capacity(64 * 1024, io::stdout()));
-    Ok(Screen { terminal: Terminal::new(backend)? })
-}
-
-fn take() -> io::Result<()> {
     ENTERED.store(true, Ordering::SeqCst);
     enable_raw_mode()?;
-    execute!(io::stdout(), EnterAlternateScreen, EnableBracketedPaste, cursor::Hide)
+    execute!(io::stdout(), EnterAlternateScreen, Clear(ClearType::All), EnableBracketedPaste, cursor::Hide)?;
+    let backend = CrosstermBackend::new(BufWriter::with_capacity(64 * 1024, io::stdout()));
+    Ok(Screen { terminal: ManuallyDrop::new(Terminal::new(backend)?) })
 }
 
 /// Gives the terminal back; does nothing when it was not taken.
@@ -53,6 +52,19 @@ pub fn restore() {
         let _ = disable_raw_mode();
         let _ = execute!(io::stdout(), DisableBracketedPaste, LeaveAlternateScreen, cursor::Show);
     }
+}
+
+/// Gives up a terminal that takes nothing any more: only its mode is put back, since whatever is written to it waits for ever.
+pub fn abandon() {
+    ABANDONED.store(true, Ordering::SeqCst);
+    if ENTERED.swap(false, Ordering::SeqCst) {
+        let _ = disable_raw_mode();
+    }
+}
+
+/// The terminal was given up.
+pub fn abandoned() -> bool {
+    ABANDONED.load(Ordering::SeqCst)
 }
 
 /// Runs the screen and gives the terminal back however it ends, before a panic is told.
@@ -119,8 +131,9 @@ impl Screen {
     pub fn suspend(&mut self) -> io::Result<()> {
         restore();
         stop_myself();
-        take()?;
-        self.terminal.clear()
+        // A new one draws all its cells; clearing the old one would ask the terminal for its cursor and wait for the answer.
+        *self = enter()?;
+        Ok(())
     }
 }
 
