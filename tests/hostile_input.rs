@@ -1,13 +1,14 @@
 //! The promise: whatever bytes come from a port, a file or a person, no reader panics, none believes what is no finite number, and none
 //! depends on where the bytes were cut. The seeds stand in `tests/corpus`; each is read as it is and changed at random.
 
-use crate::same_bytes_same_session::van;
+use crate::same_bytes_same_session::{arrivals, drive, segments, short, van};
 use proptest::prelude::*;
 use proptest::sample::Index;
 use proptest::test_runner::{Config, TestCaseError, TestRunner};
 use std::path::Path;
 use steadytap::config::{self, LineFormat, Source};
-use steadytap::session::codec;
+use steadytap::session::{Segment, codec};
+use steadytap::shell::engine::Arrival;
 use steadytap::shell::speaker::wav;
 use steadytap::stream::command::Command;
 use steadytap::stream::splitter::{LONGEST_LINE, Piece, Splitter};
@@ -174,4 +175,39 @@ fn what_a_command_says_of_itself_is_the_same_command() {
         }
         Ok(())
     });
+}
+
+/// An NMEA sentence an hour later, its sum put right (NMEA 0183: XOR of what stands between `$` and `*`).
+fn an_hour_later(line: &[u8]) -> Option<Vec<u8>> {
+    let text = std::str::from_utf8(line).ok()?.trim_end().strip_prefix('$')?;
+    let mut fields: Vec<String> = text.split('*').next()?.split(',').map(str::to_string).collect();
+    let hour: u32 = fields.get(1)?.get(..2)?.parse().ok()?;
+    fields[1].replace_range(..2, &format!("{:02}", (hour + 1) % 24));
+    let body = fields.join(",");
+    let sum = body.bytes().fold(0, |sum, b| sum ^ b);
+    Some(format!("${body}*{sum:02X}\r\n").into_bytes())
+}
+
+#[test]
+fn a_gps_clock_that_jumps_is_stored_and_moves_nothing_else() {
+    let drive_with = |jump: bool| {
+        let mut all = arrivals(&van(), short(), usize::MAX);
+        let (half, mut jumped) = (all.len() / 2, 0);
+        for arrival in &mut all[half..] {
+            if let (true, Arrival::Bytes { bytes, .. }) = (jump, arrival)
+                && let Some(later) = an_hour_later(bytes)
+            {
+                (*bytes, jumped) = (later, jumped + 1);
+            }
+        }
+        let dir = tempfile::tempdir().unwrap();
+        let path = dir.path().join("a.session");
+        drive(&van(), &path, all);
+        (segments(&crate::same_bytes_same_session::read(&path)), jumped)
+    };
+    let (before, (after, jumped)) = (drive_with(false).0, drive_with(true));
+    let differing = before.iter().zip(&after).filter(|(a, b)| a.gps_utc != b.gps_utc).count();
+    assert!(jumped > 100 && differing > 0 && differing < before.len(), "{jumped} sentences, {differing} segments");
+    let without = |list: Vec<Segment>| list.into_iter().map(|s| Segment { gps_utc: None, ..s }).collect::<Vec<_>>();
+    assert_eq!(without(before), without(after));
 }
