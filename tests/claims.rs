@@ -12,6 +12,7 @@ mod crash_model;
 mod disk_trouble;
 mod finish;
 mod holds;
+mod hostile_input;
 mod layers;
 mod lines;
 mod live_ports;

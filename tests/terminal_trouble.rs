@@ -195,6 +195,7 @@ fn a_program_that_slept_says_so_and_no_segment_lies_across() {
     bench.feed_until("more segments", || drive.said(" kept ") >= before + 2);
     signal("-TERM", drive.child.id());
     let (_, said, err) = drive.end();
+    assert!(err.contains("the disk has room for at least "), "said at the start: {err}");
     let session = read(&bench.path("a.session"));
     assert_eq!(ids_said(&said), segments(&session).iter().map(|s| s.id).collect::<Vec<_>>(), "{err}");
     let woke = session.entries.iter().find_map(|e| match e {
