@@ -248,26 +248,32 @@ fn word_of(state: &crate::hold::State) -> &'static str {
 
 /// A signal that asks to end becomes a stop, in order, with everything kept; what a hang-up means is up to the caller.
 pub fn stop_on_signals(sender: Sender, hung_up: impl Fn(&Sender) + Send + 'static) {
+    let (ready, is_ready) = std::sync::mpsc::channel::<()>();
     std::thread::spawn(move || {
         let runtime = tokio::runtime::Builder::new_current_thread().enable_all().build();
         let Ok(runtime) = runtime else { return };
-        runtime.block_on(wait_for_signal(|| hung_up(&sender)));
+        runtime.block_on(wait_for_signal(|| hung_up(&sender), move || drop(ready)));
         sender.send(Arrival::Stop);
     });
+    // A signal that comes before anybody waits for it would end the run on the spot.
+    let _ = is_ready.recv();
 }
 
 #[cfg(unix)]
-async fn wait_for_signal(hung_up: impl Fn()) {
+async fn wait_for_signal(hung_up: impl Fn(), ready: impl FnOnce()) {
     use tokio::signal::unix::{SignalKind, signal};
     let kinds = [SignalKind::interrupt(), SignalKind::terminate(), SignalKind::hangup()];
-    let [Ok(mut a), Ok(mut b), Ok(mut c)] = kinds.map(signal) else { return std::future::pending().await };
+    let signals = kinds.map(signal);
+    ready();
+    let [Ok(mut a), Ok(mut b), Ok(mut c)] = signals else { return std::future::pending().await };
     loop {
         tokio::select! { _ = a.recv() => return, _ = b.recv() => return, _ = c.recv() => hung_up() }
     }
 }
 
 #[cfg(not(unix))]
-async fn wait_for_signal(_: impl Fn()) {
+async fn wait_for_signal(_: impl Fn(), ready: impl FnOnce()) {
+    ready();
     let _ = tokio::signal::ctrl_c().await;
 }
 
