@@ -16,7 +16,7 @@ pub use files::{Checked, Head, Kind, LARGEST, check_car, check_outing, check_rig
 pub use problem::{Place, Problem, Severity, Source};
 
 use crate::pneumatics::Tube;
-use crate::units::{Quantity, Unit, micros};
+use crate::units::{PRESSURES, Quantity, Unit, micros};
 use serde::{Deserialize, Serialize};
 use std::collections::BTreeMap;
 
@@ -333,6 +333,13 @@ pub struct Show {
     pub speed: String,
     /// Pressure unit.
     pub pressure: String,
+}
+
+impl Show {
+    /// The unit that pressures are shown in.
+    pub fn pressure_unit(&self) -> Unit {
+        Unit::find(PRESSURES, &self.pressure).unwrap_or(PRESSURES[0])
+    }
 }
 
 /// The air of the day.

@@ -64,6 +64,11 @@ impl Rule {
         best
     }
 
+    /// The target nearest to a speed, whether its window contains it or not, km/h.
+    pub fn nearest_kmh(&self, kmh: f64) -> Option<f64> {
+        self.targets_kmh.iter().copied().min_by(|a, b| (a - kmh).abs().total_cmp(&(b - kmh).abs()))
+    }
+
     /// First moment of dwell `k` of a stretch that began at `t0`.
     pub fn dwell_start(&self, t0: StreamTime, k: i64) -> StreamTime {
         t0.plus(self.settle_us + k * self.dwell_us)

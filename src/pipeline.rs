@@ -248,6 +248,12 @@ impl Pipeline {
         }
     }
 
+    /// The newest watched speed while it is fresh, km/h; none when nobody looks.
+    pub fn speed_kmh(&self, now: StreamTime) -> Option<f64> {
+        let eye = self.eye(self.watched).filter(|eye| !eye.stale(now))?;
+        eye.latest().map(|value| self.watched_kmh(value))
+    }
+
     /// The watched quantity in km/h: a speed as it is, a dynamic pressure as the airspeed that makes it.
     pub fn watched_kmh(&self, value: f64) -> f64 {
         match self.setup.outing.watch {

@@ -298,12 +298,9 @@ fn compared(
     taps: &[String],
     (question, flags): (Question<'_>, &mut Vec<String>),
 ) -> Verdicts {
-    let mut targets: Vec<f64> = passes.iter().map(|p| p.target_kmh).collect();
-    targets.sort_by(f64::total_cmp);
-    targets.dedup();
     let mut all = Verdicts::default();
     let mut weaknesses: BTreeSet<(Weakness, String)> = BTreeSet::new();
-    for target in targets {
+    for target in passes::targets(passes) {
         let of_target: Vec<&Pass> = passes.iter().filter(|p| p.target_kmh == target).collect();
         let mut compared = compare::compare(&of_target, zeros, taps, question);
         // By configuration, then tap: a configuration's verdicts stand together.

@@ -2,10 +2,12 @@
 
 mod html;
 mod json;
+mod side;
 mod tables;
 mod text;
 
 pub use html::{Input, Inputs, html};
 pub use json::json;
+pub use side::{WHEEL_M, outline};
 pub use tables::csv;
 pub use text::{next_pass, text};

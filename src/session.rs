@@ -217,9 +217,7 @@ impl Session {
                 Entry::Correct(c) => {
                     if let Some(i) = place.get(&c.segment) {
                         let segment = all[*i].0.to_mut();
-                        segment.configuration =
-                            c.configuration.clone().unwrap_or(std::mem::take(&mut segment.configuration));
-                        segment.direction = c.direction.unwrap_or(segment.direction);
+                        c.apply(&mut segment.configuration, &mut segment.direction);
                     }
                 }
                 _ => {}
@@ -294,6 +292,16 @@ pub struct Correction {
     /// Which way; none: as it stands.
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub direction: Option<Direction>,
+}
+
+impl Correction {
+    /// Puts the tags right.
+    pub fn apply(&self, configuration: &mut String, direction: &mut Direction) {
+        if let Some(letter) = &self.configuration {
+            configuration.clone_from(letter);
+        }
+        *direction = self.direction.unwrap_or(*direction);
+    }
 }
 
 /// Words at a moment.

@@ -556,7 +556,7 @@ fn a_file_of_keys_is_checked_with_line_and_remedy() {
         (format!("{head}[keys]\nmark = \"x\"\nmrk = \"y\"\n"), "no key named `mrk`|keys.toml:4:7"),
         (format!("{head}[keys]\ntake = \"z\"\n"), "both `take` and `zero`|keys.toml:3:8"),
         (format!("{head}[keys]\ntake = \"Hyper\"\n"), "`Hyper` is no key|keys.toml:3:8"),
-        (format!("{head}[sounds]\nkep = \"a.wav\"\n"), "no sound `kep`|window, steady, held, kept"),
+        (format!("{head}[sounds]\nkep = \"a.wav\"\n"), "there is no cue `kep`|window, steady, held, kept"),
         (format!("{head}[kees]\n"), "unknown field|keys.toml:2"),
         ("steadytap = \"keys 2\"\n".to_string(), "no file of keys that this program reads|keys.toml:1:1"),
     ] {

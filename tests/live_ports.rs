@@ -159,6 +159,18 @@ impl Bench {
         self.dir.path().join(name)
     }
 
+    /// The record of `a.session`, held again as driven, makes the same bytes.
+    pub fn replays_as_driven(&self) {
+        let again = program()
+            .args(["rehold", "a.record", "outing.toml", "--as-driven", "--session", "b.session"])
+            .current_dir(self.dir.path())
+            .output()
+            .unwrap();
+        assert!(again.status.success(), "{}", String::from_utf8_lossy(&again.stderr));
+        let [a, b] = ["a.session", "b.session"].map(|name| std::fs::read(self.path(name)).unwrap());
+        assert!(a == b, "not the same bytes");
+    }
+
     fn gauge_line(&self) -> String {
         let wobble = (self.tick % 7) as f64;
         format!("{},{:.2},{:.2}\r\n", self.tick * 5, -90.0 + wobble, 471.0 - wobble)
@@ -275,14 +287,7 @@ fn a_live_drive_keeps_what_its_record_replays_to() {
         let gauge = segment.channels["p1"].n;
         assert!((40..=75).contains(&gauge), "200 lines a second for 0.3 s are 60, not {gauge}");
     }
-    let again = program()
-        .args(["rehold", "a.record", "outing.toml", "--as-driven", "--session", "b.session"])
-        .current_dir(bench.dir.path())
-        .output()
-        .unwrap();
-    assert!(again.status.success(), "{}", String::from_utf8_lossy(&again.stderr));
-    let [a, b] = ["a.session", "b.session"].map(|name| std::fs::read(bench.path(name)).unwrap());
-    assert!(a == b, "not the same bytes");
+    bench.replays_as_driven();
 }
 
 #[test]

@@ -1,12 +1,12 @@
 //! The pictures in the README are the real screens and a part of the real page, drawn here; `STEADYTAP_UPDATE=1` writes them anew.
 
 use crate::report_html;
+use crate::samples_and_readme;
 use crate::screens::scenes;
 use ratatui::buffer::Buffer;
 use ratatui::layout::Rect;
 use ratatui::style::{Color, Modifier};
 use std::fmt::Write;
-use std::path::Path;
 use steadytap::screen::layby::Pane;
 use steadytap::screen::{Face, Spot, Theme, View, render};
 
@@ -14,13 +14,7 @@ use steadytap::screen::{Face, Spot, Theme, View, render};
 const CELL: (usize, usize) = (9, 18);
 
 fn is_as_made(name: &str, made: &str) {
-    let path = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/pictures").join(name);
-    if std::env::var_os("STEADYTAP_UPDATE").is_some() {
-        std::fs::create_dir_all(path.parent().unwrap()).unwrap();
-        std::fs::write(&path, made).unwrap();
-    }
-    let kept = std::fs::read_to_string(&path).unwrap_or_default();
-    assert!(kept == made, "{name} is out of date; run with STEADYTAP_UPDATE=1");
+    samples_and_readme::is_as_made(&format!("tests/pictures/{name}"), made.as_bytes());
 }
 
 /// A colour of the fixed part of the 256-colour palette (xterm's cube and grey ramp).

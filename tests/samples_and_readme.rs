@@ -28,6 +28,16 @@ fn updating() -> bool {
     std::env::var_os("STEADYTAP_UPDATE").is_some()
 }
 
+/// A file of the repository is what was made here, or is written anew.
+pub fn is_as_made(name: &str, made: &[u8]) {
+    let path = root().join(name);
+    if updating() {
+        std::fs::write(&path, made).expect("the file can be written");
+    }
+    let kept = std::fs::read(&path).unwrap_or_default();
+    assert!(kept == made, "{name} is not what is made now; run with STEADYTAP_UPDATE=1");
+}
+
 fn at(seconds: i64) -> StreamTime {
     StreamTime::from_micros(seconds * 1_000_000)
 }
@@ -74,19 +84,10 @@ fn faulty() -> Scenario {
     Scenario { seed: 2, short: true, faults }
 }
 
-fn is_as_made(name: &str, made: &[u8]) {
-    let path = root().join("sample-streams").join(name);
-    if updating() {
-        std::fs::write(&path, made).expect("the sample can be written");
-    }
-    let kept = std::fs::read(&path).expect("the sample is in the repository");
-    assert!(kept == made, "{name} is not what the simulator makes; run with STEADYTAP_UPDATE=1");
-}
-
 #[test]
 fn the_sample_streams_are_what_the_simulator_sends() {
-    is_as_made("van-short.record", &drive(short()).0);
-    is_as_made("van-faults.record", &drive(faulty()).0);
+    is_as_made("sample-streams/van-short.record", &drive(short()).0);
+    is_as_made("sample-streams/van-faults.record", &drive(faulty()).0);
 }
 
 /// Replays a record as driven, in chunks of so many bytes; its session lines, and every event.

@@ -5,6 +5,7 @@
 
 use crate::reduction_outings::Chance;
 use crate::same_bytes_same_session::{program, read};
+use crate::samples_and_readme::is_as_made;
 use std::path::{Path, PathBuf};
 use steadytap::reduction::compare::{Comparison, Verdict};
 use steadytap::reduction::{Options, Reduction, reduce};
@@ -136,12 +137,9 @@ fn root() -> PathBuf {
 
 /// The stream is as made; the program takes outing and stream and keeps eight passes; their reduction.
 fn run(name: &str, board: Board) -> Reduction {
-    let stream = root().join(format!("sample-streams/{name}.record"));
-    let made = record(board);
-    if std::env::var_os("STEADYTAP_UPDATE").is_some() {
-        std::fs::write(&stream, &made).unwrap();
-    }
-    assert!(std::fs::read_to_string(&stream).is_ok_and(|kept| kept == made), "{name}: run with STEADYTAP_UPDATE=1");
+    let stream = format!("sample-streams/{name}.record");
+    is_as_made(&stream, record(board).as_bytes());
+    let stream = root().join(stream);
     let dir = tempfile::tempdir().unwrap();
     let session = dir.path().join("a.session");
     let outing = root().join(format!("configs/{name}-outing.toml"));

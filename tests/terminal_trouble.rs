@@ -2,7 +2,7 @@
 #![cfg(unix)]
 
 use crate::live_ports::{Bench, Drive, STATES, Terminal, given_back, ids_said, signal, wait_for};
-use crate::same_bytes_same_session::{program, read, segments};
+use crate::same_bytes_same_session::{read, segments};
 use portable_pty::{Child, CommandBuilder, MasterPty, PtySize, native_pty_system};
 use std::io::Read;
 use std::path::Path;
@@ -208,12 +208,5 @@ fn a_program_that_slept_says_so_and_no_segment_lies_across() {
         assert!(apart, "segment {} from {} to {} lies across the sleep until {woke}", s.id, s.t0, s.t1);
     }
     assert!(std::fs::read_to_string(bench.path("a.record")).unwrap().contains(" !gauge suspended\n"));
-    let again = program()
-        .args(["rehold", "a.record", "outing.toml", "--as-driven", "--session", "b.session"])
-        .current_dir(bench.dir.path())
-        .output()
-        .unwrap();
-    assert!(again.status.success(), "{}", String::from_utf8_lossy(&again.stderr));
-    let [a, b] = ["a.session", "b.session"].map(|name| std::fs::read(bench.path(name)).unwrap());
-    assert!(a == b, "not the same bytes");
+    bench.replays_as_driven();
 }

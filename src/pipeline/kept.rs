@@ -19,6 +19,17 @@ pub struct KeptSegment {
     pub void: bool,
 }
 
+/// The passes of one kind: runs and stretches that gave a segment that counts.
+pub fn passes_of(segments: &[KeptSegment], (letter, way, target_kmh): (&str, Direction, f64)) -> Vec<(u32, u32)> {
+    let same = segments
+        .iter()
+        .filter(|s| !s.void && s.configuration == letter && s.direction == way && s.target_kmh == Some(target_kmh));
+    let mut passes: Vec<(u32, u32)> = same.map(|s| s.pass).collect();
+    passes.sort_unstable();
+    passes.dedup();
+    passes
+}
+
 /// The dwell whose values stand still.
 #[derive(Clone, Debug, PartialEq)]
 pub struct HeldDwell {

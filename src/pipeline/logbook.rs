@@ -121,8 +121,10 @@ impl Logbook {
     fn recall(&mut self, entry: &Entry) {
         match entry {
             Entry::Segment(s) => self.remember(s),
-            Entry::Void(v) => self.segments.iter_mut().filter(|s| s.id == v.segment).for_each(|s| s.void = true),
-            Entry::Restore(v) => self.segments.iter_mut().filter(|s| s.id == v.segment).for_each(|s| s.void = false),
+            Entry::Void(v) | Entry::Restore(v) => {
+                let void = matches!(entry, Entry::Void(_));
+                self.segments.iter_mut().filter(|s| s.id == v.segment).for_each(|s| s.void = void);
+            }
             Entry::Correct(c) => self.retag(c),
             Entry::Zero(z) => {
                 self.next_zero = z.id + 1;
@@ -464,8 +466,7 @@ impl Logbook {
 
     fn retag(&mut self, correction: &Correction) {
         for s in self.segments.iter_mut().filter(|s| s.id == correction.segment) {
-            s.configuration = correction.configuration.clone().unwrap_or(std::mem::take(&mut s.configuration));
-            s.direction = correction.direction.unwrap_or(s.direction);
+            correction.apply(&mut s.configuration, &mut s.direction);
         }
     }
 

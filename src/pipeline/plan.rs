@@ -3,7 +3,7 @@
 //! What is fitted is driven to its end first, at one target after another, each way in turn; then the next configuration that lacks passes.
 //! The reduction knows better which pass is worth most once all wanted ones are driven.
 
-use super::kept::KeptSegment;
+use super::kept::{KeptSegment, passes_of};
 use crate::config::Outing;
 use crate::session::Direction;
 
@@ -30,7 +30,9 @@ pub fn next(segments: &[KeptSegment], outing: &Outing, fitted: &str) -> Option<P
     let order = std::iter::once(fitted).chain(letters.filter(|letter| *letter != fitted));
     for letter in order {
         for target_kmh in &outing.targets_kmh {
-            let driven = |way: &Direction| count(segments, (letter, *way, *target_kmh));
+            let driven = |way: &Direction| {
+                u32::try_from(passes_of(segments, (letter, *way, *target_kmh)).len()).unwrap_or(u32::MAX)
+            };
             // With as many the one as the other: the other way than last.
             let last = segments.iter().rfind(|s| !s.void).map(|s| s.direction);
             let way = ways.iter().min_by_key(|way| (driven(way), last == Some(**way)))?;
@@ -41,15 +43,4 @@ pub fn next(segments: &[KeptSegment], outing: &Outing, fitted: &str) -> Option<P
         }
     }
     None
-}
-
-/// Passes of one kind: stretches that gave a segment that counts.
-fn count(segments: &[KeptSegment], (letter, way, target_kmh): (&str, Direction, f64)) -> u32 {
-    let same = segments
-        .iter()
-        .filter(|s| !s.void && s.configuration == letter && s.direction == way && s.target_kmh == Some(target_kmh));
-    let mut passes: Vec<(u32, u32)> = same.map(|s| s.pass).collect();
-    passes.sort_unstable();
-    passes.dedup();
-    u32::try_from(passes.len()).unwrap_or(u32::MAX)
 }

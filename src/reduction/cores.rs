@@ -82,8 +82,12 @@ pub fn cores(ground: Ground<'_>, at_kmh: f64) -> (Vec<CoreRow>, Vec<String>) {
             continue;
         };
         let (low, high) = (core.bench[0][0], core.bench[core.bench.len() - 1][0]);
-        let outside =
-            ground.passes.iter().filter_map(|p| velocity(p, core, curve)).filter(|v| *v < low || *v > high).count();
+        let outside = ground
+            .passes
+            .iter()
+            .filter_map(|p| velocity(p, core, curve))
+            .filter(|(v, _)| *v < low || *v > high)
+            .count();
         if outside > 0 {
             words.push(format!(
                 "core {}: {outside} passes lie outside the bench's {low} to {high} m/s, the curve is extrapolated",
@@ -111,10 +115,11 @@ pub fn cores(ground: Ground<'_>, at_kmh: f64) -> (Vec<CoreRow>, Vec<String>) {
     (rows, words)
 }
 
-/// Face velocity of a pass, m/s, with the curve in the pass's air.
-fn velocity(p: &Pass, core: &Core, curve: Curve) -> Option<f64> {
+/// Face velocity of a pass, m/s, and the curve in the pass's air that gave it.
+fn velocity(p: &Pass, core: &Core, curve: Curve) -> Option<(f64, Curve)> {
     let dp = p.taps.get(&core.front)?.pa - p.taps.get(&core.rear)?.pa;
-    in_air_of(p, curve).velocity(dp)
+    let curve = in_air_of(p, curve);
+    Some((curve.velocity(dp)?, curve))
 }
 
 fn in_air_of(p: &Pass, curve: Curve) -> Curve {
@@ -126,8 +131,7 @@ fn in_air_of(p: &Pass, curve: Curve) -> Curve {
 fn ratio<'a>(p: &'a Pass, core: &Core, curve: Curve) -> Option<(f64, Vec<ZeroEffect<'a>>)> {
     let q = p.q.as_ref().filter(|q| q.pa >= LEAST_Q_PA)?;
     let airspeed_m_s = super::probe::airspeed(p.density, p.pressure_pa, q.pa) / crate::units::KMH_PER_M_S;
-    let velocity = velocity(p, core, curve)?;
-    let curve = in_air_of(p, curve);
+    let (velocity, curve) = velocity(p, core, curve)?;
     // dv/dp of dp = a v + b v².
     let per_pa = 1.0 / (curve.a + 2.0 * curve.b * velocity) / airspeed_m_s;
     let ratio = velocity / airspeed_m_s;

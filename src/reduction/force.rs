@@ -5,7 +5,7 @@
 //! together, and that is in it. Beside it stand the two bounds: taps independent, taps fully common.
 
 use super::compare::{Estimate, Model, Observation, Outcome, Question, ZeroEffect};
-use super::passes::Pass;
+use super::passes::{self, Pass};
 use super::zeros::Zeros;
 use super::{Level, Reduction};
 use crate::config::{Car, Tap};
@@ -140,10 +140,7 @@ pub struct Ground<'a> {
 impl<'a> Ground<'a> {
     /// Targets that were driven, rising.
     pub fn targets(&self) -> Vec<f64> {
-        let mut targets: Vec<f64> = self.passes.iter().map(|p| p.target_kmh).collect();
-        targets.sort_by(f64::total_cmp);
-        targets.dedup();
-        targets
+        passes::targets(self.passes)
     }
 
     /// The model of Σ weight · Cp over the passes of a target that have all of these taps.

@@ -102,6 +102,14 @@ pub struct LeftOut {
     pub why: String,
 }
 
+/// Targets that were driven, rising.
+pub fn targets(passes: &[Pass]) -> Vec<f64> {
+    let mut targets: Vec<f64> = passes.iter().map(|p| p.target_kmh).collect();
+    targets.sort_by(f64::total_cmp);
+    targets.dedup();
+    targets
+}
+
 /// The passes of a session in time order, and what was left out.
 pub fn passes(index: usize, session: &Session) -> (Vec<Pass>, Vec<LeftOut>) {
     let zeros = Zeros::of(session);

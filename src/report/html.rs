@@ -19,7 +19,7 @@ mod verdicts;
 use crate::reduction::Reduction;
 use crate::session::Header;
 use crate::text::safe;
-use crate::units::{PRESSURES, Unit};
+use crate::units::PRESSURES;
 use maud::{DOCTYPE, PreEscaped, html};
 use sheet::Sheet;
 
@@ -49,8 +49,7 @@ pub struct Input {
 
 /// The whole page.
 pub fn html(r: &Reduction, input: &Inputs) -> String {
-    let shown = input.sessions.first().map(|s| s.header.setup.outing.show.pressure.as_str());
-    let unit = shown.and_then(|name| Unit::find(PRESSURES, name)).unwrap_or(PRESSURES[0]);
+    let unit = input.sessions.first().map_or(PRESSURES[0], |s| s.header.setup.outing.show.pressure_unit());
     let sheet = Sheet { r, input, unit };
     let title = safe(&format!("{} · {}", r.title, r.car));
     let page = html! {

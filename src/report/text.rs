@@ -5,7 +5,7 @@ use crate::reduction::compare::{Comparison, Estimate, Level, Verdict};
 use crate::reduction::plan::{NextPass, Why};
 use crate::reduction::sweep::Crossing;
 use crate::reduction::{Reduction, words_of_interval};
-use crate::units::{KMH_PER_M_S, PRESSURES, STANDARD_GRAVITY, Unit};
+use crate::units::{KMH_PER_M_S, STANDARD_GRAVITY, Unit};
 
 /// Widest line.
 pub const WIDTH: usize = 100;
@@ -17,7 +17,7 @@ const LETTER: usize = 4;
 /// The whole reduction, in the unit that the outing shows pressures in.
 pub fn text(r: &Reduction, show: &Show) -> String {
     let mut out = String::new();
-    let unit = Unit::find(PRESSURES, &show.pressure).unwrap_or(PRESSURES[0]);
+    let unit = show.pressure_unit();
     let baseline = r.configurations.iter().find(|c| c.letter == r.baseline).map_or("", |c| c.name.as_str());
     let head = format!("{} · {} · baseline {} {}", r.title, r.car, r.baseline, baseline);
     folded(&mut out, &head, "", "  ");

@@ -6,7 +6,7 @@
 use super::canvas::Canvas;
 use super::digits::{self, Size};
 use super::figures::Figures;
-use super::layby::folded;
+use super::text::folded;
 use super::theme::Role;
 use super::{Face, View, below, keys};
 use crate::config::Air;
@@ -153,10 +153,7 @@ pub(super) fn step(bench: &Bench) -> Option<StepResponse> {
 /// Draws the place.
 pub(super) fn draw(view: &View, face: &Face, canvas: &mut Canvas) {
     let area = canvas.area();
-    let sign = canvas.sign('─', '-');
-    canvas.fill(Rect { height: 1, ..area }, sign, Role::Quiet);
-    canvas.text((area.x + 2, area.y), area.width / 2, &format!(" BENCH  {} ", view.title), Role::Strong);
-    canvas.text_right((area.right() - 1, area.y), area.width / 2 - 2, &format!(" {} ", view.journal.file), Role::Quiet);
+    canvas.heading(&format!("BENCH  {}", view.title), &view.journal.file);
     keys::draw_line(canvas, face, area.bottom() - 1);
     let empty = Bench::default();
     let bench = view.bench.as_ref().unwrap_or(&empty);
@@ -246,7 +243,7 @@ fn draw_channels(view: &View, bench: &Bench, face: &Face, (canvas, area): (&mut 
         let role = if i == marked { Role::Held } else { Role::Base };
         canvas.put((area.x, y), sign, role);
         let figures = Figures::of(row.quantity, &view.show);
-        let unit = if row.quantity == Quantity::Other { row.unit.as_str() } else { figures.unit() };
+        let unit = figures.unit_or(&row.unit);
         let raw = row.raw.map_or("—".to_string(), shortest);
         let rate = format!("{:.1}", row.rate_per_s.min(9999.9));
         let (value, zero) = (figures.signed(row.value), row.zero.map_or("—".to_string(), |z| figures.short(z)));

@@ -71,6 +71,15 @@ impl<'a> Canvas<'a> {
         self.text((right.saturating_sub(wide), y), wide, text, role);
     }
 
+    /// A rule in the first row with words at its left and at its right.
+    pub(super) fn heading(&mut self, left: &str, right: &str) {
+        let area = self.area();
+        let rule = self.sign('─', '-');
+        self.fill(Rect { height: 1, ..area }, rule, Role::Quiet);
+        self.text((area.x + 2, area.y), area.width / 2, &format!(" {left} "), Role::Strong);
+        self.text_right((area.right() - 1, area.y), area.width / 2 - 2, &format!(" {right} "), Role::Quiet);
+    }
+
     /// One sign in one cell.
     pub(super) fn put(&mut self, at: (u16, u16), sign: char, role: Role) {
         let style = self.style(role);

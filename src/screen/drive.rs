@@ -9,6 +9,7 @@ use super::digits::{self, Size};
 use super::figures::{Figures, clock, seconds};
 use super::keys;
 use super::rows;
+use super::text::folded;
 use super::theme::Role;
 use super::{Face, Kept, Overlay, View, WindowState, below, layby};
 use crate::units::Quantity;
@@ -87,8 +88,7 @@ fn draw_parked(view: &View, canvas: &mut Canvas, room: Rect) {
         view.asks.as_ref().map(|letter| format!("fit {letter}, then the remote's forward key (or Space) confirms it"));
     let plan = view.plan.as_ref().map(|plan| format!("plan: {plan}"));
     let verdicts = view.findings.iter().flat_map(|f| layby::verdicts(view, f));
-    let lines =
-        asks.into_iter().chain(plan).chain(verdicts).flat_map(|l| layby::folded(&l, usize::from(room.width) - 4));
+    let lines = asks.into_iter().chain(plan).chain(verdicts).flat_map(|l| folded(&l, usize::from(room.width) - 4));
     for (y, line) in (room.y + 1..room.bottom()).zip(lines) {
         canvas.text((room.x + 2, y), room.width - 3, &line, Role::Base);
     }

@@ -1,7 +1,7 @@
 //! Figures as the person likes them: unit, decimals and width fixed by what is measured, so that nothing jumps.
 
 use crate::config::Show;
-use crate::units::{PRESSURES, Quantity, SPEEDS, StreamTime, Unit};
+use crate::units::{Quantity, SPEEDS, StreamTime, Unit};
 
 /// How figures of one quantity are written.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -17,7 +17,7 @@ impl Figures {
         let same = |name| Unit { name, scale: 1.0, shift: 0.0 };
         let (unit, whole, decimals) = match quantity {
             Quantity::Pressure | Quantity::DynamicPressure => {
-                let unit = Unit::find(PRESSURES, &show.pressure).unwrap_or(PRESSURES[0]);
+                let unit = show.pressure_unit();
                 let decimals = pressure_decimals(unit);
                 (unit, 5 - decimals.min(3), decimals)
             }
@@ -35,6 +35,11 @@ impl Figures {
     /// The unit's name, for the eye.
     pub(super) fn unit(&self) -> &'static str {
         self.unit.name
+    }
+
+    /// The unit's name; of what has none of its own, the one that the rig names.
+    pub(super) fn unit_or<'a>(&self, own: &'a str) -> &'a str {
+        if self.unit.name.is_empty() { own } else { self.unit.name }
     }
 
     /// A value with its sign in the first place and its point always in the same.

@@ -74,6 +74,26 @@ pub enum Place {
     Prompt,
 }
 
+impl Place {
+    /// All of them: the three places of the car, what asks or shows over them, the help.
+    pub const ALL: [Self; 14] = [
+        Self::Bench,
+        Self::Drive,
+        Self::Layby,
+        Self::Quit,
+        Self::Void,
+        Self::Away,
+        Self::Configuration,
+        Self::Segment,
+        Self::Correct,
+        Self::Calibration,
+        Self::Leak,
+        Self::Step,
+        Self::Prompt,
+        Self::Help,
+    ];
+}
+
 /// One row of the key table.
 pub struct KeyRow {
     /// Its name in a file of keys; what has none stays where it is.
@@ -96,50 +116,15 @@ type Act = fn(&View, &mut Face) -> Option<Action>;
 const BENCH: &[Place] = &[Place::Bench];
 const DRIVE: &[Place] = &[Place::Drive];
 const LAYBY: &[Place] = &[Place::Layby];
+const EVERYWHERE: &[Place] = &Place::ALL;
 const SPOTS: &[Place] = &[Place::Bench, Place::Drive, Place::Layby];
 const OVER_DRIVE: &[Place] = &[Place::Drive, Place::Help, Place::Quit, Place::Void, Place::Away, Place::Configuration];
 const LISTS: &[Place] = &[Place::Configuration, Place::Correct];
 const TYPED: &[Place] = &[Place::Prompt, Place::Calibration];
-const BOXES: &[Place] = &[
-    Place::Quit,
-    Place::Void,
-    Place::Away,
-    Place::Configuration,
-    Place::Segment,
-    Place::Correct,
-    Place::Calibration,
-    Place::Leak,
-    Place::Step,
-    Place::Prompt,
-];
-const NOT_ASKED: &[Place] = &[
-    Place::Help,
-    Place::Void,
-    Place::Away,
-    Place::Configuration,
-    Place::Segment,
-    Place::Correct,
-    Place::Calibration,
-    Place::Leak,
-    Place::Step,
-    Place::Prompt,
-];
-const EVERYWHERE: &[Place] = &[
-    Place::Bench,
-    Place::Drive,
-    Place::Layby,
-    Place::Help,
-    Place::Quit,
-    Place::Void,
-    Place::Away,
-    Place::Configuration,
-    Place::Segment,
-    Place::Correct,
-    Place::Calibration,
-    Place::Leak,
-    Place::Step,
-    Place::Prompt,
-];
+/// What is laid over a place and can be backed out of.
+const BOXES: &[Place] = EVERYWHERE.split_at(13).0.split_at(3).1;
+/// The same and the help, but for "Leave?".
+const NOT_ASKED: &[Place] = EVERYWHERE.split_at(4).1;
 
 /// Two events of one key closer together than this are one press held down, µs of stream time.
 const HELD_KEY_US: i64 = 700_000;

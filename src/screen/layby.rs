@@ -8,12 +8,13 @@ use super::digits::{self, Size};
 use super::figures::{Figures, clock};
 use super::findings::{Findings, SegmentLine};
 use super::picture::{self, Arrow};
+use super::text::folded;
 use super::theme::Role;
 use super::{Face, View, keys};
-use crate::reduction::Reduction;
 use crate::reduction::compare::{Comparison, Verdict};
+use crate::reduction::{Reduction, passes};
 use crate::report;
-use crate::units::{PRESSURES, Quantity, Unit};
+use crate::units::Quantity;
 use ratatui::layout::Rect;
 
 /// Where the eye is in this place.
@@ -105,11 +106,8 @@ pub(super) fn draw(view: &View, face: &Face, canvas: &mut Canvas) {
 }
 
 fn draw_title(view: &View, canvas: &mut Canvas) {
+    canvas.heading(&format!("LAYBY  {}", view.title), &view.journal.file);
     let area = canvas.area();
-    let sign = canvas.sign('─', '-');
-    canvas.fill(Rect { height: 1, ..area }, sign, Role::Quiet);
-    canvas.text((area.x + 2, area.y), area.width / 2, &format!(" LAYBY  {} ", view.title), Role::Strong);
-    canvas.text_right((area.right() - 1, area.y), area.width / 2 - 2, &format!(" {} ", view.journal.file), Role::Quiet);
     if let Some(trouble) = &view.journal.trouble {
         canvas.text((area.x + 2, area.y), area.width - 3, &format!(" DISK: {trouble} "), Role::Trouble);
     }
@@ -130,9 +128,8 @@ fn chosen<'a>(findings: &'a Findings, r: &Reduction, face: &Face) -> (Option<&'a
 
 /// Targets that were driven: the one that pressures are stated at first, then the others, rising.
 fn targets(r: &Reduction) -> Vec<f64> {
-    let mut targets: Vec<f64> = r.passes.iter().map(|p| p.target_kmh).collect();
-    targets.sort_by(|a, b| (*a != r.at_kmh).cmp(&(*b != r.at_kmh)).then(a.total_cmp(b)));
-    targets.dedup();
+    let mut targets = passes::targets(&r.passes);
+    targets.sort_by_key(|t| *t != r.at_kmh);
     targets
 }
 
@@ -167,7 +164,10 @@ fn draw_decision(
     let plan = view.plan.clone().unwrap_or_else(|| "every difference is decided".to_string());
     canvas.text((room.x + 2, y), room.width - 3, &format!("plan: {plan}"), Role::Strong);
     y += 1;
-    let worth = r.next.as_ref().map(|next| report::next_pass(next, r, unit(view)).replacen("Next:", "worth most:", 1));
+    let worth = r
+        .next
+        .as_ref()
+        .map(|next| report::next_pass(next, r, view.show.pressure_unit()).replacen("Next:", "worth most:", 1));
     for line in worth.iter().flat_map(|words| folded(words, usize::from(room.width) - 4)).take(2) {
         canvas.text((room.x + 2, y), room.width - 3, &line, Role::Quiet);
         y += 1;
@@ -180,9 +180,6 @@ fn speed(view: &View, kmh: f64) -> String {
 }
 fn speed_unit(view: &View) -> &'static str {
     Figures::of(Quantity::Speed, &view.show).unit()
-}
-fn unit(view: &View) -> Unit {
-    Unit::find(PRESSURES, &view.show.pressure).unwrap_or(PRESSURES[0])
 }
 
 /// One word for a configuration: changed when any tap is, decided as unchanged when every tap is.
@@ -390,21 +387,4 @@ fn draw_picture((findings, r): (&Findings, &Reduction), face: &Face, (canvas, ar
     }
     let drawing = Rect { y: area.y + 2, height: area.height.saturating_sub(2), ..area };
     picture::draw(&findings.car, &arrows, canvas, drawing);
-}
-
-/// Words in lines of at most so many characters.
-pub(super) fn folded(text: &str, columns: usize) -> Vec<String> {
-    let mut lines = vec![String::new()];
-    for word in text.split_whitespace() {
-        let last = lines.last_mut().expect("there is a line");
-        if last.is_empty() {
-            last.push_str(word);
-        } else if last.chars().count() + 1 + word.chars().count() <= columns {
-            last.push(' ');
-            last.push_str(word);
-        } else {
-            lines.push(word.to_string());
-        }
-    }
-    lines
 }

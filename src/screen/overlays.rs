@@ -5,8 +5,8 @@
 use super::canvas::Canvas;
 use super::figures::Figures;
 use super::keys::{Place, at_stake, help_rows, keys_of};
-use super::layby::{folded, segment_words};
-use super::text::{safe, width};
+use super::layby::segment_words;
+use super::text::{folded, safe, width};
 use super::theme::Role;
 use super::{Face, Overlay, Prompt, PromptKind, SAFETY, Spot, View, bench};
 use ratatui::layout::Rect;

@@ -6,10 +6,9 @@
 use super::canvas::Canvas;
 use super::theme::Role;
 use crate::config::{Car, Tap};
+use crate::report::{WHEEL_M, outline};
 use ratatui::layout::Rect;
 
-/// Radius of a wheel, m: for the eye only.
-const WHEEL_M: f64 = 0.33;
 /// Room about the car, m.
 const MARGIN_M: f64 = 0.5;
 /// Length of the longest arrow, m.
@@ -116,11 +115,11 @@ pub(super) fn draw(car: &Car, arrows: &[Arrow<'_>], canvas: &mut Canvas, area: R
     let mut grid = Grid::new(area, dots, (low, high));
     grid.line([low[0], 0.0], [high[0], 0.0]);
     for axle in [0.0, car.wheelbase_m] {
-        ring(&mut grid, [axle, WHEEL_M]);
+        wheel(&mut grid, [axle, WHEEL_M]);
     }
-    let outline = outline(car);
-    for (i, point) in outline.iter().enumerate() {
-        grid.line(*point, outline[(i + 1) % outline.len()]);
+    let ring = outline(Some(car), &car.taps.iter().collect::<Vec<_>>()).ring;
+    for (i, point) in ring.iter().enumerate() {
+        grid.line(*point, ring[(i + 1) % ring.len()]);
     }
     grid.paint(canvas, Role::Quiet);
     let largest = arrows.iter().map(|a| a.value.abs()).fold(0.0, f64::max);
@@ -129,43 +128,11 @@ pub(super) fn draw(car: &Car, arrows: &[Arrow<'_>], canvas: &mut Canvas, area: R
     }
 }
 
-fn ring(grid: &mut Grid, [x, z]: [f64; 2]) {
+fn wheel(grid: &mut Grid, [x, z]: [f64; 2]) {
     for i in 0..48 {
         let angle = std::f64::consts::TAU * f64::from(i) / 48.0;
         grid.dot([x + WHEEL_M * angle.cos(), z + WHEEL_M * angle.sin()]);
     }
-}
-
-/// The contour where the car has one, else the hull of all taps and the floor between the axles.
-fn outline(car: &Car) -> Vec<[f64; 2]> {
-    let named = car.contour.iter().filter_map(|name| car.taps.iter().find(|t| &t.name == name));
-    let mut points: Vec<[f64; 2]> = named.map(|t| [t.at[0], t.at[2]]).collect();
-    if points.is_empty() {
-        points = car.taps.iter().map(|t| [t.at[0], t.at[2]]).collect();
-        points.extend([[-WHEEL_M, WHEEL_M], [car.wheelbase_m + WHEEL_M, WHEEL_M]]);
-        points = hull(points);
-    }
-    points
-}
-
-/// Convex hull (Andrew 1979, monotone chain).
-fn hull(mut points: Vec<[f64; 2]>) -> Vec<[f64; 2]> {
-    points.sort_by(|a, b| a[0].total_cmp(&b[0]).then(a[1].total_cmp(&b[1])));
-    let turn = |a: [f64; 2], b: [f64; 2], c: [f64; 2]| (b[0] - a[0]) * (c[1] - a[1]) - (b[1] - a[1]) * (c[0] - a[0]);
-    let chain = |points: &mut dyn Iterator<Item = [f64; 2]>| {
-        let mut chain: Vec<[f64; 2]> = Vec::new();
-        for p in points {
-            while chain.len() > 1 && turn(chain[chain.len() - 2], chain[chain.len() - 1], p) <= 0.0 {
-                chain.pop();
-            }
-            chain.push(p);
-        }
-        chain.pop();
-        chain
-    };
-    let mut whole = chain(&mut points.iter().copied());
-    whole.extend(chain(&mut points.iter().rev().copied()));
-    whole
 }
 
 fn draw_arrow(arrow: &Arrow<'_>, largest: f64, grid: &mut Grid, canvas: &mut Canvas) {

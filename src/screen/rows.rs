@@ -105,11 +105,6 @@ fn flag(row: &Row) -> Option<&'static str> {
     }
 }
 
-/// The unit as shown; of what has none of its own, the rig's.
-fn unit_of<'a>(row: &'a Row, figures: &Figures) -> &'a str {
-    if row.quantity == Quantity::Other { &row.unit } else { figures.unit() }
-}
-
 /// A label at the left of its columns and, where there is room, the unit at their right.
 fn draw_label(canvas: &mut Canvas, (x, y): (u16, u16), columns: u16, (label, role): (&str, Role), unit: &str) {
     let used = canvas.text((x, y), columns, label, role);
@@ -122,7 +117,7 @@ fn draw_tile(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
     let figures = Figures::of(row.quantity, &view.show);
     let x = area.x + 2;
     let words = TILE_WORDS - 3;
-    draw_label(canvas, (x, area.y), words, (&row.label, Role::Strong), unit_of(row, &figures));
+    draw_label(canvas, (x, area.y), words, (&row.label, Role::Strong), figures.unit_or(&row.unit));
     canvas.text((x, area.y + 1), words, &format!("live{:>8}", figures.signed(row.live)), Role::Quiet);
     match flag(row) {
         Some(flag) => canvas.text((x, area.y + 2), words, &format!(" {flag} "), Role::Trouble),
@@ -176,7 +171,7 @@ fn draw_line(view: &View, row: &Row, canvas: &mut Canvas, area: Rect) {
     let columns = Columns::of(area.width);
     let mut right = area.x + 1 + columns.label;
     let of_head = row.quantity == Quantity::Pressure;
-    let unit = if of_head { "" } else { unit_of(row, &figures) };
+    let unit = if of_head { "" } else { figures.unit_or(&row.unit) };
     draw_label(canvas, (area.x + 2, area.y), columns.label - 1, (&row.label, Role::Base), unit);
     let held = if held_role(view) == Role::Held { Role::Held } else { Role::Strong };
     let cells = [

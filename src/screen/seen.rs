@@ -6,6 +6,7 @@ use super::findings::Findings;
 use super::{Held, Journal, Kept, Message, PortHealth, Row, Tag, View, Window, WindowState, text};
 use crate::hold::{State, Stretch};
 use crate::pipeline::Pipeline;
+use crate::pipeline::plan::Planned;
 use crate::reduction::plan::Why;
 use crate::session::Segment;
 use crate::units::{Quantity, StreamTime};
@@ -35,6 +36,8 @@ impl View {
     pub fn of(pipeline: &Pipeline, around: Surroundings<'_>) -> Self {
         let (setup, logbook, now) = (pipeline.setup(), pipeline.logbook(), around.now);
         let live = logbook.segments().iter().filter(|s| !s.void);
+        let planned = crate::pipeline::plan::next(logbook.segments(), &setup.outing, logbook.configuration());
+        let stood_s = logbook.stood_s(now);
         Self {
             title: text::safe(&setup.outing.title),
             now,
@@ -50,11 +53,12 @@ impl View {
             kept: u32::try_from(live.clone().count()).unwrap_or(u32::MAX),
             last_segment: live.map(|s| s.id).max(),
             configurations: setup.outing.configurations.iter().map(|c| (c.letter.clone(), c.name.clone())).collect(),
-            stood_s: logbook.stood_s(now),
-            asks: crate::pipeline::plan::next(logbook.segments(), &setup.outing, logbook.configuration())
-                .map(|next| next.configuration)
-                .filter(|letter| letter != logbook.configuration() && logbook.stood_s(now).is_some()),
-            plan: plan(pipeline, around.findings.as_deref()),
+            stood_s,
+            asks: planned
+                .as_ref()
+                .map(|next| next.configuration.clone())
+                .filter(|letter| letter != logbook.configuration() && stood_s.is_some()),
+            plan: plan(pipeline, planned, around.findings.as_deref()),
             bench: around.workshop.map(|channel| bench(pipeline, channel, now)),
             findings: around.findings.clone(),
             zero_age_s: logbook.zero().map(|z| now.since(z.t1) as f64 / 1e6),
@@ -67,18 +71,12 @@ impl View {
 
 /// The running stretch; none once the watched channel has been silent for too long.
 fn running(pipeline: &Pipeline, now: StreamTime) -> Option<&Stretch> {
-    pipeline.hold().state().stretch().filter(|_| speed(pipeline, now).is_some())
-}
-
-/// The last watched speed, while it is fresh.
-fn speed(pipeline: &Pipeline, now: StreamTime) -> Option<f64> {
-    let eye = pipeline.eye(pipeline.watched()).filter(|eye| !eye.stale(now))?;
-    eye.latest().map(|value| pipeline.watched_kmh(value))
+    pipeline.hold().state().stretch().filter(|_| pipeline.speed_kmh(now).is_some())
 }
 
 fn window(pipeline: &Pipeline, now: StreamTime) -> Window {
     let rule = pipeline.hold().rule();
-    let speed_kmh = speed(pipeline, now);
+    let speed_kmh = pipeline.speed_kmh(now);
     let stretch = running(pipeline, now);
     let target_kmh = match stretch {
         Some(s) => rule.targets_kmh[s.target],
@@ -107,10 +105,9 @@ fn window(pipeline: &Pipeline, now: StreamTime) -> Window {
 
 /// The target to drive next: the one chosen by key, else the nearest to the speed, else the first.
 fn aim(pipeline: &Pipeline, speed_kmh: Option<f64>) -> f64 {
-    let targets = &pipeline.hold().rule().targets_kmh;
-    let nearest = |v: f64| targets.iter().copied().min_by(|a, b| (a - v).abs().total_cmp(&(b - v).abs()));
-    let chosen = pipeline.logbook().aim_kmh();
-    chosen.or_else(|| speed_kmh.filter(|v| *v > 20.0).and_then(nearest)).unwrap_or(targets[0])
+    let rule = pipeline.hold().rule();
+    let nearest = || speed_kmh.filter(|v| *v > 20.0).and_then(|v| rule.nearest_kmh(v));
+    pipeline.logbook().aim_kmh().or_else(nearest).unwrap_or(rule.targets_kmh[0])
 }
 
 fn held(pipeline: &Pipeline, around: &Surroundings<'_>) -> Option<Held> {
@@ -187,7 +184,7 @@ fn tag(pipeline: &Pipeline, now: StreamTime) -> Tag {
 }
 
 /// What is still wanted comes first; then what would narrow the widest interval most.
-fn plan(pipeline: &Pipeline, findings: Option<&Findings>) -> Option<String> {
+fn plan(pipeline: &Pipeline, planned: Option<Planned>, findings: Option<&Findings>) -> Option<String> {
     let (logbook, outing) = (pipeline.logbook(), &pipeline.setup().outing);
     let fitted = logbook.configuration();
     let words = |letter: &str, direction: &str, kmh: f64| {
@@ -195,7 +192,7 @@ fn plan(pipeline: &Pipeline, findings: Option<&Findings>) -> Option<String> {
         let figures = Figures::of(Quantity::Speed, &outing.show);
         format!("{fit}drive {} {direction} at {} {}", text::safe(letter), figures.short(kmh), figures.unit())
     };
-    if let Some(next) = crate::pipeline::plan::next(logbook.segments(), outing, fitted) {
+    if let Some(next) = planned {
         let drive = words(&next.configuration, next.direction.word(), next.target_kmh);
         return Some(format!("{drive}, pass {} of {}", next.pass, outing.passes));
     }

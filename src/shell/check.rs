@@ -93,7 +93,7 @@ fn sorted(word: &str, problems: &[config::Problem]) -> Found {
 }
 
 fn session(path: &Path) -> Found {
-    let bytes = match files::read(path, 1 << 30) {
+    let bytes = match files::read(path, files::LARGEST_SESSION) {
         Ok(bytes) => bytes,
         Err(trouble) => return Found { errors: vec![trouble], ..Found::default() },
     };

@@ -5,7 +5,6 @@ use super::speaker::{Speaker, Status};
 use crate::pipeline::{Pipeline, What};
 use crate::screen::Weight;
 use crate::sound::{self, Cue};
-use crate::units::StreamTime;
 
 /// The speaker, and what was last said of window, disk and sound.
 pub struct Ear {
@@ -67,13 +66,7 @@ impl Ear {
 
 /// The window of this target was left: too slow or too fast, where the speed is still known.
 fn off(target: usize, pipeline: &Pipeline) -> Option<Cue> {
-    let speed_kmh = speed(pipeline, pipeline.now())?;
+    let speed_kmh = pipeline.speed_kmh(pipeline.now())?;
     let rule = pipeline.hold().rule();
     sound::off_speed(speed_kmh, rule.targets_kmh[target], rule.tolerance_kmh)
-}
-
-/// The watched speed while it is fresh, km/h.
-pub fn speed(pipeline: &Pipeline, now: StreamTime) -> Option<f64> {
-    let eye = pipeline.eye(pipeline.watched()).filter(|eye| !eye.stale(now))?;
-    eye.latest().map(|value| pipeline.watched_kmh(value))
 }

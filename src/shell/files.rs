@@ -10,12 +10,21 @@ use std::path::{Path, PathBuf};
 
 /// Largest configuration file, bytes.
 const LARGEST_CONFIG: u64 = 4 << 20;
-/// Largest session file that is reduced, bytes.
-const LARGEST_SESSION: u64 = 1 << 30;
+/// Largest session file that is read, bytes.
+pub const LARGEST_SESSION: u64 = 1 << 30;
+
+fn directories() -> Option<directories::ProjectDirs> {
+    directories::ProjectDirs::from("", "", "steadytap")
+}
 
 /// The platform's place for the program's data.
 pub fn data_directory() -> Option<PathBuf> {
-    directories::ProjectDirs::from("", "", "steadytap").map(|d| d.data_dir().to_path_buf())
+    directories().map(|d| d.data_dir().to_path_buf())
+}
+
+/// The platform's place for what a person sets once for all.
+pub fn config_directory() -> Option<PathBuf> {
+    directories().map(|d| d.config_dir().to_path_buf())
 }
 
 /// Why a file cannot be read, with the remedy.

@@ -4,15 +4,13 @@
 //! the whole session is written to a fallback place and goes on there, and that is said. The lines of this run stay in memory for it.
 
 use super::Trouble;
+use super::files::LARGEST_SESSION;
 use super::storage::{Disk, Kind, Storage, StoredFile};
 use crate::session::codec::{self, Contents};
 use crate::session::{Entry, Header, Session};
 use std::io::{self, Read, Write};
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
-
-/// Largest session file that is read, bytes.
-const LARGEST: u64 = 1 << 30;
 
 /// An open session file.
 pub struct Journal {
@@ -67,10 +65,10 @@ impl Journal {
                 .hint("end that one first, or give another name with --session"));
         }
         let mut bytes = Vec::new();
-        let read = (&mut file).take(LARGEST + 1).read_to_end(&mut bytes);
+        let read = (&mut file).take(LARGEST_SESSION + 1).read_to_end(&mut bytes);
         read.map_err(|e| Trouble::new(format!("the session cannot be read: {e}")).at(&place))?;
-        if bytes.len() as u64 > LARGEST {
-            return Err(Trouble::new(format!("the session is larger than {} MiB", LARGEST >> 20))
+        if bytes.len() as u64 > LARGEST_SESSION {
+            return Err(Trouble::new(format!("the session is larger than {} MiB", LARGEST_SESSION >> 20))
                 .at(place)
                 .hint("give another name with --session"));
         }

@@ -9,9 +9,9 @@
 //! kept = "my-kept.wav"
 //! ```
 
+use super::speaker::bank::cue_named;
 use super::{Trouble, files};
 use crate::screen::keys::Bindings;
-use crate::sound::Cue;
 use serde::Deserialize;
 use std::collections::BTreeMap;
 use std::path::{Path, PathBuf};
@@ -44,7 +44,7 @@ enum Keys {
 
 /// Where it is looked for when none is named.
 pub fn place() -> Option<PathBuf> {
-    directories::ProjectDirs::from("", "", "steadytap").map(|d| d.config_dir().join("keys.toml"))
+    files::config_directory().map(|d| d.join("keys.toml"))
 }
 
 /// What the named file says, else the one in its place, else the usual keys and sounds.
@@ -93,11 +93,8 @@ pub fn read(path: &Path) -> Result<Own, Trouble> {
         let span = wrong.and_then(|n| written.keys.get(good[n - 1].0)).map_or(0, |keys| keys.span().start);
         Trouble::new(e.to_string()).at(at(span)).hint(hint)
     })?;
-    if let Some(word) = written.sounds.keys().find(|word| !Cue::ALL.iter().any(|cue| cue.word() == *word)) {
-        let known: Vec<&str> = Cue::ALL.iter().map(|cue| cue.word()).collect();
-        let place = at(source.text.find("[sounds]").unwrap_or(0));
-        return Err(Trouble::new(format!("there is no sound `{word}`; the sounds are {}", known.join(", "))).at(place));
-    }
+    let sounds_at = at(source.text.find("[sounds]").unwrap_or(0));
+    written.sounds.keys().try_for_each(|word| cue_named(word).map(drop)).map_err(|trouble| trouble.at(sounds_at))?;
     // Sounds are named relative to the file.
     let beside = |sound: PathBuf| path.parent().unwrap_or(Path::new("")).join(sound);
     Ok(Own { bindings, sounds: written.sounds.into_iter().map(|(word, sound)| (word, beside(sound))).collect() })

@@ -45,9 +45,10 @@ pub fn run(engine: Engine, running: Running, plan: &Plan) -> Result<Engine, Trou
     let gone = Gone::default();
     let hung_up = gone.clone();
     super::outing::stop_on_signals(running.sender.clone(), move |_| hung_up.say());
-    let face = terminal::face(plan)?;
+    let own = super::keyfile::own(plan.keys.as_deref())?;
+    let face = terminal::face(plan, own.bindings);
     let looked = Arc::new(AtomicUsize::new(NOBODY));
-    let speaker = Speaker::start(&super::keyfile::own(plan.keys.as_deref())?.sounds, plan.solo)?;
+    let speaker = Speaker::start(&own.sounds, plan.solo)?;
     speaker.mute(plan.mute);
     let silent = Arc::new(AtomicBool::new(false));
     let alone = plan.solo.then(|| Alone { solo: Solo::default(), silent: silent.clone(), speaker: speaker.clone() });

@@ -3,7 +3,6 @@
 //! Parked at first, then every held dwell is kept; a stop long enough is a zero; the next pass is said when it changes; beside the window the
 //! guidance tone glides. The only keys are a remote's: back voids the last segment, on confirms the part that was fitted.
 
-use super::ear;
 use super::speaker::Speaker;
 use crate::pipeline::Pipeline;
 use crate::pipeline::plan::{self, Planned};
@@ -48,7 +47,7 @@ impl Solo {
     /// Looks at the instrument; what it wants done.
     pub fn look(&mut self, pipeline: &Pipeline, now: StreamTime) -> Wanted {
         let mut wanted = Wanted::default();
-        let Some(kmh) = ear::speed(pipeline, now) else { return wanted };
+        let Some(kmh) = pipeline.speed_kmh(now) else { return wanted };
         if !self.begun {
             if kmh > PARKED_KMH {
                 return wanted;
@@ -104,9 +103,8 @@ impl Solo {
     /// Renews the guidance tone: where the speed is beside the target's window.
     pub fn guide(&self, pipeline: &Pipeline, now: StreamTime, speaker: &Speaker) {
         let rule = pipeline.hold().rule();
-        let speed = ear::speed(pipeline, now).filter(|v| self.begun && !self.silent && *v > PARKED_KMH);
-        let nearest = |v: f64| rule.targets_kmh.iter().copied().min_by(|a, b| (a - v).abs().total_cmp(&(b - v).abs()));
-        let place = speed.and_then(|v| guidance::place(v, nearest(v)?, rule.tolerance_kmh));
+        let speed = pipeline.speed_kmh(now).filter(|v| self.begun && !self.silent && *v > PARKED_KMH);
+        let place = speed.and_then(|v| guidance::place(v, rule.nearest_kmh(v)?, rule.tolerance_kmh));
         speaker.guide(place);
     }
 }

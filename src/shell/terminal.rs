@@ -1,6 +1,7 @@
 //! The terminal: entered once, always given back, whatever breaks.
 
 use super::Trouble;
+use crate::screen::keys::Bindings;
 use crate::screen::{Face, Overlay, Theme, View, render};
 use crossterm::event::{DisableBracketedPaste, EnableBracketedPaste};
 use crossterm::terminal::{
@@ -82,11 +83,8 @@ pub fn guarded<T>(work: impl FnOnce() -> T) -> T {
     result
 }
 
-/// The face that plan and environment ask for.
-///
-/// # Errors
-/// [`Trouble`] when the file of keys cannot be used.
-pub fn face(plan: &super::outing::Plan) -> Result<Face, Trouble> {
+/// The face that plan, a person's own keys and the environment ask for.
+pub fn face(plan: &super::outing::Plan, bindings: Bindings) -> Face {
     let plain_locale = ["LC_ALL", "LC_CTYPE", "LANG"]
         .iter()
         .find_map(|name| std::env::var(name).ok().filter(|v| !v.is_empty()))
@@ -96,9 +94,8 @@ pub fn face(plan: &super::outing::Plan) -> Result<Face, Trouble> {
     let theme = if no_colour { Theme::NoColour } else { Theme::default() };
     // Alone they are shown every time.
     let overlay = if first_start() || plan.solo { Overlay::Safety } else { Overlay::None };
-    let bindings = super::keyfile::own(plan.keys.as_deref())?.bindings;
     let plain = plan.plain || plain_locale || dumb;
-    Ok(Face { theme, plain, overlay, bindings, solo: plan.solo, ..Face::default() })
+    Face { theme, plain, overlay, bindings, solo: plan.solo, ..Face::default() }
 }
 
 /// Nobody has seen the cautions yet; from now on somebody has.

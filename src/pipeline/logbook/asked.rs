@@ -2,7 +2,7 @@
 
 use super::Logbook;
 use crate::config::Air;
-use crate::pipeline::kept::{HeldDwell, KeptSegment};
+use crate::pipeline::kept::{HeldDwell, KeptSegment, passes_of};
 use crate::session::{Direction, Zero};
 use crate::units::{Quantity, StreamTime};
 use std::collections::BTreeMap;
@@ -65,15 +65,7 @@ impl Logbook {
     }
     /// Which pass the next segment belongs to, from 1. `stretch` is the one that is running and has given a dwell.
     pub fn pass(&self, target_kmh: f64, stretch: Option<u32>) -> u32 {
-        let direction = self.direction();
-        let same = self.segments.iter().filter(|s| {
-            !s.void
-                && s.configuration == self.configuration
-                && s.direction == direction
-                && s.target_kmh == Some(target_kmh)
-        });
-        let mut passes: Vec<(u32, u32)> = same.map(|s| s.pass).collect();
-        passes.dedup();
+        let passes = passes_of(&self.segments, (&self.configuration, self.direction(), target_kmh));
         let running = stretch.is_some_and(|s| passes.contains(&(self.run, s)));
         u32::try_from(passes.len()).unwrap_or(u32::MAX).saturating_add(u32::from(!running))
     }

@@ -7,6 +7,7 @@ use super::sheet::{Sheet, figure, table};
 use super::svg::{Place, WIDE, circle, curve, line, picture, shape, words};
 use crate::config::Tap;
 use crate::reduction::compare::Verdict;
+use crate::report::{WHEEL_M, outline};
 use crate::text::safe;
 use maud::{Markup, html};
 
@@ -18,8 +19,6 @@ const LONGEST: f64 = 44.0;
 const SHORTEST: f64 = 4.0;
 /// Tallest drawing of a body.
 const TALLEST: f64 = 190.0;
-/// Wheels are drawn so large; no file says it, m.
-const WHEEL_M: f64 = 0.33;
 /// A normal with less than this share in the plane of the drawing faces sideways.
 const SIDEWAYS: f64 = 0.3;
 
@@ -108,7 +107,7 @@ fn drawing(sheet: &Sheet<'_>, title: &str, arrows: &[Arrow<'_>]) -> Markup {
     let view = View::over(&points, wheelbase);
     let largest = arrows.iter().map(|a| a.figure.value.abs()).fold(0.0, f64::max);
     let body = html! {
-        (outline(sheet, &view, &points, wheelbase))
+        (drawn_outline(sheet, &view))
         (line([10.0, view.road], [WIDE - 10.0, view.road], "axis"))
         @for x in [0.0, wheelbase] { (circle(view.at([x, WHEEL_M]), WHEEL_M * view.scale, "wheel")) }
         @for arrow in arrows { (drawn(arrow, &view, largest)) }
@@ -125,16 +124,8 @@ fn drawing(sheet: &Sheet<'_>, title: &str, arrows: &[Arrow<'_>]) -> Markup {
     figure(&picture(view.road + 24.0, &format!("Side view of the car, {title}"), &body), &caption)
 }
 
-/// The contour's taps, where the car file has three or more of them.
-fn ring_of(sheet: &Sheet<'_>) -> Vec<[f64; 2]> {
-    let taps = sheet.taps();
-    let names = sheet.car().map_or(&[][..], |c| &c.contour);
-    let places = names.iter().filter_map(|name| taps.iter().find(|t| &t.name == name));
-    places.map(|t| [t.at[0], t.at[2]]).collect()
-}
-
 fn outline_words(sheet: &Sheet<'_>) -> &'static str {
-    if ring_of(sheet).len() > 2 {
+    if outline(sheet.car(), &sheet.taps()).is_body {
         "The outline joins the taps of the contour."
     } else {
         "The broken line goes round taps and wheels and is not the body: the car file has no contour."
@@ -142,37 +133,14 @@ fn outline_words(sheet: &Sheet<'_>) -> &'static str {
 }
 
 /// The contour, or a broken line round taps and wheels where the car file has none.
-fn outline(sheet: &Sheet<'_>, view: &View, points: &[[f64; 2]], wheelbase_m: f64) -> Markup {
-    let ring: Vec<Place> = ring_of(sheet).into_iter().map(|p| view.at(p)).collect();
-    if ring.len() > 2 {
+fn drawn_outline(sheet: &Sheet<'_>, view: &View) -> Markup {
+    let outline = outline(sheet.car(), &sheet.taps());
+    let mut ring: Vec<Place> = outline.ring.into_iter().map(|p| view.at(p)).collect();
+    if outline.is_body {
         return shape(&ring, "body");
     }
-    let mut points = points.to_vec();
-    points.extend([[-WHEEL_M, WHEEL_M], [wheelbase_m + WHEEL_M, WHEEL_M]]);
-    let mut round: Vec<Place> = hull(&points).into_iter().map(|p| view.at(p)).collect();
-    round.extend(round.first().copied());
-    curve(&round, "edge")
-}
-
-/// The smallest convex ring round points. *Method* Andrew's monotone chain, Inf. Process. Lett. 9, 1979, 216.
-fn hull(points: &[[f64; 2]]) -> Vec<[f64; 2]> {
-    let mut sorted = points.to_vec();
-    sorted.sort_by(|a, b| a[0].total_cmp(&b[0]).then(a[1].total_cmp(&b[1])));
-    let turn = |a: [f64; 2], b: [f64; 2], c: [f64; 2]| (b[0] - a[0]) * (c[1] - a[1]) - (b[1] - a[1]) * (c[0] - a[0]);
-    let chain = |points: &mut dyn Iterator<Item = [f64; 2]>| {
-        let mut ring: Vec<[f64; 2]> = Vec::new();
-        for p in points {
-            while ring.len() > 1 && turn(ring[ring.len() - 2], ring[ring.len() - 1], p) <= 0.0 {
-                ring.pop();
-            }
-            ring.push(p);
-        }
-        ring.pop();
-        ring
-    };
-    let mut ring = chain(&mut sorted.iter().copied());
-    ring.extend(chain(&mut sorted.iter().rev().copied()));
-    ring
+    ring.extend(ring.first().copied());
+    curve(&ring, "edge")
 }
 
 fn drawn(arrow: &Arrow<'_>, view: &View, largest: f64) -> Markup {
